@@ -1,0 +1,181 @@
+"""From a finished fit to the finished model: parameter table, correlations, checks, notices."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from itertools import combinations
+from typing import TypeVar
+
+import numpy as np
+
+from fitter.comparison import compare, explain_gate_charge
+from fitter.fitting.blocks import PathBlock, PointsBlock
+from fitter.fitting.fit import FitResult
+from fitter.fitting.intervals import standard_errors
+from fitter.fitting.observations import from_axis
+from fitter.model import CurveRow, FittedModel
+from fitter.models.transistor import DEFINITIONS
+from fitter.parameters import Origin, Parameter
+from fitter.part import Curve, Notice, Part, Quantity
+from fitter.version import VERSION
+
+__all__ = ["assemble"]
+
+Model = TypeVar("Model", bound=FittedModel)
+
+#: A standard error this large, as a natural logarithm or relative to the typical size, determines nothing.
+_UNDETERMINED = 2.0
+#: Standard deviations widened by more than this are worth a notice.
+_WORTH_SAYING = 1.5
+
+_PACKAGE = {
+    "r_g": ("ohm", "internal gate resistance"),
+    "l_g": ("H", "inductance of the gate lead"),
+    "l_d": ("H", "inductance of the drain lead"),
+    "l_s": ("H", "inductance of the source lead, shared by gate loop and power loop"),
+}
+
+
+def assemble(part: Part, result: FitResult, kind: type[Model]) -> Model:
+    """Put a finished model together.
+
+    Parameters
+    ----------
+    part : Part
+        What was fitted.
+    result : FitResult
+        The fit.
+    kind : type
+        `FittedModel` or a class derived from it.
+
+    Returns
+    -------
+    FittedModel
+        Of that class.
+    """
+    parameters = _parameters(part, result)
+    blocks = [block.name for block in result.solution.blocks]
+    checks = compare(part, result.estimate, blocks, result.used_gate_charge)
+    return kind(
+        part=part,
+        parameters=parameters,
+        estimate=result.estimate,
+        correlations=_correlations(result, parameters),
+        statistics=result.statistics,
+        trials=result.trials,
+        checks=checks,
+        points=_points(part, result),
+        notices=(*part.notices, *_notices(part, result, parameters), *explain_gate_charge(checks)),
+        used_gate_charge=result.used_gate_charge,
+        version=VERSION,
+    )
+
+
+def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
+    estimate = result.estimate
+    values = estimate.values
+    free = {d.name: math.sqrt(v) for d, v in zip(estimate.space.free, np.diag(estimate.covariance), strict=True)}
+    table: dict[str, Parameter] = {}
+    for name, d in DEFINITIONS.items():
+        if name not in values:
+            continue
+        value = float(np.real(values[name]))
+        origin: Origin = "fitted"
+        stderr: float | None = None
+        note = ""
+        if name in free:
+            # On a log scale the coordinate's error is relative to the value.
+            stderr = free[name] * (value if d.scale == "log" else d.typical)
+            if name in result.on_bound:
+                origin, stderr = "fixed", None
+                note = f"ended on its bound of {value:.3g} {d.unit}".rstrip()
+            elif (free[name] if d.scale == "log" else stderr / max(abs(value), 1e-300)) > _UNDETERMINED:
+                origin, note = "not determined", "the data leave it open within a factor of ten or more"
+        elif name in estimate.space.fixed:
+            origin = "fixed" if name == "lambda" else "assumed"
+            note = _WHY_FIXED.get(name, "no curve shows it")
+        else:
+            origin, note = "assumed", _WHY_ASSUMED[name]
+            stderr = float(standard_errors(lambda v, name=name: np.reshape(v[name], (-1, 1)), estimate)[0])  # type: ignore[misc]
+        table[name] = Parameter(
+            name=name, value=value, stderr=stderr, unit=d.unit, origin=origin, meaning=d.meaning, note=note
+        )
+    for name, (unit, meaning) in _PACKAGE.items():
+        given = getattr(part.package, name)
+        if given is not None:
+            table[name] = Parameter(name=name, value=given, stderr=None, unit=unit, origin="fixed", meaning=meaning, note="as given")
+    return table
+
+
+_WHY_FIXED = {
+    "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
+    "r_d": "no RDS(on) is stated and no output curve given",
+}
+_WHY_ASSUMED = {
+    "c_ch": "shows on no curve at VGS = 0; from the on-state input capacitance, taken as 1.5 times Ciss at VDD (1.0 to 2.3)",
+    "c_acc": "shows on no curve at VGS = 0; taken as Crss at the lowest digitized VDS",
+}
+
+
+def _correlations(result: FitResult, parameters: Mapping[str, Parameter]) -> dict[tuple[str, str], float]:
+    names = result.estimate.space.names
+    sigma = np.sqrt(np.diag(result.estimate.covariance))
+    found = {}
+    for i, j in combinations(range(len(names)), 2):
+        if names[i] in parameters and names[j] in parameters and sigma[i] > 0.0 and sigma[j] > 0.0:
+            found[names[i], names[j]] = float(result.estimate.covariance[i, j] / (sigma[i] * sigma[j]))
+    return found
+
+
+def _points(part: Part, result: FitResult) -> tuple[CurveRow, ...]:
+    """Every digitized point of the curves that were fitted beside the fitted value."""
+    blocks = {b.name: b for b in result.solution.blocks if isinstance(b, PointsBlock | PathBlock)}
+    values = result.solution.values
+    rows: list[CurveRow] = []
+    for curve in part.curves:
+        block = blocks.get(curve.name)
+        if block is None:
+            continue
+        fitted = np.real(from_axis(block.fitted(values), curve.y_axis))
+        residuals = np.real(block.deviations(values))
+        rows += [
+            CurveRow(curve=curve.name, x=float(x), y=float(y), fitted=float(f), residual=float(r), used=bool(u))
+            for x, y, f, r, u in zip(curve.x, curve.y, fitted, residuals, block.used, strict=True)
+        ]
+    return tuple(rows)
+
+
+def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter]) -> list[Notice]:
+    notices = [Notice(topic=p.name, text=f"{p.name} {p.note}") for p in parameters.values() if "bound" in p.note]
+    open_ones = [p.name for p in parameters.values() if p.origin == "not determined"]
+    if open_ones:
+        notices.append(Notice(topic="parameters", text=f"the data do not determine {', '.join(open_ones)}"))
+    curves = {c.name: c for c in part.curves}
+    notices += [_outlier(curves[o.curve], o.index, o.sigmas) for o in result.outliers]
+    for group in dict.fromkeys(b.group for b in result.solution.blocks if b.group):
+        names = {b.name for b in result.solution.blocks if b.group == group}
+        width = max(s.inflation for s in result.statistics if s.name in names)
+        if width > _WORTH_SAYING:
+            notices.append(
+                Notice(
+                    topic=group,
+                    text=f"{', '.join(sorted(names))}: the model's form misses the points by {width:.1f} times their reading "
+                    "errors; the intervals are widened by that",
+                )
+            )
+    fitted = {b.name for b in result.solution.blocks}
+    aside = [c.name for c in part.curves if c.name not in fitted and c.quantity is not Quantity.GATE_CHARGE]
+    if aside:
+        notices.append(Notice(topic="curves", text=f"read but not fitted: {', '.join(aside)}"))
+    if not result.solution.converged:
+        notices.append(Notice(topic="fit", text="the fit stopped before it reached its tolerance; do not trust it unseen"))
+    return notices
+
+
+def _outlier(curve: Curve, index: int, sigmas: float) -> Notice:
+    return Notice(
+        topic=curve.name,
+        text=f"{curve.file}:{curve.lines[index]}: a point of {curve.name} lies {abs(sigmas):.1f} standard deviations off; "
+        "it was left aside: look at it again",
+    )

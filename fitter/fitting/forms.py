@@ -1,0 +1,266 @@
+"""The capacitances together, and which form each of Cgd and Cds needs: the data decide, by AICc.
+
+C. M. Hurvich and C.-L. Tsai, Biometrika 76 (1989) 297.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fitter.errors import FitError
+from fitter.fitting import observations
+from fitter.fitting.blocks import Block, model_space
+from fitter.fitting.outliers import Outlier, set_aside
+from fitter.fitting.solve import Solution, solve
+from fitter.fitting.space import ParameterSpace
+from fitter.fitting.start_values import junction_start, second_shield_starts, shield_starts, sorted_curve
+from fitter.models.capacitance import (
+    DRAIN_SOURCE,
+    GATE_DRAIN,
+    MOST_SHIELDS,
+    Junction,
+    capacitance,
+    junction_from,
+    junction_names,
+)
+from fitter.parameters import ParameterDefinition
+from fitter.part import Part, Quantity, Stated
+
+__all__ = ["CapacitanceFit", "FormTrial", "corrected_akaike", "fit_capacitances"]
+
+Array = NDArray[np.float64]
+
+#: Evaluations that sort the starts, before the better ones are followed to their end.
+_FIRST_LOOK = 15
+_FOLLOWED = 2
+
+_TOO_FEW = "too few capacitance data: digitize ciss, coss and crss, or two of them and state the third's table value"
+
+
+@dataclass(frozen=True, kw_only=True)
+class FormTrial:
+    """One form of one capacitance, and how well it did on its curve.
+
+    Parameters
+    ----------
+    capacitance : str
+        ``gate-drain`` or ``drain-source``.
+    shields : int
+        0 for the plain form.
+    parameters, points : int
+        How many of each.
+    chi_square : float
+        Sum of squared residuals, by the robust measure that mis-clicks hardly move.
+    aicc : float
+        Akaike's criterion, corrected for few points; the lowest wins.
+    chosen : bool
+        Whether it won.
+    """
+
+    capacitance: str
+    shields: int
+    parameters: int
+    points: int
+    chi_square: float
+    aicc: float
+    chosen: bool = False
+
+
+@dataclass(frozen=True, kw_only=True)
+class CapacitanceFit:
+    """The capacitances' fit in the forms that won.
+
+    Parameters
+    ----------
+    blocks : tuple of Block
+        With mis-clicked points marked.
+    free : tuple of str
+        Free parameters.
+    fixed : mapping of str to float
+        Fixed parameters [SI].
+    solution : Solution
+        The joint fit.
+    outliers : tuple of Outlier
+        Points set aside.
+    trials : tuple of FormTrial
+        All forms tried.
+    """
+
+    blocks: tuple[Block, ...]
+    free: tuple[str, ...]
+    fixed: Mapping[str, float]
+    solution: Solution
+    outliers: tuple[Outlier, ...]
+    trials: tuple[FormTrial, ...]
+
+
+def corrected_akaike(chi_square: float, parameters: int, points: int) -> float:
+    """AICc of a least-squares fit with known standard deviations: chi^2 + 2k + 2k(k+1)/(n-k-1).
+
+    Parameters
+    ----------
+    chi_square : float
+        Sum of squared residuals in standard deviations.
+    parameters, points : int
+        k and n.
+
+    Returns
+    -------
+    float
+        Infinite where the points cannot carry the parameters.
+
+    Examples
+    --------
+    >>> corrected_akaike(20.0, 4, 25)
+    30.0
+    """
+    spare = points - parameters - 1
+    if spare <= 0:
+        return float("inf")
+    return chi_square + 2.0 * parameters + 2.0 * parameters * (parameters + 1) / spare
+
+
+def fit_capacitances(part: Part) -> CapacitanceFit:
+    """Fit Ciss, Coss and Crss together, as Cgs, Cgd and Cds.
+
+    Cgd's form is chosen on Crss, Cds' on Coss over it; then all three curves are fitted together.
+
+    Parameters
+    ----------
+    part : Part
+        With the three curves, or two and the third's table value.
+
+    Returns
+    -------
+    CapacitanceFit
+
+    Raises
+    ------
+    FitError
+        Where too little is given, or the points cannot carry even the plain form.
+    """
+    blocks = observations.capacitance_blocks(part)
+    iss, oss, rss = (sorted_curve(part.curves_of(q)) for q in (Quantity.CISS, Quantity.COSS, Quantity.CRSS))
+    table = part.stated.capacitance
+    fixed: dict[str, float] = {}
+
+    if rss is not None:
+        gate_drain = _choose("gate-drain", GATE_DRAIN, rss, _named(blocks, "crss", "phi_gd"), {})
+    else:
+        if iss is None or table is None:
+            raise FitError(_TOO_FEW)
+        # What Ciss falls by is what Cgd falls by.
+        rest = iss[1] - float(np.min(iss[1])) + _figure(table.c_rss)
+        gate_drain = _plain(GATE_DRAIN, (iss[0], rest))
+    c_gd = junction_from(GATE_DRAIN, gate_drain.values)
+
+    if oss is not None:
+        below = capacitance(oss[0], c_gd)
+        rest = np.maximum(oss[1] - below, 0.02 * oss[1])
+        drain_source = _choose("drain-source", DRAIN_SOURCE, (oss[0], rest), _named(blocks, "coss", "phi_ds"), gate_drain.values)
+    else:
+        if table is None:
+            raise FitError(_TOO_FEW)
+        drain_source = _one_point(table.v_ds, _figure(table.c_oss), c_gd)
+        fixed = {n: x for n, x in drain_source.values.items() if n not in drain_source.free}
+
+    if iss is not None:
+        c_gs = float(np.median(iss[1] - np.minimum(capacitance(iss[0], c_gd), 0.9 * iss[1])))
+    elif table is not None:
+        c_gs = _figure(table.c_iss)
+    else:
+        raise FitError(_TOO_FEW)
+
+    free = ("c_gs", *gate_drain.free, *drain_source.free)
+    start = {"c_gs": c_gs, **gate_drain.values, **drain_source.values}
+    rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True)
+    marked, outliers = set_aside(rough)
+    points = sum(b.used_points for b in marked)
+    if points <= len(free):
+        raise FitError(f"{points} points of capacitance are too few for a model of {len(free)} parameters")
+    solution = solve(marked, model_space(free, fixed, marked), rough.values)
+    return CapacitanceFit(
+        blocks=marked, free=free, fixed=fixed, solution=solution, outliers=outliers,
+        trials=gate_drain.trials + drain_source.trials,
+    )  # fmt: skip
+
+
+def _named(blocks: Sequence[Block], *begin: str) -> list[Block]:
+    return [block for block in blocks if block.name.startswith(begin)]
+
+
+def _figure(stated: Stated | None) -> float:
+    figure = None if stated is None else stated.typ or stated.max or stated.min
+    if figure is None:
+        raise FitError(_TOO_FEW)
+    return figure
+
+
+@dataclass(frozen=True, kw_only=True)
+class _Chosen:
+    """One junction in the form that suits it: all its values, and which are free."""
+
+    values: Mapping[str, float]
+    free: tuple[str, ...]
+    trials: tuple[FormTrial, ...] = ()
+
+
+def _plain(definitions: Mapping[str, ParameterDefinition], points: tuple[Array, Array]) -> _Chosen:
+    values = {definitions[f].name: x for f, x in junction_start(*points).items()}
+    return _Chosen(values=values, free=junction_names(definitions, 0))
+
+
+def _one_point(v_ds: float, c_oss: float, c_gd: Junction) -> _Chosen:
+    """Cds from one table value: an abrupt junction of 0.7 V whose size alone is free."""
+    c = max(c_oss - float(capacitance(v_ds, c_gd)), 0.05 * c_oss)
+    values = {"c_0": c * np.sqrt(1.0 + v_ds / 0.7), "phi": 0.7, "m": 0.5, "c_f": 0.0}
+    return _Chosen(
+        values={DRAIN_SOURCE[f].name: float(x) for f, x in values.items()}, free=(DRAIN_SOURCE["c_0"].name,)
+    )
+
+
+def _choose(
+    name: str,
+    definitions: Mapping[str, ParameterDefinition],
+    points: tuple[Array, Array],
+    blocks: Sequence[Block],
+    others: Mapping[str, float],
+) -> _Chosen:
+    """Fit one junction to its own curve in every form, and take the one with the lowest AICc."""
+    fields = {d.name: f for f, d in definitions.items()}
+    n = sum(block.points for block in blocks)
+    ends: list[tuple[FormTrial, dict[str, float]]] = []
+    starts = [junction_start(*points)]
+    for shields in range(MOST_SHIELDS + 1):
+        free = junction_names(definitions, shields)
+        if n <= len(free) + 1:
+            break
+        if shields:
+            one = {fields[name]: x for name, x in ends[-1][1].items()}
+            starts = shield_starts(*points) if shields == 1 else second_shield_starts(one)
+        space = model_space(free, others, blocks)
+        named = [{definitions[f].name: x for f, x in start.items()} for start in starts]
+        best = _best(blocks, named, space)
+        chi_square = 2.0 * best.cost
+        trial = FormTrial(
+            capacitance=name, shields=shields, parameters=len(free), points=n,
+            chi_square=chi_square, aicc=corrected_akaike(chi_square, len(free), n),
+        )  # fmt: skip
+        ends.append((trial, {name: float(np.real(best.values[name])) for name in free}))
+    if not ends:
+        raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {len(junction_names(definitions, 0))} parameters")
+    trial, values = min(ends, key=lambda end: end[0].aicc)
+    trials = tuple(FormTrial(**{**vars(t), "chosen": t is trial}) for t, _ in ends)
+    return _Chosen(values=values, free=junction_names(definitions, trial.shields), trials=trials)
+
+
+def _best(blocks: Sequence[Block], starts: Sequence[Mapping[str, float]], space: ParameterSpace) -> Solution:
+    """The lowest of the minima that the better starts lead to."""
+    if len(starts) > _FOLLOWED:
+        looks = [solve(blocks, space, start, robust=True, evaluations=_FIRST_LOOK) for start in starts]
+        starts = [look.values for look in sorted(looks, key=lambda look: look.cost)[:_FOLLOWED]]  # type: ignore[misc]
+    return min((solve(blocks, space, start, robust=True) for start in starts), key=lambda end: end.cost)

@@ -1,0 +1,257 @@
+"""From what a part folder says to what a fit sees: curves and table values as blocks of residuals."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock
+from fitter.fitting.space import Values
+from fitter.gate_charge import OperatingPoint, gate_charge_curve
+from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN
+from fitter.models.channel import CHANNEL, on_resistance, threshold_voltage
+from fitter.models.temperature import REFERENCE, TEMPERATURE
+from fitter.models.transistor import GATE, Transistor
+from fitter.models.types import Numbers
+from fitter.part import Axis, Curve, Part, Quantity, Stated, StatedGateCharge
+
+__all__ = [
+    "TABLE_ERROR",
+    "capacitance_blocks",
+    "channel_blocks",
+    "curve_block",
+    "from_axis",
+    "gate_charge_blocks",
+    "to_axis",
+]
+
+#: 1-sigma error of a typical table value relative to itself: it is printed with two or three digits and need not belong
+#: to the very device whose curves are printed (common practice, no source).
+TABLE_ERROR = {"v_gs_th": 0.02, "r_ds_on": 0.02, "capacitance": 0.03, "q_g": 0.02, "q_gs": 0.04, "q_gd": 0.04, "v_plateau": 0.02}
+
+#: Built-in potential of a junction, and how far the fitted one may be expected from it, as a natural logarithm: 0.6 to 3 V is
+#: physics (silicon, silicon carbide), the rest leaves room for what the form makes of it. It only matters where
+#: no point at low VDS was digitized: there it keeps the capacitance at 0 V from running away.
+_BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
+
+_GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
+_DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
+_CHANNEL = tuple(d.name for d in CHANNEL.values())
+_LAWS = tuple(d.name for d in TEMPERATURE.values())
+_GATE = tuple(d.name for d in GATE.values())
+#: The path of a gate-charge curve runs on beyond the last point by this share, so that no point lies past its end.
+_BEYOND = 1.1
+
+Evaluate = Callable[[Transistor, Numbers], Numbers]
+
+
+def to_axis(values: NDArray[np.float64], axis: Axis) -> NDArray[np.float64]:
+    """SI values in the axis' own coordinate: their logarithm on a log axis."""
+    return np.log(values) if axis.scale == "log" else np.asarray(values, dtype=float)
+
+
+def _model_to_axis(values: Numbers, axis: Axis) -> Numbers:
+    if axis.scale == "linear":
+        return values
+    return np.log(np.where(values.real > 1e-30, values, 1e-30))
+
+
+def from_axis(coordinates: Numbers, axis: Axis) -> Numbers:
+    """Coordinates on an axis as SI values."""
+    return np.exp(coordinates) if axis.scale == "log" else coordinates
+
+
+def _digitized(curve: Curve) -> dict[str, object]:
+    """The fields that every block of a curve takes from it."""
+    return {
+        "name": curve.name,
+        "group": str(curve.quantity),
+        "x": to_axis(curve.x, curve.x_axis),
+        "y": to_axis(curve.y, curve.y_axis),
+        "sigma_x": np.full(curve.x.size, curve.point_error * curve.x_axis.length),
+        "sigma_y": np.full(curve.x.size, curve.point_error * curve.y_axis.length),
+        "shift_x": curve.axis_error * curve.x_axis.length,
+        "shift_y": curve.axis_error * curve.y_axis.length,
+    }
+
+
+def curve_block(curve: Curve) -> PointsBlock | PathBlock:
+    """The block of a curve.
+
+    Parameters
+    ----------
+    curve : Curve
+        Any quantity but body_diode.
+
+    Returns
+    -------
+    PointsBlock or PathBlock
+    """
+    if curve.quantity is Quantity.GATE_CHARGE:
+        return _gate_charge_path(curve)
+    parameters, evaluate = _EVALUATED[curve.quantity](curve)
+
+    def function(values: Values, x: Numbers) -> Numbers:
+        y = evaluate(Transistor.from_values(values), from_axis(x, curve.x_axis))
+        return _model_to_axis(y, curve.y_axis)
+
+    return PointsBlock(**_digitized(curve), model_parameters=parameters, function=function)  # type: ignore[arg-type]
+
+
+def _not_below_zero(v: Numbers) -> Numbers:
+    """A point clicked at 0 V may come to lie below it by the reading error; the printed curve ends at 0."""
+    return np.where(v.real > 0.0, v, 0.0)
+
+
+def _c_iss(_: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    return ("c_gs", *_GATE_DRAIN), lambda t, v: t.c_iss(_not_below_zero(v))
+
+
+def _c_oss(_: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    return (*_DRAIN_SOURCE, *_GATE_DRAIN), lambda t, v: t.c_oss(_not_below_zero(v))
+
+
+def _c_rss(_: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    return _GATE_DRAIN, lambda t, v: t.c_rss(_not_below_zero(v))
+
+
+def _channel_parameters(t_j: float) -> tuple[str, ...]:
+    return _CHANNEL if t_j == REFERENCE else _CHANNEL + _LAWS
+
+
+def _transfer(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    assert_v_ds, t_j = curve.v_ds, curve.t_j if curve.t_j is not None else REFERENCE
+    return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v, assert_v_ds)
+
+
+def _output(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    v_gs, t_j = curve.v_gs, curve.t_j if curve.t_j is not None else REFERENCE
+    return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v_gs, v)
+
+
+def _r_ds_on_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    i_d, v_gs = curve.i_d, curve.v_gs
+
+    def evaluate(t: Transistor, t_j: Numbers) -> Numbers:
+        hot = on_resistance(i_d, v_gs, t.at(t_j).channel)
+        return hot / on_resistance(i_d, v_gs, t.channel) if curve.y_unit == "" else hot
+
+    return _CHANNEL + _LAWS, evaluate
+
+
+def _v_gs_th_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    return _CHANNEL + _LAWS, lambda t, t_j: threshold_voltage(curve.i_d, t.at(t_j).channel)
+
+
+_EVALUATED: dict[Quantity, Callable[[Curve], tuple[tuple[str, ...], Evaluate]]] = {
+    Quantity.CISS: _c_iss,
+    Quantity.COSS: _c_oss,
+    Quantity.CRSS: _c_rss,
+    Quantity.TRANSFER: _transfer,
+    Quantity.OUTPUT: _output,
+    Quantity.RDS_ON_TEMPERATURE: _r_ds_on_temperature,
+    Quantity.VGS_TH_TEMPERATURE: _v_gs_th_temperature,
+}
+
+
+def _gate_charge_path(curve: Curve) -> PathBlock:
+    point = OperatingPoint(
+        v_dd=curve.v_dd, i_d=curve.i_d, v_gs=_BEYOND * float(np.max(curve.y)), load=curve.load or "current"
+    )
+
+    def function(values: Values) -> tuple[Numbers, Numbers]:
+        path = gate_charge_curve(Transistor.from_values(values), point)
+        return _model_to_axis(path.q_g, curve.x_axis), _model_to_axis(path.v_gs, curve.y_axis)
+
+    parameters = _GATE + _GATE_DRAIN + _CHANNEL
+    return PathBlock(**_digitized(curve), model_parameters=parameters, function=function)  # type: ignore[arg-type]
+
+
+def _of(part: Part, *quantities: Quantity) -> list[PointsBlock | PathBlock]:
+    return [curve_block(c) for c in part.curves if c.quantity in quantities and c.t_j in (None, REFERENCE)]
+
+
+def _typical(stated: Stated | None) -> float | None:
+    return None if stated is None else stated.typ
+
+
+def _scalar(
+    name: str, parameters: tuple[str, ...], stated: Stated | None, error: float, function: Callable[[Transistor], Numbers]
+) -> list[ScalarBlock]:
+    typ = _typical(stated)
+    if typ is None:
+        return []
+    return [
+        ScalarBlock(
+            name=name, parameters=parameters, stated=typ, sigma=error * typ,
+            function=lambda values: function(Transistor.from_values(values)),
+        )
+    ]  # fmt: skip
+
+
+def capacitance_blocks(part: Part) -> list[Block]:
+    """The capacitance curves; for one that is missing, its table value."""
+    blocks: list[Block] = list(_of(part, Quantity.CISS, Quantity.COSS, Quantity.CRSS))
+    blocks += [_built_in(GATE_DRAIN["phi"].name), _built_in(DRAIN_SOURCE["phi"].name)]
+    table = part.stated.capacitance
+    if table is None:
+        return blocks
+    v, error = table.v_ds, TABLE_ERROR["capacitance"]
+    if not part.curves_of(Quantity.CISS):
+        blocks += _scalar("ciss (table)", ("c_gs", *_GATE_DRAIN), table.c_iss, error, lambda t: t.c_iss(v))
+    if not part.curves_of(Quantity.COSS):
+        blocks += _scalar("coss (table)", _DRAIN_SOURCE + _GATE_DRAIN, table.c_oss, error, lambda t: t.c_oss(v))
+    if not part.curves_of(Quantity.CRSS):
+        blocks += _scalar("crss (table)", _GATE_DRAIN, table.c_rss, error, lambda t: t.c_rss(v))
+    return blocks
+
+
+def _built_in(name: str) -> ScalarBlock:
+    """What is known of a built-in potential before any point is seen."""
+    return ScalarBlock(
+        name=f"{name} (expected)", parameters=(name,), stated=math.log(_BUILT_IN), sigma=_BUILT_IN_SPREAD,
+        function=lambda values: np.log(values[name]),
+    )  # fmt: skip
+
+
+def channel_blocks(part: Part) -> list[Block]:
+    """Transfer and output curves at 25 degC, the stated VGS(th) and RDS(on)."""
+    blocks: list[Block] = list(_of(part, Quantity.TRANSFER, Quantity.OUTPUT))
+    threshold, on = part.stated.threshold, part.stated.on_resistance
+    if threshold is not None:
+        blocks += _scalar(
+            "vgs_th (table)", _CHANNEL, threshold.v_gs_th, TABLE_ERROR["v_gs_th"],
+            lambda t: threshold_voltage(threshold.i_d, t.channel),
+        )  # fmt: skip
+    if on is not None:
+        blocks += _scalar(
+            "rds_on (table)", _CHANNEL, on.r_ds_on, TABLE_ERROR["r_ds_on"],
+            lambda t: on_resistance(on.i_d, on.v_gs, t.channel),
+        )  # fmt: skip
+    return blocks
+
+
+def gate_charge_blocks(part: Part) -> list[Block]:
+    """The digitized gate-charge curves; where there are none, the stated QG, QGS, QGD and plateau."""
+    curves = _of(part, Quantity.GATE_CHARGE)
+    if curves:
+        return list(curves)
+    table = part.stated.gate_charge
+    return [] if table is None else _gate_charge_table(table)
+
+
+def _gate_charge_table(table: StatedGateCharge) -> list[Block]:
+    point = OperatingPoint(v_dd=table.v_dd, i_d=table.i_d, v_gs=table.v_gs, load=table.load)
+    parameters = _GATE + _GATE_DRAIN + _CHANNEL
+    stated = {"q_g": table.q_g, "q_gs": table.q_gs, "q_gd": table.q_gd, "v_plateau": table.v_plateau}
+    read = {"q_g": "total", "q_gs": "q_gs", "q_gd": "q_gd", "v_plateau": "v_plateau"}
+    blocks: list[Block] = []
+    for name, value in stated.items():
+        def figure(t: Transistor, name: str = name) -> Numbers:
+            return np.asarray(getattr(gate_charge_curve(t, point).reading, read[name]))[..., None]
+
+        blocks += _scalar(f"{name} (table)", parameters, value, TABLE_ERROR[name], figure)
+    return blocks

@@ -1,0 +1,184 @@
+"""The least-squares fit: lmfit on scaled coordinates with exact derivatives, and what it says of the parameters."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import lmfit
+import numpy as np
+from numpy.typing import NDArray
+
+from fitter.errors import FitError, OperatingPointError
+from fitter.fitting.blocks import Block
+from fitter.fitting.space import ParameterSpace, Values, derivatives
+
+__all__ = ["Solution", "solve"]
+
+Array = NDArray[np.float64]
+
+#: A coordinate nearer to a bound than this many of its own standard errors, the others held, sits on it.
+_ON_BOUND = 0.02
+_MOST_EVALUATIONS = 400
+_NOWHERE = 1e6
+_TOLERANCE = 1e-8
+
+
+@dataclass(frozen=True, kw_only=True)
+class Solution:
+    """The end of a least-squares fit.
+
+    Parameters
+    ----------
+    space : ParameterSpace
+        Its free parameters, nuisance parameters included.
+    coordinates : ndarray, shape (n,)
+        Where it ended.
+    blocks : tuple of Block
+        What it saw.
+    residuals : mapping of str to ndarray
+        Residuals of each block in standard deviations, priors included.
+    jacobian : ndarray, shape (rows, n)
+        Derivatives of all residuals by the coordinates.
+    on_bound : ndarray of bool, shape (n,)
+        Which coordinates sit on a bound.
+    chi_square : float
+        Sum of squared residuals.
+    cost : float
+        What was minimised: half of `chi_square`, or its robust counterpart.
+    converged : bool
+        Whether the fit reached its tolerance.
+    """
+
+    space: ParameterSpace
+    coordinates: Array
+    blocks: tuple[Block, ...]
+    residuals: Mapping[str, Array]
+    jacobian: Array
+    on_bound: NDArray[np.bool_]
+    chi_square: float
+    cost: float
+    converged: bool
+
+    @property
+    def values(self) -> Values:
+        """SI values of all parameters by name."""
+        return self.space.values(self.coordinates)
+
+    @property
+    def covariance(self) -> Array:
+        """Covariance of the coordinates, shape (n, n); rows and columns of those on a bound are zero."""
+        inside = ~self.on_bound
+        result = np.zeros((inside.size, inside.size))
+        information = self.jacobian[:, inside].T @ self.jacobian[:, inside]
+        # Scaled to a unit diagonal first: the information spans many decades otherwise.
+        scale = np.sqrt(np.maximum(np.diag(information), 1e-300))
+        inverse = np.linalg.pinv(information / np.outer(scale, scale), rcond=1e-14, hermitian=True)
+        result[np.ix_(inside, inside)] = inverse / np.outer(scale, scale)
+        return result
+
+    def leverage(self) -> Mapping[str, float]:
+        """How many parameters' worth of freedom each block's data took: the trace of its part of the hat matrix."""
+        inside = ~self.on_bound
+        hat = np.linalg.qr(self.jacobian[:, inside])[0] ** 2
+        taken, row = {}, 0
+        for block in self.blocks:
+            rows = self.residuals[block.name].size
+            taken[block.name] = float(np.sum(hat[row : row + block.points]))
+            row += rows
+        return taken
+
+
+def solve(
+    blocks: Sequence[Block], space: ParameterSpace, start: Values, *, robust: bool = False,
+    evaluations: int = _MOST_EVALUATIONS,
+) -> Solution:
+    """Fit the free parameters to the blocks.
+
+    Parameters
+    ----------
+    blocks : sequence of Block
+        Data and priors.
+    space : ParameterSpace
+        Free and fixed parameters; nuisance parameters of the blocks are among the free ones.
+    start : mapping of str to float
+        Start values [SI] of the free parameters; nuisance parameters may be absent and start at 0.
+    robust : bool
+        Whether far-off points count by their distance instead of its square (soft L1), for a first pass.
+    evaluations : int
+        How often the residuals may be computed.
+
+    Returns
+    -------
+    Solution
+
+    Raises
+    ------
+    FitError
+        Where a residual at the start is not a finite number.
+    """
+    blocks = tuple(blocks)
+    lower, upper = space.bounds()
+    rows = sum(block.points + len(block.nuisances) for block in blocks)
+    names = [f"u{i}" for i in range(len(space.free))]
+    parameters = lmfit.Parameters()
+    # A start on a bound has nowhere to go for a method that stays strictly inside.
+    margin = 1e-4 * np.minimum(1.0, upper - lower)
+    start = {**{name: 0.0 for block in blocks for name in block.nuisances}, **start}
+    begin = np.clip(space.coordinates(start), lower + margin, upper - margin)
+    for name, value, low, high in zip(names, begin, lower, upper, strict=True):
+        parameters.add(name, value=value, min=low, max=high)
+
+    def coordinates(current: lmfit.Parameters) -> Array:
+        return np.array([current[name].value for name in names])
+
+    def residual(current: lmfit.Parameters) -> Array:
+        values = space.values(coordinates(current))
+        try:
+            every = np.concatenate([np.real(block.residuals(values)) for block in blocks])
+        except OperatingPointError:
+            every = np.full(rows, np.nan)
+        # A step to where the channel cannot carry the test's current, or numbers overflow: so bad that it is taken back.
+        return every if np.all(np.isfinite(every)) else np.full(rows, _NOWHERE)
+
+    def jacobian(current: lmfit.Parameters) -> Array:
+        return _jacobian(blocks, space, coordinates(current))
+
+    if np.all(residual(parameters) == _NOWHERE):
+        raise FitError("the fit cannot begin: at its start values the channel does not carry the gate-charge test's current")
+    with np.errstate(invalid="ignore"):  # lmfit's own covariance, which is not used, may not be positive
+        result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations).minimize(
+            method="least_squares", jac=jacobian, x_scale="jac", ftol=_TOLERANCE, xtol=_TOLERANCE, gtol=_TOLERANCE,
+            loss="soft_l1" if robust else "linear",
+        )  # fmt: skip
+    found = coordinates(result.params)
+    values = space.values(found)
+    by_block = {block.name: np.real(block.residuals(values)) for block in blocks}
+    every = np.concatenate(list(by_block.values()))
+    slopes = _jacobian(blocks, space, found)
+    near = _ON_BOUND / np.sqrt(np.maximum(np.sum(slopes**2, axis=0), 1e-300))
+    near = np.minimum(near, 1e-3 * (upper - lower))
+    return Solution(
+        space=space,
+        coordinates=found,
+        blocks=blocks,
+        residuals=by_block,
+        jacobian=slopes,
+        on_bound=(found - lower < near) | (upper - found < near),
+        chi_square=float(sum(np.sum(r**2) for r in by_block.values())),
+        cost=float(np.sum(np.sqrt(1.0 + every**2) - 1.0 if robust else 0.5 * every**2)),
+        converged=bool(result.success and not result.aborted),
+    )
+
+
+def _jacobian(blocks: Sequence[Block], space: ParameterSpace, coordinates: Array) -> Array:
+    """Derivatives of all residuals by all coordinates, block by block: most depend on few of them."""
+    place = {name: i for i, name in enumerate(space.names)}
+    parts = []
+    for block in blocks:
+        names = tuple(name for name in block.parameters if name in place)
+        by_names = derivatives(block.residuals, space, coordinates, names)
+        part = np.zeros((by_names.shape[1], len(place)))
+        part[:, [place[name] for name in names]] = by_names.T
+        parts.append(part)
+    return np.concatenate(parts)

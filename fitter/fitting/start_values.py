@@ -1,0 +1,151 @@
+"""Start values from the curves themselves."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from itertools import product
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fitter.errors import FitError
+from fitter.models.temperature import REFERENCE
+from fitter.part import Curve, Part, Quantity
+
+__all__ = ["channel_start", "junction_start", "second_shield_starts", "shield_starts", "sorted_curve"]
+
+Array = NDArray[np.float64]
+
+_PHI = (0.1, 0.3, 0.7, 1.5, 4.0, 10.0, 30.0)
+_FLOOR = (0.0, 0.3, 0.6, 0.85, 0.95)
+#: Shares of ln VDS on the way down, at which a shield may take over.
+_SHIELD_AT = (0.3, 0.5, 0.7)
+
+
+def junction_start(v: Array, c: Array) -> dict[str, float]:
+    """Plain junction through points: the best of a grid of potentials and floors, each a straight line in logarithms.
+
+    Parameters
+    ----------
+    v : ndarray, shape (n,)
+        Voltage, at least 0 [V].
+    c : ndarray, shape (n,)
+        Capacitance, positive [F].
+
+    Returns
+    -------
+    dict
+        c_0 [F], phi [V], m, c_f [F]; m within 0.25 to 0.85.
+    """
+    best, result = np.inf, {"c_0": float(np.max(c)), "phi": 1.0, "m": 0.5, "c_f": 0.0}
+    for phi, share in product(_PHI, _FLOOR):
+        c_f = share * float(np.min(c))
+        x, y = np.log1p(v / phi), np.log(c - c_f)
+        slope, offset = np.polyfit(x, y, 1) if np.ptp(x) > 0.0 else (-0.5, float(y.mean()))
+        m = min(max(-slope, 0.25), 0.85)
+        offset = float(np.mean(y + m * x))
+        misfit = float(np.sum((np.log(np.exp(offset - m * x) + c_f) - np.log(c)) ** 2))
+        if misfit < best:
+            best, result = misfit, {"c_0": float(np.exp(offset)), "phi": phi, "m": m, "c_f": c_f}
+    return result
+
+
+def shield_starts(v: Array, c: Array) -> list[dict[str, float]]:
+    """Several starts for one shield: a plain junction up to some voltage, a shield that takes over there.
+
+    Parameters
+    ----------
+    v, c : ndarray, shape (n,)
+        As for `junction_start`, in rising order of v.
+
+    Returns
+    -------
+    list of dict
+        As from `junction_start`, with s_1, v_1 [V], w_1.
+    """
+    starts = []
+    fall = np.log(c[0] / np.minimum.accumulate(c))
+    for share in _SHIELD_AT:
+        at = int(np.argmax(fall >= share * fall[-1]))
+        v_s = max(float(v[at]), 0.1)
+        below = v <= v_s
+        base = junction_start(v[below], c[below]) if np.count_nonzero(below) >= 4 else junction_start(v, c)
+        c_f = 0.5 * float(np.min(c))
+        starts += [{**base, "c_f": c_f, "s_1": 0.9, "v_1": v_s, "w_1": width} for width in (0.1, 0.4)]
+    return starts
+
+
+def second_shield_starts(one: Mapping[str, float]) -> list[dict[str, float]]:
+    """Starts for two shields: a second one below or above the first.
+
+    Parameters
+    ----------
+    one : mapping of str to float
+        A junction fitted with one shield, as from `shield_starts`.
+
+    Returns
+    -------
+    list of dict
+        With s_2, v_2 [V], w_2 added.
+    """
+    return [
+        {**one, "s_1": 0.7, "phi": max(one["phi"], 0.5), "m": min(one["m"], 0.55), "w_1": min(one["w_1"], 0.2),
+         "s_2": 0.6, "v_2": factor * one["v_1"], "w_2": 0.1}
+        for factor in (0.15, 0.35, 3.0)
+    ]  # fmt: skip
+
+
+def channel_start(part: Part) -> dict[str, float]:
+    """Square law through the transfer curve: a straight line of sqrt(2 ID) over VGS.
+
+    Parameters
+    ----------
+    part : Part
+        With a transfer curve at 25 degC.
+
+    Returns
+    -------
+    dict
+        v_th [V], k [A/V^2], w [V], lam [1/V], r_s and r_d [ohm].
+
+    Raises
+    ------
+    FitError
+        Where there is no such curve, or ID does not rise with VGS on it.
+    """
+    curves = [c for c in part.curves_of(Quantity.TRANSFER) if c.t_j in (None, REFERENCE)]
+    if not curves:
+        raise FitError("no transfer curve at 25 C: give one with tj_C = 25")
+    v = np.concatenate([c.x for c in curves])
+    i = np.concatenate([c.y for c in curves])
+    top = float(np.max(i))
+    middle = (i > 0.02 * top) & (i < 0.7 * top)
+    if np.count_nonzero(middle) < 2:
+        middle = i > 0.0
+    if np.count_nonzero(middle) < 2 or np.ptp(v[middle]) <= 0.0:
+        raise FitError(f"{curves[0].name}: fewer than two points with current; digitize more of the curve")
+    slope, offset = np.polyfit(v[middle], np.sqrt(2.0 * i[middle]), 1)
+    if slope <= 0.0:
+        raise FitError(f"{curves[0].name}: ID does not rise with VGS; are the columns exchanged?")
+    k = 1.3 * float(slope) ** 2
+    over = float(np.max(v)) + float(offset / slope)
+    on = part.stated.on_resistance
+    given = None if on is None or on.r_ds_on is None else on.r_ds_on.typ or on.r_ds_on.max
+    # Mobility reduction bends the curve down by a tenth or so at its top.
+    r_s = 0.1 / (k * max(over, 0.1))
+    if given is not None:
+        r_s = min(r_s, 0.3 * given)
+    return {
+        "v_th": -float(offset / slope), "k": k, "w": 0.1, "lam": 0.0,
+        "r_s": r_s, "r_d": 0.0 if given is None else 0.3 * given,
+    }  # fmt: skip
+
+
+def sorted_curve(curves: tuple[Curve, ...]) -> tuple[Array, Array] | None:
+    """All points of some curves in rising order of x; None where there are none."""
+    if not curves:
+        return None
+    x = np.concatenate([c.x for c in curves])
+    y = np.concatenate([c.y for c in curves])
+    order = np.argsort(x, kind="stable")
+    return x[order], y[order]

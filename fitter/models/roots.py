@@ -1,0 +1,76 @@
+"""Roots of many increasing functions at once."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fitter.models.types import Numbers
+
+__all__ = ["carries_derivatives", "increasing_root", "lifted_root"]
+
+_MOST_STEPS = 200
+
+Function = Callable[[Numbers], tuple[Numbers, Numbers]]
+
+
+def increasing_root(
+    function: Function, start: Numbers, lower: Numbers, upper: Numbers, tolerance: float = 1e-13
+) -> NDArray[np.float64]:
+    """Root of each of many increasing functions, by Newton's method kept inside a shrinking bracket.
+
+    Parameters
+    ----------
+    function : callable
+        Takes the array of arguments, returns values and slopes, element by element.
+    start, lower, upper : array_like of float
+        First guess and bracket; they broadcast to the shape of the result.
+    tolerance : float
+        A step this small relative to the root ends the search for an element.
+
+    Returns
+    -------
+    ndarray of float
+        Where the function crosses zero; the bracket's end where it does not cross inside.
+    """
+    x, low, high = (np.array(a, dtype=float) for a in np.broadcast_arrays(start, lower, upper))
+    for _ in range(_MOST_STEPS):
+        value, slope = function(x)
+        low = np.where(value < 0.0, x, low)
+        high = np.where(value > 0.0, x, high)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            new = x - value / slope
+        new = np.where((new >= low) & (new <= high), new, 0.5 * (low + high))
+        new = np.where(value == 0.0, x, new)
+        done = np.abs(new - x) <= tolerance * np.abs(new) + 1e-300
+        x = new
+        if done.all():
+            break
+    return x
+
+
+def carries_derivatives(*values: Numbers) -> bool:
+    """Whether any of the values is complex, that is, carries a derivative in its imaginary part."""
+    return any(np.iscomplexobj(value) for value in values)
+
+
+def lifted_root(function: Function, root: Numbers) -> Numbers:
+    """A root of the real function as the root of the complex one: one Newton step from it.
+
+    The step is exact to first order (implicit function theorem), so the imaginary part is the root's derivative.
+
+    Parameters
+    ----------
+    function : callable
+        The function with its complex parameters.
+    root : array_like
+        Root of its real part.
+
+    Returns
+    -------
+    ndarray of complex
+    """
+    value, slope = function(root)
+    return root - value / slope

@@ -1,0 +1,85 @@
+"""Smooth steps between two regions: the softplus function and its derivatives."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from fitter.models.types import Numbers
+
+__all__ = ["inverse_softplus", "logistic", "softplus"]
+
+
+def _minus_magnitude(t: Numbers) -> Numbers:
+    """-|t|, as an analytic function on either side of Re t = 0."""
+    return np.where(t.real > 0.0, -t, t)
+
+
+def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
+    """Softplus w ln(1 + exp(x/w)), in the form that cannot overflow.
+
+    Parameters
+    ----------
+    x : array_like
+        Variable, real or complex.
+    w : array_like
+        Width of the bend, positive, in the unit of x.
+
+    Returns
+    -------
+    ndarray
+        Tends to x for x >> w and to 0 for x << -w.
+
+    Examples
+    --------
+    >>> float(softplus(0.0, 2.0) / np.log(4.0))
+    1.0
+    """
+    x, w = np.asarray(x), np.asarray(w)
+    return np.where(x.real > 0.0, x, 0.0) + w * np.log1p(np.exp(_minus_magnitude(x / w)))
+
+
+def logistic(x: ArrayLike, w: ArrayLike) -> Numbers:
+    """Derivative of the softplus by x: 1/(1 + exp(-x/w)).
+
+    Parameters
+    ----------
+    x, w : array_like
+        As for `softplus`.
+
+    Returns
+    -------
+    ndarray
+        Between 0 and 1.
+
+    Examples
+    --------
+    >>> float(logistic(0.0, 1.0)), float(logistic(-1e6, 1.0))
+    (0.5, 0.0)
+    """
+    t = np.asarray(x) / np.asarray(w)
+    e = np.exp(_minus_magnitude(t))
+    return np.where(t.real > 0.0, 1.0, e) / (1.0 + e)
+
+
+def inverse_softplus(y: ArrayLike, w: ArrayLike) -> Numbers:
+    """The x at which the softplus is y: x = y + w ln(1 - exp(-y/w)).
+
+    Parameters
+    ----------
+    y : array_like
+        Positive, in the unit of x.
+    w : array_like
+        As for `softplus`.
+
+    Returns
+    -------
+    ndarray
+
+    Examples
+    --------
+    >>> round(float(inverse_softplus(softplus(-0.3, 0.1), 0.1)), 12)
+    -0.3
+    """
+    y, w = np.asarray(y), np.asarray(w)
+    return y + w * np.log(-np.expm1(-y / w))
