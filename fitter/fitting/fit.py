@@ -26,8 +26,10 @@ Array = NDArray[np.float64]
 
 #: How often standard deviations are widened by the misfit and the fit repeated.
 _WIDENINGS = 2
-#: With standard deviations widened by less than this the square law is said to fit all transfer and output curves.
-_FITS_ALL = 1.5
+#: How much farther from its points the transfer curve may come to lie for the sake of output curves.
+_WORSE = 2.0
+#: Factors on the output curves' standard deviations that are tried for that.
+_OUTPUT_WIDENINGS = (1.0, 3.0, 10.0, 30.0, 100.0)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -162,9 +164,8 @@ class _Stage:
 def _fit_channel(part: Part) -> _Stage:
     """The channel alone, led by the transfer curve: that is what sets the plateau.
 
-    Where the square law fits all curves, output curves count in full. Where it does not (a channel whose carriers reach their
-    saturation velocity, say), their standard deviations are widened by how far they lie off what the transfer curves
-    and the table values say, so that they do not drag the transfer curve along.
+    Where the square law fits all curves, output curves count in full. Where it does not (carriers that reach their saturation
+    velocity, say), they count as much as can be without the transfer curve being met much worse for it.
     """
     blocks = observations.channel_blocks(part)
     outputs = [block for block in blocks if block.group == Quantity.OUTPUT]
@@ -178,20 +179,35 @@ def _fit_channel(part: Part) -> _Stage:
     rough = solve(leading, model_space(free, fixed, leading), start, robust=True)
     marked, outliers = set_aside(rough)
     solution = solve(marked, model_space(free, fixed, marked), rough.values)
-    if outputs:
-        # What only they tell, with all else held.
-        held = {name: float(np.real(solution.values[name])) for name in ("v_th", "k", "w", "r_s")}
-        own = solve(outputs, model_space(("lambda", "r_d"), held, outputs), {**solution.values, "lambda": 1e-3}, robust=True)
-        marked_outputs, more = set_aside(own)
-        off = {s.name: s.inflation for s in _statistics(replace(own, blocks=marked_outputs))}
-        marked, outliers = (*marked, *marked_outputs), outliers + more
-        fixed, free = {}, tuple(d.name for d in CHANNEL.values())
-        start = {**solution.values, **{n: own.values[n] for n in own.space.names}}
-        solution = solve(marked, model_space(free, fixed, marked), start)
-        if max(s.inflation for s in _statistics(solution)) > _FITS_ALL:
-            marked = tuple(replace(b, least_inflation=off.get(b.name, 1.0)) for b in marked)
-            solution = solve(marked, model_space(free, fixed, marked), start)
-    return _Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
+    if not outputs:
+        return _Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
+
+    allowed = _WORSE * _widening(solution, Quantity.TRANSFER)
+    free = tuple(d.name for d in CHANNEL.values())
+    start = {**solution.values, "lambda": 1e-3}
+    every = (*marked, *outputs)
+    rough = solve(every, model_space(free, {}, every), start, robust=True)
+    marked, outliers = set_aside(rough)
+    start = rough.values
+    for weight in _OUTPUT_WIDENINGS:
+        weighed = tuple(replace(b, least_inflation=weight) if b.group == Quantity.OUTPUT else b for b in marked)
+        solution = solve(weighed, model_space(free, {}, weighed), start)
+        found = _widening(solution, Quantity.TRANSFER)
+        if found <= allowed:
+            break
+        start = solution.values
+    if weight > 1.0:
+        # The balance between the two kinds of curve stays as it was found.
+        weighed = tuple(
+            replace(b, least_inflation=weight * found) if b.group == Quantity.OUTPUT else b for b in weighed
+        )
+    return _Stage(blocks=weighed, free=free, fixed={}, outliers=outliers, solution=solution)
+
+
+def _widening(solution: Solution, group: str) -> float:
+    """By how much a group's standard deviations would have to be widened for its misfit."""
+    names = {block.name for block in solution.blocks if block.group == group}
+    return max(s.inflation for s in _statistics(solution) if s.name in names)
 
 
 def _found(stage: CapacitanceFit | _Stage) -> dict[str, float]:
