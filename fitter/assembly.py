@@ -16,6 +16,7 @@ from fitter.fitting.intervals import standard_errors
 from fitter.fitting.observations import from_axis
 from fitter.model import CurveRow, FittedModel
 from fitter.models.transistor import DEFINITIONS
+from fitter.models.types import scalar
 from fitter.parameters import Origin, Parameter
 from fitter.part import Curve, Notice, Part, Quantity
 from fitter.version import VERSION
@@ -80,7 +81,7 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     for name, d in DEFINITIONS.items():
         if name not in values:
             continue
-        value = float(np.real(values[name]))
+        value = scalar(values[name])
         origin: Origin = "fitted"
         stderr: float | None = None
         note = ""
@@ -104,7 +105,15 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     for name, (unit, meaning) in _PACKAGE.items():
         given = getattr(part.package, name)
         if given is not None:
-            table[name] = Parameter(name=name, value=given, stderr=None, unit=unit, origin="fixed", meaning=meaning, note="as given")
+            table[name] = Parameter(
+                name=name,
+                value=given,
+                stderr=None,
+                unit=unit,
+                origin="fixed",
+                meaning=meaning,
+                note="as given",
+            )
     return table
 
 
@@ -113,7 +122,7 @@ _WHY_FIXED = {
     "r_d": "no RDS(on) is stated and no output curve given",
 }
 _WHY_ASSUMED = {
-    "c_ch": "shows on no curve at VGS = 0; from the on-state input capacitance, taken as 1.5 times Ciss at VDD (1.0 to 2.3)",
+    "c_ch": "shows on no curve at VGS = 0; the on-state input capacitance is taken as 1.5 (1.0 to 2.3) Ciss(VDD)",
     "c_acc": "shows on no curve at VGS = 0; taken as Crss at the lowest digitized VDS",
 }
 
@@ -147,35 +156,27 @@ def _points(part: Part, result: FitResult) -> tuple[CurveRow, ...]:
 
 
 def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter]) -> list[Notice]:
-    notices = [Notice(topic=p.name, text=f"{p.name} {p.note}") for p in parameters.values() if "bound" in p.note]
-    open_ones = [p.name for p in parameters.values() if p.origin == "not determined"]
-    if open_ones:
-        notices.append(Notice(topic="parameters", text=f"the data do not determine {', '.join(open_ones)}"))
+    said = [(p.name, f"{p.name} {p.note}") for p in parameters.values() if "bound" in p.note]
+    undetermined = [p.name for p in parameters.values() if p.origin == "not determined"]
+    if undetermined:
+        said.append(("parameters", f"the data do not determine {', '.join(undetermined)}"))
     curves = {c.name: c for c in part.curves}
-    notices += [_outlier(curves[o.curve], o.index, o.sigmas) for o in result.outliers]
+    said += [(o.curve, _left_aside(curves[o.curve], o.index, o.sigmas)) for o in result.outliers]
     for group in dict.fromkeys(b.group for b in result.solution.blocks if b.group):
-        names = {b.name for b in result.solution.blocks if b.group == group}
+        names = [b.name for b in result.solution.blocks if b.group == group]
         width = max(s.inflation for s in result.statistics if s.name in names)
         if width > _WORTH_SAYING:
-            notices.append(
-                Notice(
-                    topic=group,
-                    text=f"{', '.join(sorted(names))}: the model's form misses the points by {width:.1f} times their reading "
-                    "errors; the intervals are widened by that",
-                )
-            )
+            misses = f"the model's form misses the points by {width:.1f} times their reading errors"
+            said.append((group, f"{', '.join(names)}: {misses}; the intervals are widened by that"))
     fitted = {b.name for b in result.solution.blocks}
     aside = [c.name for c in part.curves if c.name not in fitted and c.quantity is not Quantity.GATE_CHARGE]
     if aside:
-        notices.append(Notice(topic="curves", text=f"read but not fitted: {', '.join(aside)}"))
+        said.append(("curves", f"read but not fitted: {', '.join(aside)}"))
     if not result.solution.converged:
-        notices.append(Notice(topic="fit", text="the fit stopped before it reached its tolerance; do not trust it unseen"))
-    return notices
+        said.append(("fit", "the fit stopped before it reached its tolerance; do not trust it unseen"))
+    return [Notice(topic=topic, text=text) for topic, text in said]
 
 
-def _outlier(curve: Curve, index: int, sigmas: float) -> Notice:
-    return Notice(
-        topic=curve.name,
-        text=f"{curve.file}:{curve.lines[index]}: a point of {curve.name} lies {abs(sigmas):.1f} standard deviations off; "
-        "it was left aside: look at it again",
-    )
+def _left_aside(curve: Curve, index: int, sigmas: float) -> str:
+    where = f"{curve.file}:{curve.lines[index]}: a point of {curve.name}"
+    return f"{where} lies {abs(sigmas):.1f} standard deviations off; it was left aside: look at it again"

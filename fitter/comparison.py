@@ -91,7 +91,9 @@ class _Row:
     used: bool
 
 
-def compare(part: Part, estimate: Estimate, used_blocks: Sequence[str], used_gate_charge: bool) -> tuple[Comparison, ...]:
+def compare(
+    part: Part, estimate: Estimate, used_blocks: Sequence[str], used_gate_charge: bool
+) -> tuple[Comparison, ...]:
     """Compare everything stated with the model.
 
     Parameters
@@ -185,7 +187,14 @@ def compare(part: Part, estimate: Estimate, used_blocks: Sequence[str], used_gat
     if (d := stated.body_diode) is not None:
         forward = "" if d.i_s is None else f"IS {amperes(d.i_s)}"
         recovery = "" if d.i_f is None or d.di_dt is None else f"IF {amperes(d.i_f)}, dI/dt {d.di_dt * 1e-6:g} A/us"
-        add([row("vsd", "V", forward, d.v_sd), row("qrr", "C", recovery, d.q_rr), row("trr", "s", recovery, d.t_rr)], None)
+        add(
+            [
+                row("vsd", "V", forward, d.v_sd),
+                row("qrr", "C", recovery, d.q_rr),
+                row("trr", "s", recovery, d.t_rr),
+            ],
+            None,
+        )
     return tuple(result)
 
 
@@ -195,7 +204,10 @@ def _gate_charge_figures(t: Transistor, point: OperatingPoint) -> Sequence[Numbe
 
 
 def _compared(
-    rows: Sequence[_Row], at: Sequence[int], figures: Callable[[Transistor], Sequence[Numbers]] | None, estimate: Estimate
+    rows: Sequence[_Row],
+    at: Sequence[int],
+    figures: Callable[[Transistor], Sequence[Numbers]] | None,
+    estimate: Estimate,
 ) -> list[Comparison]:
     found: list[tuple[float | None, float | None, float | None]] = [(None, None, None)] * len(rows)
     if figures is not None:
@@ -260,15 +272,12 @@ def explain_gate_charge(checks: Sequence[Comparison]) -> tuple[Notice, ...]:
         rest = {which: x["qg"] - x["qgs"] - x["qgd"] for which, x in (("fitted", fitted), ("stated", stated))}
         legs.append((
             "after the plateau", rest["fitted"] - rest["stated"],
-            "that leg is the on-state input capacitance, which no curve at VGS = 0 shows: it is assumed unless gate-charge "
-            "data are fitted (--use-gate-charge)",
+            "that leg is the on-state input capacitance, which no curve at VGS = 0 shows: it is assumed "
+            "unless gate-charge data are fitted (--use-gate-charge)",
         ))  # fmt: skip
+    off_by = f"QG is off by {100.0 * (total.deviation or 0.0):+.0f} %"
     if not legs:
-        text = f"QG is off by {100.0 * (total.deviation or 0.0):+.0f} %; with QGS and QGD stated, too, the leg could be named"
-        return (Notice(topic="qg", text=text),)
+        return (Notice(topic="qg", text=f"{off_by}; with QGS and QGD stated, too, the leg could be named"),)
     where, off, meaning = max(legs, key=lambda leg: abs(leg[1]))
     share = 100.0 * off / stated["qg"]
-    text = (
-        f"QG is off by {100.0 * (total.deviation or 0.0):+.0f} %, most of it {where} ({share:+.0f} % of QG): {meaning}"
-    )
-    return (Notice(topic="qg", text=text),)
+    return (Notice(topic="qg", text=f"{off_by}, most of it {where} ({share:+.0f} % of QG): {meaning}"),)

@@ -171,7 +171,7 @@ class _LoadLine:
         if not (point.v_dd > 0.0 and point.i_d > 0.0 and point.v_gs > 0.0):
             raise OperatingPointError("VDD, ID and VGS of a gate-charge test must all be above zero")
         self.point = point
-        self.series = np.asarray(channel.r_s) + channel.r_d
+        self.series: Numbers = np.asarray(channel.r_s) + np.asarray(channel.r_d)
         self.load_resistance = point.v_dd / point.i_d if point.load == "resistive" else 0.0
         self.resistance = self.series + self.load_resistance
         share = _LOAD_LINE_START if point.load == "resistive" else 1.0
@@ -184,7 +184,7 @@ class _LoadLine:
 
     def current(self, inner_v_ds: Numbers) -> Numbers:
         if self.point.load == "resistive":
-            return (self.point.v_dd - inner_v_ds) / self.resistance
+            return np.asarray((self.point.v_dd - inner_v_ds) / self.resistance)
         return self.point.i_d + 0.0 * inner_v_ds
 
     @property
@@ -221,9 +221,7 @@ def _end_of_walk(point: OperatingPoint, channel: Channel, load: _LoadLine, inner
 def _voltage_left(inner_v_gs: Numbers, point: OperatingPoint, channel: Channel, load: _LoadLine) -> Numbers:
     """Inner VDS on the way up: VDD less the drop over the resistances in series with the channel."""
 
-    def excess(
-        inner_v_ds: Numbers, v_gs: Numbers, c: Channel, resistance: Numbers
-    ) -> tuple[Numbers, Numbers]:
+    def excess(inner_v_ds: Numbers, v_gs: Numbers, c: Channel, resistance: Numbers) -> tuple[Numbers, Numbers]:
         carried, _, g_ds = conductances(v_gs, inner_v_ds, c)
         return inner_v_ds + resistance * carried - point.v_dd, 1.0 + resistance * g_ds
 
@@ -243,9 +241,7 @@ def _joined(first: Numbers, second: Numbers) -> Numbers:
     return np.concatenate([np.broadcast_to(leg, (*lead, leg.shape[-1])) for leg in (first, second)], axis=-1)
 
 
-def read_gate_charge(
-    q_g: ArrayLike, v_gs: ArrayLike, v_th: ArrayLike, window: float = 0.0
-) -> GateChargeReading:
+def read_gate_charge(q_g: ArrayLike, v_gs: ArrayLike, v_th: ArrayLike, window: float = 0.0) -> GateChargeReading:
     """Read QGS, QGD and the plateau off a gate-charge curve, fitted or digitized, by the rule of JESD24-2.
 
     The plateau voltage is VGS where dVGS/dQ first has its minimum. Line 1 is the regression of VGS on Q below
@@ -301,7 +297,7 @@ def _charge_at(q_g: Numbers, v_gs: Numbers, weights: Numbers, voltage: Numbers) 
     q_mean, v_mean = np.sum(weights * q_g, axis=-1), np.sum(weights * v_gs, axis=-1)
     off = q_g - q_mean[..., None]
     slope = np.sum(weights * off * v_gs, axis=-1) / np.sum(weights * off * off, axis=-1)
-    return q_mean + (voltage - v_mean) / slope
+    return np.asarray(q_mean + (voltage - v_mean) / slope)
 
 
 def _flattest(q_g: Numbers, v_gs: Numbers, window: float) -> Numbers:

@@ -1,7 +1,7 @@
 """The finished model: its parameters, how sure they are, and the curves that follow from them.
 
-Inside, everything is of n-channel polarity. Where a user looks in, a p-channel part has the signs of its datasheet: voltages and
-currents negative, charges, capacitances and energies positive.
+Inside, everything is of n-channel polarity. Where a user looks in, a p-channel part has the signs of its
+datasheet: voltages and currents negative, charges, capacitances and energies positive.
 """
 
 from __future__ import annotations
@@ -18,13 +18,15 @@ from fitter.errors import OperatingPointError
 from fitter.fitting.fit import BlockStatistics
 from fitter.fitting.forms import FormTrial
 from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, Figures, intervals, standard_errors
+from fitter.fitting.space import Values
 from fitter.gate_charge import GateChargeCurve, OperatingPoint, gate_charge_curve
 from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import Transistor
+from fitter.models.types import scalar
 from fitter.parameters import Parameter
-from fitter.part import Load, Notice, Part
+from fitter.part import Load, Notice, Part, Quantity
 
-__all__ = ["CurveRow", "FittedModel", "Interval"]
+__all__ = ["CurveRow", "FittedModel", "Interval", "operating_point"]
 
 Array = NDArray[np.float64]
 
@@ -122,7 +124,7 @@ class FittedModel:
         OperatingPointError
             Where the model knows nothing of that temperature.
         """
-        values = {name: float(np.real(value)) for name, value in self.estimate.values.items()}
+        values = {name: scalar(value) for name, value in self.estimate.values.items()}
         return Transistor.from_values(values).at(t_j)
 
     def ciss(self, v_ds: ArrayLike) -> Array:
@@ -179,7 +181,8 @@ class FittedModel:
         Parameters
         ----------
         vdd, i_d, v_gs : float
-            Supply [V], load current [A] and final gate voltage [V]; for a p-channel part with its signs or as magnitudes.
+            Supply [V], load current [A] and final gate voltage [V]; for a p-channel part with its signs or as
+            magnitudes.
         load : {"current", "resistive"}
             Constant current with a free-wheel diode, or a resistor of VDD/ID.
         t_j : float
@@ -203,6 +206,23 @@ class FittedModel:
             reading=replace(curve.reading, v_plateau=-curve.reading.v_plateau),
         )  # fmt: skip
 
+    def test_point(self) -> OperatingPoint:
+        """The stated gate-charge test in n-channel polarity.
+
+        Where none is stated, one stands in for it: half the rated VDS, half the rated VGS, and half the largest
+        current of the
+        transfer curve or, in a model without curves, what the channel carries half-way from threshold to that VGS.
+        """
+        table = self.part.stated.gate_charge
+        if table is not None:
+            return OperatingPoint(v_dd=table.v_dd, i_d=table.i_d, v_gs=table.v_gs, load=table.load)
+        v_dd, v_gs = 0.5 * self.part.v_ds_max, 0.5 * self.part.v_gs_max
+        transistor = self.transistor()
+        half_way = 0.5 * (v_gs + scalar(transistor.channel.v_th))
+        curves = self.part.curves_of(Quantity.TRANSFER)
+        i_d = 0.5 * float(np.max(curves[0].y)) if curves else float(transistor.i_d(half_way, v_dd))
+        return OperatingPoint(v_dd=v_dd, i_d=i_d, v_gs=v_gs)
+
     def gate_charge_intervals(
         self, vdd: float, i_d: float, v_gs: float, load: Load = "current", t_j: float = REFERENCE
     ) -> dict[str, Interval]:
@@ -220,7 +240,7 @@ class FittedModel:
         """
         point = operating_point(vdd, i_d, v_gs, load)
 
-        def figures(values: Mapping[str, ArrayLike]) -> NDArray[np.float64]:
+        def figures(values: Values) -> NDArray[np.float64]:
             r = gate_charge_curve(Transistor.from_values(values).at(t_j), point).reading
             return np.stack(np.broadcast_arrays(r.total, r.q_gs, r.q_gd, r.v_plateau), axis=-1)
 
@@ -262,7 +282,7 @@ class FittedModel:
         """
         v = self.sign * np.asarray(v_ds, dtype=float)
 
-        def logarithm(values: Mapping[str, ArrayLike]) -> NDArray[np.float64]:
+        def logarithm(values: Values) -> NDArray[np.float64]:
             t = Transistor.from_values(values)
             return np.asarray(np.log({"ciss": t.c_iss, "coss": t.c_oss, "crss": t.c_rss}[quantity](v)))
 

@@ -200,13 +200,9 @@ def write_new_folder(folder: str | os.PathLike[str]) -> tuple[Path, ...]:
         if target.exists() and not target.is_dir():
             raise OutputError(f"{given}: there is a file of this name already; name another folder")
         if target.is_dir() and (there := sorted(path.name for path in target.iterdir())):
-            raise OutputError(
-                f"{given}: the folder is not empty, it holds '{there[0]}'; name a new or an empty folder"
-            )
+            raise OutputError(f"{given}: the folder is not empty, it holds '{there[0]}'; name a new or an empty folder")
         if not target.parent.is_dir():
-            raise OutputError(
-                f"{given}: there is no folder '{given.parent}' to write it into; make that first"
-            )
+            raise OutputError(f"{given}: there is no folder '{given.parent}' to write it into; make that first")
         # The current folder cannot be exchanged for another one under the feet of the user's shell.
         if target.is_dir() and target.samefile(Path.cwd()):
             _write_into(target)

@@ -1,7 +1,7 @@
 """What a part folder says, as read: one transistor's curves, table values and ratings.
 
-All values are in SI, temperatures in degrees Celsius, and of the polarity of an n-channel part: for a p-channel part the reader
-has reversed every voltage and current, so that nothing below needs to know the channel's type.
+All values are in SI, temperatures in degrees Celsius, and of the polarity of an n-channel part: for a p-channel
+part the reader has reversed every voltage and current, so that nothing below needs to know the channel's type.
 Arrays are read-only.
 """
 

@@ -1,13 +1,29 @@
-"""The main job, step by step: read, fit, predict, compare, write."""
+"""The main job, step by step: read, judge, fit, predict, compare, write."""
 
 from __future__ import annotations
 
-from fitter.assembly import assemble
-from fitter.fitting.fit import fit
-from fitter.interface import Model
-from fitter.part import Part
+import json
+from dataclasses import replace
+from pathlib import Path
 
-__all__ = ["fit_part"]
+from fitter.assembly import assemble
+from fitter.errors import FitError, OperatingPointError
+from fitter.fitting.fit import fit
+from fitter.inspection import inspect
+from fitter.interface import Model
+from fitter.part import Notice, Part
+from fitter.plots import sheet_files
+from fitter.reader import read_part
+from fitter.writers import model_file, tables
+from fitter.writers.folder import replace_folder
+
+__all__ = ["OUTPUT_FOLDER", "fit_folder", "fit_part", "output_files", "write_outputs"]
+
+#: Name of the output folder inside the part folder, unless told otherwise.
+OUTPUT_FOLDER = "model"
+
+_TEXT_FILES = ("model.json", "parameters.csv", "checks.csv", "curves.csv", "gate_charge.csv")
+_SHEET_FILES = ("sheet.png", "sheet.pdf")
 
 
 def fit_part(part: Part, *, use_gate_charge: bool = False) -> Model:
@@ -30,3 +46,102 @@ def fit_part(part: Part, *, use_gate_charge: bool = False) -> Model:
         Where the data cannot carry a fit.
     """
     return assemble(part, fit(part, use_gate_charge=use_gate_charge), Model)
+
+
+def fit_folder(folder: Path, *, use_gate_charge: bool = False) -> Model:
+    """Read a part folder, judge it, and fit it where nothing speaks against it.
+
+    Parameters
+    ----------
+    folder : Path
+        The part folder.
+    use_gate_charge : bool
+        As for `fit_part`.
+
+    Returns
+    -------
+    Model
+        What was found doubtful is among its notices.
+
+    Raises
+    ------
+    PartFolderError
+        Where the folder cannot be read.
+    FitError
+        Where a finding stops the fit, or the data cannot carry one.
+    """
+    part = read_part(folder)
+    findings = inspect(part)
+    stops = [str(finding) for finding in findings if finding.severity == "stop"]
+    if stops:
+        raise FitError("\n".join(["these data would make a meaningless model:", *stops]))
+    doubts = tuple(Notice(topic=f.topic, text=str(f)) for f in findings if f.severity == "doubtful")
+    return fit_part(replace(part, notices=part.notices + doubts), use_gate_charge=use_gate_charge)
+
+
+def output_files(model: Model) -> dict[str, bytes]:
+    """Everything that ``fetwright fit`` writes, by file name.
+
+    Parameters
+    ----------
+    model : Model
+        As from `fit_part`.
+
+    Returns
+    -------
+    dict of str to bytes
+        The same bytes for the same model.
+    """
+    texts = {
+        "model.json": model_file.model_text(model),
+        "parameters.csv": tables.csv_text(model.to_frame()),
+        "checks.csv": tables.csv_text(model.checks_frame()),
+        "curves.csv": tables.csv_text(model.curves_frame()),
+        "gate_charge.csv": _gate_charge_text(model),
+        f"{model.part.name}.lib": model.subcircuit(),
+    }
+    return {**{name: text.encode() for name, text in texts.items()}, **sheet_files(model)}
+
+
+def _gate_charge_text(model: Model) -> str:
+    """The curve at the stated condition, or its stand-in; only a header where the model cannot reach it."""
+    p = model.test_point()
+    try:
+        curve = model.gate_charge(vdd=p.v_dd, i_d=p.i_d, v_gs=p.v_gs, load=p.load)
+    except OperatingPointError:
+        return ",".join(tables.GATE_CHARGE_COLUMNS) + "\n"
+    return tables.csv_text(tables.gate_charge_frame(curve))
+
+
+def write_outputs(model: Model, target: Path) -> tuple[str, ...]:
+    """Write everything into a folder, all or nothing.
+
+    Parameters
+    ----------
+    model : Model
+        As from `fit_part`.
+    target : Path
+        The folder. Files in it that the tool did not write are left alone.
+
+    Returns
+    -------
+    tuple of str
+        Names of the files.
+
+    Raises
+    ------
+    OutputError
+        Where the folder cannot be written; then nothing has changed.
+    """
+    files = output_files(model)
+    replace_folder(target, files, {*_TEXT_FILES, *_SHEET_FILES, *_earlier_subcircuit(target)})
+    return tuple(files)
+
+
+def _earlier_subcircuit(target: Path) -> tuple[str, ...]:
+    """Name of the subcircuit file that an earlier run wrote for a part of another name."""
+    try:
+        name = json.loads((target / "model.json").read_text(encoding="utf-8"))["part"]["name"]
+    except (OSError, ValueError, KeyError, TypeError, RecursionError):
+        return ()
+    return (f"{name}.lib",)

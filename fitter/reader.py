@@ -257,9 +257,7 @@ def _stated(root: TomlTable, reverse: bool) -> tuple[StatedValues, StatedConditi
         whole = True
         for figure in schema.conditions:
             if figure.symbol in needed and figure.symbol not in keys:
-                table.report(
-                    "", f"the condition '{figure.key}' is missing", f"expected the {figure.meaning}; add it"
-                )
+                table.report("", f"the condition '{figure.key}' is missing", f"expected the {figure.meaning}; add it")
             whole &= figure.symbol not in needed or figure.name in figures
         extra: dict[str, Load] = {}
         if schema.has_load:
@@ -277,9 +275,7 @@ def _stated(root: TomlTable, reverse: bool) -> tuple[StatedValues, StatedConditi
 class _Curves:
     """Turns the entries of a part file into curves, reading each CSV file once."""
 
-    def __init__(
-        self, *, files: InputFolder, problems: Problems, notices: list[Notice], reverse: bool
-    ) -> None:
+    def __init__(self, *, files: InputFolder, problems: Problems, notices: list[Notice], reverse: bool) -> None:
         self._files = files
         self._problems = problems
         self._notices = notices

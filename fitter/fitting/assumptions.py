@@ -6,10 +6,11 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import NDArray
 
 from fitter.fitting.space import ParameterSpace, Values
 from fitter.models.transistor import Transistor
+from fitter.models.types import Value, scalar
 from fitter.parameters import ParameterDefinition
 from fitter.part import Part, Quantity
 
@@ -37,7 +38,8 @@ _SIGMA_ACCUMULATION = math.log(1.5) / 1.96
 class GateAssumption:
     """What Cacc and Cch are assumed to be; called with values by name, it adds the two.
 
-    Cacc = accumulation_ratio Cgd(v_low), and Cch such that Cgs + Cch + Cacc = on_state_ratio Ciss(v_dd), but not below 0.
+    Cacc = accumulation_ratio Cgd(v_low), and Cch such that Cgs + Cch + Cacc = on_state_ratio Ciss(v_dd), but not
+    below 0.
 
     Parameters
     ----------
@@ -68,10 +70,10 @@ class GateAssumption:
         c_ch = on_state - values["c_gs"] - c_acc
         return {**values, "c_acc": c_acc, "c_ch": np.where(c_ch.real > 0.0, c_ch, 0.0)}
 
-    def start(self, values: Values) -> dict[str, ArrayLike]:
+    def start(self, values: Values) -> dict[str, Value]:
         """Start values for a fit of Cacc and Cch: as assumed, Cch off its bound of 0."""
         every = dict(self(values))
-        every["c_ch"] = max(float(np.real(every["c_ch"])), 0.1 * float(np.real(every["c_gs"])))
+        every["c_ch"] = max(scalar(every["c_ch"]), 0.1 * scalar(every["c_gs"]))
         return every
 
 

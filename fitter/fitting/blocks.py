@@ -2,8 +2,8 @@
 
 A clicked point is off along both axes: `point` independently for every point, `axis` in common for a whole curve.
 The independent part enters as an effective variance, sigma^2 = sigma_y^2 + g^2 sigma_x^2 with the curve's slope g
-(J. Orear, Am. J. Phys. 50 (1982) 912). The common part is a nuisance parameter along each axis, in units of its own standard
-deviation, with a residual of its own, so that it widens the intervals rather than biases the fit.
+(J. Orear, Am. J. Phys. 50 (1982) 912). The common part is a nuisance parameter along each axis, in units of its
+own standard deviation, with a residual of its own, so that it widens the intervals rather than biases the fit.
 """
 
 from __future__ import annotations
@@ -53,8 +53,10 @@ class _Digitized:
         Standard deviation of each point along x and y, in the same coordinates.
     shift_x, shift_y : float
         Standard deviation of the common error along each axis; 0 leaves its nuisance parameter out.
-    inflation, least_inflation : float
-        Factor on the standard deviations for a misfit of the model's form, 1 where there is none; and what it is at least.
+    inflation : float
+        Factor on the standard deviations for a misfit of the model's form; 1 where there is none.
+    held : bool
+        Whether that factor stays as it is, whatever the misfit.
     used : ndarray of bool, shape (n,)
         False for points that the fit leaves aside.
     """
@@ -69,7 +71,7 @@ class _Digitized:
     shift_x: float = 0.0
     shift_y: float = 0.0
     inflation: float = 1.0
-    least_inflation: float = 1.0
+    held: bool = False
     used: NDArray[np.bool_] = field(default_factory=lambda: np.ones(0, dtype=bool))
 
     def __post_init__(self) -> None:
@@ -98,26 +100,23 @@ class _Digitized:
         return int(self.x.size)
 
     @property
-    def widening(self) -> float:
-        """Factor on the standard deviations."""
-        return max(self.inflation, self.least_inflation)
-
-    @property
     def used_points(self) -> int:
         """Number of points that the fit does not leave aside."""
         return int(np.count_nonzero(self.used))
 
     def _shifts(self, values: Values) -> tuple[Numbers, Numbers]:
         """The common errors along x and y in the axes' coordinates."""
-        along = [values[nuisance(self.name, axis).name] for axis, s in (("x", self.shift_x), ("y", self.shift_y)) if s > 0.0]
+        along = [
+            values[nuisance(self.name, axis).name] for axis, s in (("x", self.shift_x), ("y", self.shift_y)) if s > 0.0
+        ]
         x = np.asarray(along.pop(0)) * self.shift_x if self.shift_x > 0.0 else np.zeros(())
         y = np.asarray(along.pop(0)) * self.shift_y if self.shift_y > 0.0 else np.zeros(())
         return x, y
 
     def _with_priors(self, residuals: Numbers, values: Values) -> Numbers:
-        residuals = np.where(self.used, residuals / self.widening, 0.0)
+        residuals = np.where(self.used, residuals / self.inflation, 0.0)
         priors = [np.asarray(values[name]) for name in self.nuisances]
-        shape = np.broadcast_shapes(residuals.shape[:-1] + (1,), *(np.shape(p) or (1,) for p in priors))
+        shape = np.broadcast_shapes((*residuals.shape[:-1], 1), *(np.shape(p) or (1,) for p in priors))
         rows = [np.broadcast_to(residuals, shape[:-1] + residuals.shape[-1:])]
         rows += [np.broadcast_to(p, shape) for p in priors]
         return np.concatenate(rows, axis=-1)
@@ -180,19 +179,17 @@ class PathBlock(_Digitized):
         lead = np.broadcast_shapes(path_x.shape[:-1], np.shape(shift_x)[:-1], np.shape(shift_y)[:-1])
         path_x, path_y = (np.broadcast_to(p, (*lead, p.shape[-1])) for p in (path_x, path_y))
         x, y = (self.x - shift_x) + np.zeros((*lead, 1)), (self.y - shift_y) + np.zeros((*lead, 1))
-        nearest = np.broadcast_to(
-            self._nearest(x.real, y.real, path_x.real, path_y.real), (*lead, self.x.size)
-        )
+        nearest = np.broadcast_to(self._nearest(x.real, y.real, path_x.real, path_y.real), (*lead, self.x.size))
         start = [np.take_along_axis(p, nearest, axis=-1) for p in (path_x, path_y)]
         stop = [np.take_along_axis(p, nearest + 1, axis=-1) for p in (path_x, path_y)]
         along_x, along_y = (stop[0] - start[0]) / self.sigma_x, (stop[1] - start[1]) / self.sigma_y
         off_x, off_y = (x - start[0]) / self.sigma_x, (y - start[1]) / self.sigma_y
-        return (off_y * along_x - off_x * along_y) / np.sqrt(along_x**2 + along_y**2)
+        return np.asarray((off_y * along_x - off_x * along_y) / np.sqrt(along_x**2 + along_y**2))
 
     def fitted(self, values: Values) -> Numbers:
         """The path at every point's x, without the common errors, in the axis' coordinate, shape (n,)."""
         path_x, path_y = self.function(values)
-        return np.interp(self.x, np.real(path_x), np.real(path_y))
+        return np.asarray(np.interp(self.x, np.real(path_x), np.real(path_y)))
 
     def residuals(self, values: Values) -> Numbers:
         """Residuals and priors in standard deviations, shape (..., points + nuisances)."""
@@ -206,7 +203,7 @@ class PathBlock(_Digitized):
         ox = (x[:, None] - path_x[:-1]) / self.sigma_x[:, None]
         oy = (y[:, None] - path_y[:-1]) / self.sigma_y[:, None]
         along = np.clip((ox * dx + oy * dy) / (dx**2 + dy**2 + 1e-300), 0.0, 1.0)
-        return np.argmin((ox - along * dx) ** 2 + (oy - along * dy) ** 2, axis=-1)
+        return np.asarray(np.argmin((ox - along * dx) ** 2 + (oy - along * dy) ** 2, axis=-1))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -233,22 +230,17 @@ class ScalarBlock:
     stated: float
     sigma: float
     inflation: float = 1.0
-    least_inflation: float = 1.0
+    held: bool = False
     group: str = ""
     nuisances: tuple[str, ...] = ()
     nuisance_definitions: tuple[ParameterDefinition, ...] = ()
     points: int = 1
     used_points: int = 1
 
-    @property
-    def widening(self) -> float:
-        """Factor on the standard deviation."""
-        return max(self.inflation, self.least_inflation)
-
     def residuals(self, values: Values) -> Numbers:
         """One residual in standard deviations."""
         figure = np.asarray(self.function(values))
-        residual = (self.stated - figure) / (self.sigma * self.widening)
+        residual = (self.stated - figure) / (self.sigma * self.inflation)
         return residual if residual.ndim else residual[None]
 
 

@@ -12,12 +12,13 @@ from fitter.errors import FitError
 from fitter.fitting import observations, start_values
 from fitter.fitting.assumptions import GateAssumption, assumed_space
 from fitter.fitting.blocks import Block, model_space
-from fitter.fitting.intervals import Estimate
 from fitter.fitting.forms import CapacitanceFit, FormTrial, fit_capacitances
+from fitter.fitting.intervals import Estimate
 from fitter.fitting.outliers import Outlier, set_aside
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace, Values
 from fitter.models.channel import CHANNEL
+from fitter.models.types import scalar
 from fitter.part import Part, Quantity
 
 __all__ = ["BlockStatistics", "FitResult", "fit"]
@@ -27,9 +28,9 @@ Array = NDArray[np.float64]
 #: How often standard deviations are widened by the misfit and the fit repeated.
 _WIDENINGS = 2
 #: How much farther from its points the transfer curve may come to lie for the sake of output curves.
-_WORSE = 2.0
+_WORSE = 1.25
 #: Factors on the output curves' standard deviations that are tried for that.
-_OUTPUT_WIDENINGS = (1.0, 3.0, 10.0, 30.0, 100.0)
+_OUTPUT_WIDENINGS = (1.0, 4.0, 12.0, 36.0, 100.0)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -110,7 +111,7 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
     """
     capacitances = fit_capacitances(part)
     channel = _fit_channel(part)
-    start = {**_found(capacitances), **_found(channel)}
+    start: Values = {**_found(capacitances), **_found(channel)}
     blocks: list[Block] = [*capacitances.blocks, *channel.blocks]
     free = [*capacitances.free, *channel.free]
     fixed = {**capacitances.fixed, **channel.fixed}
@@ -128,12 +129,14 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
             # The slope of the plateau determines it.
             fixed.pop("lambda")
             free.append("lambda")
-        rough = solve([*blocks, *charge_blocks], model_space(free, fixed, [*blocks, *charge_blocks]), start, robust=True)
+        rough = solve(
+            [*blocks, *charge_blocks], model_space(free, fixed, [*blocks, *charge_blocks]), start, robust=True
+        )
         marked, found = set_aside(rough)
         by_name = {block.name: block for block in marked}
         blocks += [by_name[block.name] for block in charge_blocks]
         outliers += [o for o in found if o.curve in {block.name for block in charge_blocks}]
-        start = dict(rough.values)
+        start = rough.values
     else:
         # They stand in no residual; what is assumed of them is added after the fit.
         fixed |= {"c_ch": 0.0, "c_acc": 1e-12}
@@ -164,8 +167,8 @@ class _Stage:
 def _fit_channel(part: Part) -> _Stage:
     """The channel alone, led by the transfer curve: that is what sets the plateau.
 
-    Where the square law fits all curves, output curves count in full. Where it does not (carriers that reach their saturation
-    velocity, say), they count as much as can be without the transfer curve being met much worse for it.
+    Where the square law fits all curves, output curves count in full. Where it does not (carriers that reach their
+    saturation velocity, say), they count as much as can be without the transfer curve being met much worse for it.
     """
     blocks = observations.channel_blocks(part)
     outputs = [block for block in blocks if block.group == Quantity.OUTPUT]
@@ -190,16 +193,17 @@ def _fit_channel(part: Part) -> _Stage:
     marked, outliers = set_aside(rough)
     start = rough.values
     for weight in _OUTPUT_WIDENINGS:
-        weighed = tuple(replace(b, least_inflation=weight) if b.group == Quantity.OUTPUT else b for b in marked)
+        weighed = tuple(replace(b, inflation=weight) if b.group == Quantity.OUTPUT else b for b in marked)
         solution = solve(weighed, model_space(free, {}, weighed), start)
         found = _widening(solution, Quantity.TRANSFER)
         if found <= allowed:
             break
         start = solution.values
     if weight > 1.0:
-        # The balance between the two kinds of curve stays as it was found.
+        # The balance between the two kinds of curve stays as it was found, or each would give way to the other in turn.
+        factors = {Quantity.TRANSFER: found, Quantity.OUTPUT: weight * found}
         weighed = tuple(
-            replace(b, least_inflation=weight * found) if b.group == Quantity.OUTPUT else b for b in weighed
+            replace(b, inflation=factors[Quantity(b.group)], held=True) if b.group in factors else b for b in weighed
         )
     return _Stage(blocks=weighed, free=free, fixed={}, outliers=outliers, solution=solution)
 
@@ -212,7 +216,7 @@ def _widening(solution: Solution, group: str) -> float:
 
 def _found(stage: CapacitanceFit | _Stage) -> dict[str, float]:
     """Values that a stage found, nuisance parameters included, without its stand-ins for what it did not see."""
-    return {name: float(np.real(stage.solution.values[name])) for name in stage.solution.space.names}
+    return {name: scalar(stage.solution.values[name]) for name in stage.solution.space.names}
 
 
 def _widened(
@@ -234,7 +238,7 @@ def _statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
     freedom: dict[str, float] = {}
     together: dict[str, tuple[float, float]] = {}
     for block in solution.blocks:
-        chi_square[block.name] = float(np.sum(solution.residuals[block.name][: block.points] ** 2)) * block.widening**2
+        chi_square[block.name] = float(np.sum(solution.residuals[block.name][: block.points] ** 2)) * block.inflation**2
         freedom[block.name] = max(block.used_points - taken[block.name], 0.0)
         c, f = together.get(block.group, (0.0, 0.0))
         together[block.group] = c + chi_square[block.name], f + freedom[block.name]
@@ -243,7 +247,7 @@ def _statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
         c, f = together[block.group]
         # A single table value says nothing of its own scatter.
         inflation = float(np.sqrt(max(1.0, c / f))) if f >= 1.0 and block.group else 1.0
-        inflation = max(inflation, block.least_inflation)
+        inflation = block.inflation if block.held else inflation
         result.append(
             BlockStatistics(
                 name=block.name, points=block.points, unused=block.points - block.used_points,
@@ -253,9 +257,7 @@ def _statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
     return tuple(result)
 
 
-def _result(
-    solution: Solution, free: Sequence[str], fixed: Mapping[str, float]
-) -> tuple[ParameterSpace, Array, Array]:
+def _result(solution: Solution, free: Sequence[str], fixed: Mapping[str, float]) -> tuple[ParameterSpace, Array, Array]:
     """The model's own parameters out of a solution, nuisance parameters dropped."""
     keep = [i for i, name in enumerate(solution.space.names) if name in free]
     space = ParameterSpace(free=tuple(solution.space.free[i] for i in keep), fixed=fixed)

@@ -27,6 +27,7 @@ from fitter.models.capacitance import (
     junction_from,
     junction_names,
 )
+from fitter.models.types import scalar
 from fitter.parameters import ParameterDefinition
 from fitter.part import Part, Quantity, Stated
 
@@ -161,7 +162,9 @@ def fit_capacitances(part: Part) -> CapacitanceFit:
     if oss is not None:
         below = capacitance(oss[0], c_gd)
         rest = np.maximum(oss[1] - below, 0.02 * oss[1])
-        drain_source = _choose("drain-source", DRAIN_SOURCE, (oss[0], rest), _named(blocks, "coss", "phi_ds"), gate_drain.values)
+        drain_source = _choose(
+            "drain-source", DRAIN_SOURCE, (oss[0], rest), _named(blocks, "coss", "phi_ds"), gate_drain.values
+        )
     else:
         if table is None:
             raise FitError(_TOO_FEW)
@@ -218,9 +221,7 @@ def _one_point(v_ds: float, c_oss: float, c_gd: Junction) -> _Chosen:
     """Cds from one table value: an abrupt junction of 0.7 V whose size alone is free."""
     c = max(c_oss - float(capacitance(v_ds, c_gd)), 0.05 * c_oss)
     values = {"c_0": c * np.sqrt(1.0 + v_ds / 0.7), "phi": 0.7, "m": 0.5, "c_f": 0.0}
-    return _Chosen(
-        values={DRAIN_SOURCE[f].name: float(x) for f, x in values.items()}, free=(DRAIN_SOURCE["c_0"].name,)
-    )
+    return _Chosen(values={DRAIN_SOURCE[f].name: float(x) for f, x in values.items()}, free=(DRAIN_SOURCE["c_0"].name,))
 
 
 def _choose(
@@ -250,9 +251,10 @@ def _choose(
             capacitance=name, shields=shields, parameters=len(free), points=n,
             chi_square=chi_square, aicc=corrected_akaike(chi_square, len(free), n),
         )  # fmt: skip
-        ends.append((trial, {name: float(np.real(best.values[name])) for name in free}))
+        ends.append((trial, {name: scalar(best.values[name]) for name in free}))
     if not ends:
-        raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {len(junction_names(definitions, 0))} parameters")
+        least = len(junction_names(definitions, 0))
+        raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {least} parameters")
     trial, values = min(ends, key=lambda end: end[0].aicc)
     trials = tuple(FormTrial(**{**vars(t), "chosen": t is trial}) for t, _ in ends)
     return _Chosen(values=values, free=junction_names(definitions, trial.shields), trials=trials)

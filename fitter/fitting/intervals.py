@@ -77,7 +77,8 @@ def intervals(figures: Figures, estimate: Estimate) -> tuple[Array, Array, Array
     """Values and 95 % intervals of figures.
 
     Each figure is computed again with the parameters moved by 1.96 standard deviations along the direction in which it
-    varies most for its probability (covariance times gradient), up and down: where the figure bends, so does its interval.
+    varies most for its probability (covariance times gradient), up and down: where the figure bends, so does its
+    interval.
 
     Parameters
     ----------

@@ -8,6 +8,7 @@ from collections.abc import Callable
 import numpy as np
 from numpy.typing import NDArray
 
+from fitter.errors import FitError
 from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock
 from fitter.fitting.space import Values
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
@@ -30,9 +31,18 @@ __all__ = [
 
 #: 1-sigma error of a typical table value relative to itself: it is printed with two or three digits and need not belong
 #: to the very device whose curves are printed (common practice, no source).
-TABLE_ERROR = {"v_gs_th": 0.02, "r_ds_on": 0.02, "capacitance": 0.03, "q_g": 0.02, "q_gs": 0.04, "q_gd": 0.04, "v_plateau": 0.02}
+TABLE_ERROR = {
+    "v_gs_th": 0.02,
+    "r_ds_on": 0.02,
+    "capacitance": 0.03,
+    "q_g": 0.02,
+    "q_gs": 0.04,
+    "q_gd": 0.04,
+    "v_plateau": 0.02,
+}
 
-#: Built-in potential of a junction, and how far the fitted one may be expected from it, as a natural logarithm: 0.6 to 3 V is
+#: Built-in potential of a junction, and how far the fitted one may be expected from it, as a natural logarithm:
+#: 0.6 to 3 V is
 #: physics (silicon, silicon carbide), the rest leaves room for what the form makes of it. It only matters where
 #: no point at low VDS was digitized: there it keeps the capacitance at 0 V from running away.
 _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
@@ -122,18 +132,26 @@ def _channel_parameters(t_j: float) -> tuple[str, ...]:
     return _CHANNEL if t_j == REFERENCE else _CHANNEL + _LAWS
 
 
+def _condition(curve: Curve, name: str) -> float:
+    """A condition of a curve, which a part that was put together by hand may lack."""
+    value = getattr(curve, name)
+    if value is None:
+        raise FitError(f"{curve.name}: a {curve.quantity} curve needs its condition {name}")
+    return float(value)
+
+
 def _transfer(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    assert_v_ds, t_j = curve.v_ds, curve.t_j if curve.t_j is not None else REFERENCE
-    return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v, assert_v_ds)
+    v_ds, t_j = _condition(curve, "v_ds"), curve.t_j if curve.t_j is not None else REFERENCE
+    return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v, v_ds)
 
 
 def _output(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    v_gs, t_j = curve.v_gs, curve.t_j if curve.t_j is not None else REFERENCE
+    v_gs, t_j = _condition(curve, "v_gs"), curve.t_j if curve.t_j is not None else REFERENCE
     return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v_gs, v)
 
 
 def _r_ds_on_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    i_d, v_gs = curve.i_d, curve.v_gs
+    i_d, v_gs = _condition(curve, "i_d"), _condition(curve, "v_gs")
 
     def evaluate(t: Transistor, t_j: Numbers) -> Numbers:
         hot = on_resistance(i_d, v_gs, t.at(t_j).channel)
@@ -143,7 +161,8 @@ def _r_ds_on_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
 
 
 def _v_gs_th_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    return _CHANNEL + _LAWS, lambda t, t_j: threshold_voltage(curve.i_d, t.at(t_j).channel)
+    i_d = _condition(curve, "i_d")
+    return _CHANNEL + _LAWS, lambda t, t_j: threshold_voltage(i_d, t.at(t_j).channel)
 
 
 _EVALUATED: dict[Quantity, Callable[[Curve], tuple[tuple[str, ...], Evaluate]]] = {
@@ -159,7 +178,10 @@ _EVALUATED: dict[Quantity, Callable[[Curve], tuple[tuple[str, ...], Evaluate]]] 
 
 def _gate_charge_path(curve: Curve) -> PathBlock:
     point = OperatingPoint(
-        v_dd=curve.v_dd, i_d=curve.i_d, v_gs=_BEYOND * float(np.max(curve.y)), load=curve.load or "current"
+        v_dd=_condition(curve, "v_dd"),
+        i_d=_condition(curve, "i_d"),
+        v_gs=_BEYOND * float(np.max(curve.y)),
+        load=curve.load or "current",
     )
 
     def function(values: Values) -> tuple[Numbers, Numbers]:
@@ -179,7 +201,11 @@ def _typical(stated: Stated | None) -> float | None:
 
 
 def _scalar(
-    name: str, parameters: tuple[str, ...], stated: Stated | None, error: float, function: Callable[[Transistor], Numbers]
+    name: str,
+    parameters: tuple[str, ...],
+    stated: Stated | None,
+    error: float,
+    function: Callable[[Transistor], Numbers],
 ) -> list[ScalarBlock]:
     typ = _typical(stated)
     if typ is None:
@@ -250,6 +276,7 @@ def _gate_charge_table(table: StatedGateCharge) -> list[Block]:
     read = {"q_g": "total", "q_gs": "q_gs", "q_gd": "q_gd", "v_plateau": "v_plateau"}
     blocks: list[Block] = []
     for name, value in stated.items():
+
         def figure(t: Transistor, name: str = name) -> Numbers:
             return np.asarray(getattr(gate_charge_curve(t, point).reading, read[name]))[..., None]
 

@@ -47,8 +47,8 @@ def set_aside(solution: Solution) -> tuple[tuple[Block, ...], tuple[Outlier, ...
     """Mark the points that lie far off a robust fit.
 
     A mis-click is far off the fit and far off its neighbours, too: where the model's form does not quite fit, residuals
-    are large but come in runs. Far is 4 standard deviations, or 4 times what is usual from point to point on the same curve.
-    The farthest goes first, then its neighbours are judged without it.
+    are large but come in runs. Far is 4 standard deviations, or 4 times what is usual from point to point on the
+    same curve. The farthest goes first, then its neighbours are judged without it.
 
     Parameters
     ----------

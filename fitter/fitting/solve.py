@@ -21,6 +21,8 @@ Array = NDArray[np.float64]
 _ON_BOUND = 0.02
 _MOST_EVALUATIONS = 400
 _NOWHERE = 1e6
+#: Residuals up to about this many standard deviations count by their square in a robust pass, too.
+_ROBUST_SCALE = 3.0
 _TOLERANCE = 1e-8
 
 
@@ -90,7 +92,11 @@ class Solution:
 
 
 def solve(
-    blocks: Sequence[Block], space: ParameterSpace, start: Values, *, robust: bool = False,
+    blocks: Sequence[Block],
+    space: ParameterSpace,
+    start: Values,
+    *,
+    robust: bool = False,
     evaluations: int = _MOST_EVALUATIONS,
 ) -> Solution:
     """Fit the free parameters to the blocks.
@@ -138,18 +144,21 @@ def solve(
             every = np.concatenate([np.real(block.residuals(values)) for block in blocks])
         except OperatingPointError:
             every = np.full(rows, np.nan)
-        # A step to where the channel cannot carry the test's current, or numbers overflow: so bad that it is taken back.
+        # A step to where the channel cannot carry the test's current, or numbers overflow: so bad that it is taken
+        # back.
         return every if np.all(np.isfinite(every)) else np.full(rows, _NOWHERE)
 
     def jacobian(current: lmfit.Parameters) -> Array:
         return _jacobian(blocks, space, coordinates(current))
 
     if np.all(residual(parameters) == _NOWHERE):
-        raise FitError("the fit cannot begin: at its start values the channel does not carry the gate-charge test's current")
+        raise FitError(
+            "the fit cannot begin: at its start values the channel does not carry the gate-charge test's current"
+        )
     with np.errstate(invalid="ignore"):  # lmfit's own covariance, which is not used, may not be positive
         result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations).minimize(
             method="least_squares", jac=jacobian, x_scale="jac", ftol=_TOLERANCE, xtol=_TOLERANCE, gtol=_TOLERANCE,
-            loss="soft_l1" if robust else "linear",
+            loss="soft_l1" if robust else "linear", f_scale=_ROBUST_SCALE,
         )  # fmt: skip
     found = coordinates(result.params)
     values = space.values(found)
@@ -166,9 +175,14 @@ def solve(
         jacobian=slopes,
         on_bound=(found - lower < near) | (upper - found < near),
         chi_square=float(sum(np.sum(r**2) for r in by_block.values())),
-        cost=float(np.sum(np.sqrt(1.0 + every**2) - 1.0 if robust else 0.5 * every**2)),
+        cost=_robust_cost(every) if robust else 0.5 * float(np.sum(every**2)),
         converged=bool(result.success and not result.aborted),
     )
+
+
+def _robust_cost(residuals: Array) -> float:
+    """Half the sum of the soft L1 measure, as scipy.optimize.least_squares defines it."""
+    return float(np.sum(_ROBUST_SCALE**2 * (np.sqrt(1.0 + (residuals / _ROBUST_SCALE) ** 2) - 1.0)))
 
 
 def _jacobian(blocks: Sequence[Block], space: ParameterSpace, coordinates: Array) -> Array:

@@ -6,14 +6,14 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import NDArray
 
-from fitter.models.types import Numbers
+from fitter.models.types import Numbers, Value, scalar
 from fitter.parameters import ParameterDefinition
 
 __all__ = ["ParameterSpace", "Values", "derivatives"]
 
-Values = Mapping[str, ArrayLike]
+Values = Mapping[str, Value]
 Array = NDArray[np.float64]
 
 #: Imaginary step: far below rounding, so that its square vanishes and the derivative is exact.
@@ -46,7 +46,7 @@ class ParameterSpace:
     def coordinates(self, values: Values) -> Array:
         """Coordinates, shape (n,), of SI values by name, moved inside the bounds."""
         return np.array([
-            min(max(_coordinate(float(np.real(values[d.name])), d), lower), upper)
+            min(max(_coordinate(scalar(values[d.name]), d), lower), upper)
             for d, lower, upper in zip(self.free, *self.bounds(), strict=True)
         ])  # fmt: skip
 
@@ -64,7 +64,7 @@ class ParameterSpace:
         coordinates : ndarray, shape (n,) or (n, k, 1)
             One point, or k points at once; real or complex.
         """
-        moved: dict[str, ArrayLike] = {
+        moved: dict[str, Value] = {
             d.name: np.exp(u) if d.scale == "log" else u * d.typical
             for d, u in zip(self.free, coordinates, strict=True)
         }

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from fitter.models.smooth import logistic, softplus
-from fitter.models.types import Numbers
+from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
 __all__ = [
@@ -85,14 +85,14 @@ class Shield:
         How wide the bend is, as a multiple of `v`: relative, so that its bounds suit parts of every voltage.
     """
 
-    s: ArrayLike
-    v: ArrayLike
-    w: ArrayLike
+    s: Value
+    v: Value
+    w: Value
 
     @property
     def width(self) -> Numbers:
         """Width of the bend [V]."""
-        return np.asarray(self.v) * np.asarray(self.w)
+        return np.asarray(np.asarray(self.v) * np.asarray(self.w))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -113,10 +113,10 @@ class Junction:
         None for the plain form.
     """
 
-    c_0: ArrayLike
-    phi: ArrayLike
-    m: ArrayLike
-    c_f: ArrayLike
+    c_0: Value
+    phi: Value
+    m: Value
+    c_f: Value
     shields: tuple[Shield, ...] = ()
 
 
@@ -138,7 +138,7 @@ def junction_names(definitions: Mapping[str, ParameterDefinition], shields: int)
     return tuple(definitions[field].name for field in fields)
 
 
-def junction_from(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, ArrayLike]) -> Junction:
+def junction_from(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, Value]) -> Junction:
     """A junction from parameters by name; shields whose parameters are absent are left out.
 
     Parameters
@@ -157,7 +157,7 @@ def junction_from(definitions: Mapping[str, ParameterDefinition], values: Mappin
         for n in range(1, MOST_SHIELDS + 1)
         if definitions[f"s_{n}"].name in values
     )
-    return Junction(**{field: values[definitions[field].name] for field in _PLAIN}, shields=shields)  # type: ignore[arg-type]
+    return Junction(**{field: values[definitions[field].name] for field in _PLAIN}, shields=shields)
 
 
 def depletion_capacitance(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike) -> Numbers:
@@ -182,7 +182,7 @@ def depletion_capacitance(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: Array
     >>> float(depletion_capacitance(99.0, 1e-9, 1.0, 0.5))
     1e-10
     """
-    return np.asarray(c_0) * np.exp(-np.asarray(m) * np.log1p(np.asarray(v) / np.asarray(phi)))
+    return np.asarray(np.asarray(c_0) * np.exp(-np.asarray(m) * np.log1p(np.asarray(v) / np.asarray(phi))))
 
 
 def depletion_charge(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike) -> Numbers:
@@ -206,7 +206,7 @@ def depletion_charge(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike)
     2.0
     """
     phi, rest = np.asarray(phi), 1.0 - np.asarray(m)
-    return np.asarray(c_0) * phi / rest * np.expm1(rest * np.log1p(np.asarray(v) / phi))
+    return np.asarray(np.asarray(c_0) * phi / rest * np.expm1(rest * np.log1p(np.asarray(v) / phi)))
 
 
 def _shielded_voltage(v: Numbers, shield: Shield) -> Numbers:
@@ -218,8 +218,8 @@ def _shielded_voltage(v: Numbers, shield: Shield) -> Numbers:
 def capacitance(v: ArrayLike, j: Junction) -> Numbers:
     """Capacitance of a junction: the sum of its shares, Cj(V) of what no shield stops, Cj(U) U'(V) of the rest, and Cf.
 
-    With one shield: (1-s) Cj(V) + s Cj(U) U'(V) + Cf. The form is our own; it follows the steep fall that shielded-gate,
-    superjunction and closing-neck structures show, and has a charge in closed form.
+    With one shield: (1-s) Cj(V) + s Cj(U) U'(V) + Cf. The form is our own; it follows the steep fall that
+    shielded-gate, superjunction and closing-neck structures show, and has a charge in closed form.
 
     Parameters
     ----------
@@ -265,7 +265,7 @@ def charge(v: ArrayLike, j: Junction) -> Numbers:
         held = depletion_charge(_shielded_voltage(v, shield), j.c_0, j.phi, j.m)
         total = total + rest * shield.s * held
         rest = rest * (1.0 - np.asarray(shield.s))
-    return total + rest * depletion_charge(v, j.c_0, j.phi, j.m)
+    return np.asarray(total + rest * depletion_charge(v, j.c_0, j.phi, j.m))
 
 
 def stored_energy(v: ArrayLike, j: Junction, panels: int = 512) -> Numbers:
@@ -295,9 +295,9 @@ def stored_energy(v: ArrayLike, j: Junction, panels: int = 512) -> Numbers:
         shields=tuple(Shield(s=_widened(x.s), v=_widened(x.v), w=_widened(x.w)) for x in j.shields),
     )  # fmt: skip
     under = charge(v[..., None] * t**2, wide) @ (weights / (6.0 * panels) * 2.0 * t) * v
-    return v * charge(v, j) - under
+    return np.asarray(v * charge(v, j) - under)
 
 
-def _widened(parameter: ArrayLike) -> Numbers:
+def _widened(parameter: Value) -> Numbers:
     """A parameter with one more axis, that of the integration."""
     return np.asarray(parameter)[..., None]

@@ -13,7 +13,7 @@ from numpy.typing import ArrayLike
 
 from fitter.models.roots import carries_derivatives, increasing_root, lifted_root
 from fitter.models.smooth import inverse_softplus, logistic, softplus
-from fitter.models.types import Numbers
+from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
 __all__ = [
@@ -70,12 +70,12 @@ class Channel:
         Series resistances of source and drain [ohm].
     """
 
-    v_th: ArrayLike
-    k: ArrayLike
-    w: ArrayLike
-    lam: ArrayLike
-    r_s: ArrayLike
-    r_d: ArrayLike
+    v_th: Value
+    k: Value
+    w: Value
+    lam: Value
+    r_s: Value
+    r_d: Value
 
     @property
     def carries_derivatives(self) -> bool:
@@ -116,7 +116,7 @@ def channel_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     drain_side = softplus(v_gs - v_ds - c.v_th, c.w)
     # The difference of squares as a product: no digits are lost where the two sides are nearly equal.
     square = (source_side - drain_side) * (source_side + drain_side)
-    return 0.5 * np.asarray(c.k) * square * (1.0 + np.asarray(c.lam) * _magnitude(v_ds))
+    return np.asarray(0.5 * np.asarray(c.k) * square * (1.0 + np.asarray(c.lam) * _magnitude(v_ds)))
 
 
 def _magnitude(x: Numbers) -> Numbers:
@@ -172,7 +172,10 @@ def terminal_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     # Resistances only lower the current; the slack keeps rounding from pushing the root out of the bracket.
     most = channel_current(v_gs, v_ds, c) * (1.0 + 1e-9)
     return increasing_root(
-        lambda i: _excess_current(i, v_gs, v_ds, c), np.zeros(()), np.minimum(most, 0.0), np.maximum(most, 0.0)
+        lambda i: _excess_current(i, v_gs, v_ds, c),
+        np.zeros(()),
+        np.minimum(most, 0.0),
+        np.maximum(most, 0.0),
     )
 
 
@@ -243,7 +246,10 @@ def threshold_voltage(i_d: ArrayLike, c: Channel) -> Numbers:
     guess = np.asarray(c.v_th) + inverse_softplus(np.sqrt(2.0 * i_d / np.asarray(c.k)), c.w)
     guess = np.maximum(guess + i_d * c.r_s, 1e-6)
     return increasing_root(
-        lambda v: _excess_as_diode(v, i_d, c), guess, np.full_like(guess, 1e-9), guess + 2.0 + 100.0 * np.asarray(c.w)
+        lambda v: _excess_as_diode(v, i_d, c),
+        guess,
+        np.full_like(guess, 1e-9),
+        guess + 2.0 + 100.0 * np.asarray(c.w),
     )
 
 
@@ -299,7 +305,7 @@ def on_resistance(i_d: ArrayLike, v_gs: ArrayLike, c: Channel) -> Numbers:
     ndarray
         [ohm]
     """
-    return drain_voltage(i_d, v_gs, c) / np.asarray(i_d)
+    return np.asarray(drain_voltage(i_d, v_gs, c) / np.asarray(i_d))
 
 
 def transconductance(i_d: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:

@@ -36,7 +36,7 @@ def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
     1.0
     """
     x, w = np.asarray(x), np.asarray(w)
-    return np.where(x.real > 0.0, x, 0.0) + w * np.log1p(np.exp(_minus_magnitude(x / w)))
+    return np.asarray(np.where(x.real > 0.0, x, 0.0) + w * np.log1p(np.exp(_minus_magnitude(x / w))))
 
 
 def logistic(x: ArrayLike, w: ArrayLike) -> Numbers:
@@ -82,4 +82,4 @@ def inverse_softplus(y: ArrayLike, w: ArrayLike) -> Numbers:
     -0.3
     """
     y, w = np.asarray(y), np.asarray(w)
-    return y + w * np.log(-np.expm1(-y / w))
+    return np.asarray(y + w * np.log(-np.expm1(-y / w)))

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from fitter.models.channel import Channel
+from fitter.models.types import Value
 from fitter.parameters import ParameterDefinition
 
 __all__ = ["KELVIN", "REFERENCE", "TEMPERATURE", "TemperatureLaws", "channel_at"]
@@ -45,9 +46,9 @@ class TemperatureLaws:
         Exponent of the drain resistance.
     """
 
-    a: ArrayLike
-    b: ArrayLike
-    c: ArrayLike
+    a: Value
+    b: Value
+    c: Value
 
 
 def channel_at(t_j: ArrayLike, channel: Channel, laws: TemperatureLaws) -> Channel:

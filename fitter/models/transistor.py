@@ -18,7 +18,7 @@ from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN, Junction, juncti
 from fitter.models.channel import CHANNEL, Channel, terminal_current
 from fitter.models.smooth import softplus
 from fitter.models.temperature import REFERENCE, TEMPERATURE, TemperatureLaws, channel_at
-from fitter.models.types import Numbers
+from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
 __all__ = ["DEFINITIONS", "GATE", "Transistor"]
@@ -44,6 +44,7 @@ DEFINITIONS: dict[str, ParameterDefinition] = {
     for definition in group.values()
 }
 
+
 @dataclass(frozen=True, kw_only=True)
 class Transistor:
     """One transistor in n-channel polarity; its parameters are numbers or arrays that broadcast.
@@ -60,16 +61,16 @@ class Transistor:
         None where nothing is known of other temperatures.
     """
 
-    c_gs: ArrayLike
-    c_ch: ArrayLike
-    c_acc: ArrayLike
+    c_gs: Value
+    c_ch: Value
+    c_acc: Value
     gate_drain: Junction
     drain_source: Junction
     channel: Channel
     laws: TemperatureLaws | None = None
 
     @classmethod
-    def from_values(cls, values: Mapping[str, ArrayLike]) -> Transistor:
+    def from_values(cls, values: Mapping[str, Value]) -> Transistor:
         """A transistor from parameters by name; shield and temperature parameters may be absent.
 
         Parameters
@@ -83,7 +84,7 @@ class Transistor:
             Where a parameter without a default is missing.
         """
 
-        def group(definitions: Mapping[str, ParameterDefinition]) -> dict[str, ArrayLike]:
+        def group(definitions: Mapping[str, ParameterDefinition]) -> dict[str, Value]:
             return {field: values[d.name] for field, d in definitions.items() if d.name in values}
 
         laws = group(TEMPERATURE)
@@ -144,7 +145,7 @@ class Transistor:
         """Charge [C] of the gate-source capacitance at VGS [V]: Cgs v + Cch [sp(v-VTH; w) - sp(-VTH; w)]."""
         v_gs, v_th = np.asarray(v_gs), np.asarray(self.channel.v_th)
         turned_on = softplus(v_gs - v_th, self.channel.w) - softplus(-v_th, self.channel.w)
-        return np.asarray(self.c_gs) * v_gs + np.asarray(self.c_ch) * turned_on
+        return np.asarray(np.asarray(self.c_gs) * v_gs + np.asarray(self.c_ch) * turned_on)
 
     def c_iss(self, v_ds: ArrayLike) -> Numbers:
         """Input capacitance [F] at VDS [V], VGS = 0: Cgs + Cgd."""
@@ -169,4 +170,3 @@ class Transistor:
     def i_d(self, v_gs: ArrayLike, v_ds: ArrayLike) -> Numbers:
         """Drain current [A] at the terminal voltages VGS and VDS [V]."""
         return terminal_current(v_gs, v_ds, self.channel)
-

@@ -2,6 +2,7 @@
 
 Run as ``python -m tests.benchmarks.accuracy [device ...]``.
 """
+
 import sys
 import tempfile
 import time
@@ -9,7 +10,9 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
 
+import device_scenarios
 import numpy as np
+from digitization import write_part_folder
 
 from fitter.fitting.fit import fit
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
@@ -17,11 +20,17 @@ from fitter.models.channel import gate_voltage
 from fitter.models.transistor import Transistor
 from fitter.part import Quantity
 from fitter.reader import read_part
-import device_scenarios
-from datasheet_pages import sheet_of
-from digitization import write_part_folder
 
-NAMES = ["trench_30v", "p_channel_40v", "shielded_80v", "shielded_150v", "planar_600v", "superjunction_650v", "silicon_carbide_750v", "silicon_carbide_1200v"]
+NAMES = [
+    "trench_30v",
+    "p_channel_40v",
+    "shielded_80v",
+    "shielded_150v",
+    "planar_600v",
+    "superjunction_650v",
+    "silicon_carbide_750v",
+    "silicon_carbide_1200v",
+]
 BASIC = {"ciss", "coss", "crss", "transfer", "gate_charge"}
 
 
@@ -40,7 +49,11 @@ def measure(device, part, seed, use):
     seconds = time.perf_counter() - begin
     t = Transistor.from_values(result.estimate.values)
     row = {"seconds": seconds}
-    for q, true, fitted in ((Quantity.CISS, device.c_iss, t.c_iss), (Quantity.COSS, device.c_oss, t.c_oss), (Quantity.CRSS, device.c_rss, t.c_rss)):
+    for q, true, fitted in (
+        (Quantity.CISS, device.c_iss, t.c_iss),
+        (Quantity.COSS, device.c_oss, t.c_oss),
+        (Quantity.CRSS, device.c_rss, t.c_rss),
+    ):
         x = part.curves_of(q)[0].x
         v = np.linspace(max(x[0], 1e-3), x[-1], 300)
         row[q.value] = 100 * relative_rms(fitted(v), true(v))
@@ -57,7 +70,12 @@ def measure(device, part, seed, use):
         where = dict(v_dd=a * gc.v_dd, i_d=b * gc.i_d, v_gs=c * gc.v_gs)
         true = device.read_gate_charge(**where, load=gc.load)
         r = gate_charge_curve(t, OperatingPoint(**where, load=gc.load)).reading
-        e = {"QG": 100 * (r.total / true.q_g - 1), "QGS": 100 * (r.q_gs / true.q_gs - 1), "QGD": 100 * (r.q_gd / true.q_gd - 1), "Vpl mV": 1e3 * (r.v_plateau - true.v_plateau)}
+        e = {
+            "QG": 100 * (r.total / true.q_g - 1),
+            "QGS": 100 * (r.q_gs / true.q_gs - 1),
+            "QGD": 100 * (r.q_gd / true.q_gd - 1),
+            "Vpl mV": 1e3 * (r.v_plateau - true.v_plateau),
+        }
         for n, x in e.items():
             worst.setdefault(n, []).append(float(x))
     row |= worst
@@ -83,5 +101,14 @@ if __name__ == "__main__":
                     with tempfile.TemporaryDirectory() as d:
                         part = read_part(write_part_folder(device, Path(d), seed, include=BASIC if basic else None))
                         r = measure(device, part, seed, use)
-                    text = {k: ([round(x, 1) for x in v] if isinstance(v, list) else round(v, 2) if isinstance(v, float) else v) for k, v in r.items()}
+                    text = {
+                        k: (
+                            [round(x, 1) for x in v]
+                            if isinstance(v, list)
+                            else round(v, 2)
+                            if isinstance(v, float)
+                            else v
+                        )
+                        for k, v in r.items()
+                    }
                     print(name, "basic" if basic else "all", use, seed, text, flush=True)

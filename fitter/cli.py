@@ -1,0 +1,194 @@
+"""The command ``fetwright``: arguments in, what is shown out.
+
+Whatever takes long to import is imported inside the commands, so that help texts and shell completion come at once.
+"""
+
+from __future__ import annotations
+
+import sys
+from enum import StrEnum
+from pathlib import Path
+from typing import Annotated, Optional
+
+import typer
+
+from fitter.errors import FitterError
+
+__all__ = ["app", "main"]
+
+#: Exit statuses besides 0.
+LIMIT_VIOLATED, BAD_INPUT, OWN_FAULT = 1, 2, 3
+
+app = typer.Typer(
+    name="fetwright",
+    help="Fit a compact switching-MOSFET model to digitized datasheet curves, and see how far to trust it.",
+    epilog="Begin with `fetwright new FOLDER`, fill it in, then `fetwright check FOLDER` and `fetwright fit FOLDER`. "
+    "Typical values are no limits: verify on the bench.",
+    no_args_is_help=True,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
+
+
+class LoadKind(StrEnum):
+    """Load of a gate-charge test."""
+
+    CURRENT = "current"
+    RESISTIVE = "resistive"
+
+
+PartFolder = Annotated[
+    Path, typer.Argument(metavar="FOLDER", help="The part folder: part.toml and the curves' CSV files.")
+]
+ModelFile = Annotated[Path, typer.Argument(metavar="MODEL.json", help="A model file, as written by `fetwright fit`.")]
+Junction = Annotated[float, typer.Option("--tj", metavar="C", help="Junction temperature in degrees Celsius.")]
+
+
+@app.callback(invoke_without_command=True)
+def _root(
+    version: Annotated[bool, typer.Option("--version", help="Show the version and stop.")] = False,
+) -> None:
+    if version:
+        from fitter.version import VERSION
+
+        typer.echo(f"fetwright {VERSION}")
+        raise typer.Exit
+
+
+@app.command()
+def new(
+    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="Folder to write; it must be new or empty.")],
+) -> None:
+    """Write a part folder to fill in: a commented part.toml, and CSV files with headers only."""
+    from fitter.new_folder import write_new_folder
+
+    for path in write_new_folder(folder):
+        typer.echo(path)
+
+
+@app.command()
+def check(folder: PartFolder) -> None:
+    """Read a part folder and judge the data without fitting: what is missing, out of order, inconsistent."""
+    from fitter import screen
+    from fitter.inspection import inspect
+    from fitter.reader import read_part
+
+    part = read_part(folder)
+    findings = inspect(part)
+    screen.show_reading(part)
+    screen.show_findings(findings)
+    if any(finding.severity == "stop" for finding in findings):
+        raise typer.Exit(BAD_INPUT)
+
+
+@app.command()
+def fit(
+    folder: PartFolder,
+    out: Annotated[
+        Optional[Path],  # noqa: UP045 - typer reads this annotation
+        typer.Option("--out", metavar="DIR", help="Folder to write into; `model` inside the part folder by default."),
+    ] = None,
+    use_gate_charge: Annotated[
+        bool,
+        typer.Option("--use-gate-charge", help="Fit the gate-charge data, too, instead of keeping them as a check."),
+    ] = False,
+    strict: Annotated[
+        bool,
+        typer.Option("--strict", help="Exit with status 1 where the fitted model violates a stated limit."),
+    ] = False,
+) -> None:
+    """Fit the model: read, check, fit, predict the gate charge, compare it with what is stated, write everything."""
+    from fitter import screen
+    from fitter.pipeline import OUTPUT_FOLDER, fit_folder, write_outputs
+
+    model = fit_folder(folder, use_gate_charge=use_gate_charge)
+    target = folder / OUTPUT_FOLDER if out is None else out
+    files = write_outputs(model, target)
+    screen.show_model(model)
+    screen.show_files(target, files)
+    if strict and any(c.verdict == "outside limit" for c in model.checks):
+        raise typer.Exit(LIMIT_VIOLATED)
+
+
+@app.command()
+def netlist(
+    model: ModelFile,
+    out: Annotated[
+        Optional[Path],  # noqa: UP045
+        typer.Option("--out", metavar="FILE", help="File to write; the screen by default."),
+    ] = None,
+    tj: Junction = 25.0,
+) -> None:
+    """Write the subcircuit again from a finished model, at another junction temperature if wanted."""
+    from fitter.interface import load_model
+    from fitter.writers.folder import write_file
+
+    text = load_model(model).subcircuit(t_j=tj)
+    if out is None:
+        typer.echo(text, nl=False)
+    else:
+        write_file(out, text.encode())
+        typer.echo(out)
+
+
+@app.command()
+def charge(
+    model: ModelFile,
+    vdd: Annotated[float, typer.Option("--vdd", metavar="V", help="Supply of the load circuit in volts.")],
+    i_d: Annotated[float, typer.Option("--id", metavar="A", help="Load current in amperes.")],
+    vgs: Annotated[float, typer.Option("--vgs", metavar="V", help="Gate-source voltage at the end in volts.")],
+    load: Annotated[
+        LoadKind, typer.Option("--load", help="Constant current with a free-wheel diode, or a resistor.")
+    ] = (LoadKind.CURRENT),
+    tj: Junction = 25.0,
+    out: Annotated[
+        Optional[Path],  # noqa: UP045
+        typer.Option("--out", metavar="FILE.csv", help="Write the curve, in the columns of gate_charge.csv."),
+    ] = None,
+) -> None:
+    """Gate charge at your own operating point: QG, QGS, QGD and the plateau with their 95 % intervals."""
+    from fitter import screen
+    from fitter.interface import load_model
+    from fitter.writers import tables
+    from fitter.writers.folder import write_file
+
+    loaded = load_model(model)
+    found = loaded.gate_charge_intervals(vdd, i_d, vgs, load.value, tj)
+    if out is not None:
+        curve = loaded.gate_charge(vdd, i_d, vgs, load.value, tj)
+        write_file(out, tables.csv_text(tables.gate_charge_frame(curve)).encode())
+    screen.show_gate_charge(found)
+    if out is not None:
+        typer.echo(out)
+
+
+def main() -> None:
+    """Run the command; the one place where an error becomes a message and an exit status."""
+    try:
+        app()
+    except FitterError as error:
+        _fail(f"fetwright: {error}", BAD_INPUT)
+    except MemoryError:
+        _fail("fetwright: out of memory", BAD_INPUT)
+    except KeyboardInterrupt:
+        _fail("fetwright: interrupted; nothing was written", 130)
+    except BrokenPipeError:
+        # Whoever read the output has gone; writing to the closed pipe once more at exit would complain.
+        sys.stderr.close()
+        raise SystemExit(0) from None
+    except Exception as error:
+        import traceback
+
+        place = traceback.extract_tb(error.__traceback__)[-1]
+        where = f"{Path(place.filename).name}, line {place.lineno}"
+        _fail(
+            f"fetwright: this is a fault of the tool, not of your data: {type(error).__name__}: {error} ({where}). "
+            "Nothing was written. Please report it with this line, the command, `fetwright --version` and, if you may "
+            "share it, the part folder.",
+            OWN_FAULT,
+        )
+
+
+def _fail(message: str, status: int) -> None:
+    typer.echo(message, err=True)
+    raise SystemExit(status)

@@ -1,0 +1,129 @@
+"""What the command shows: tables for people, on a terminal or in a log."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from rich import box
+from rich.console import Console
+from rich.markup import escape
+from rich.table import Table
+
+from fitter.units import engineering
+
+if TYPE_CHECKING:
+    from fitter.inspection import Finding
+    from fitter.interface import Model
+    from fitter.model import Interval
+    from fitter.part import Part
+
+__all__ = ["show_files", "show_findings", "show_gate_charge", "show_model", "show_reading"]
+
+#: Width where the output is no terminal.
+_WIDTH = 118
+
+_SEVERITY = {
+    "stop": ("stops the fit", "bold red"),
+    "doubtful": ("doubtful", "yellow"),
+    "note": ("note", "dim"),
+}
+_VERDICT = {"agrees": "green", "differs": "yellow", "outside limit": "bold red"}
+
+
+def _console() -> Console:
+    return Console(width=None if sys.stdout.isatty() else _WIDTH, highlight=False, soft_wrap=False)
+
+
+def _table(*columns: str, right: Sequence[str] = ()) -> Table:
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
+    for column in columns:
+        table.add_column(column, justify="right" if column in right else "left")
+    return table
+
+
+def show_reading(part: Part) -> None:
+    """What was read: the part, its curves, what the reader assumed."""
+    console = _console()
+    console.print(f"[bold]{part.name}[/bold]: {part.channel}-channel, {part.v_ds_max:g} V, gate {part.v_gs_max:g} V")
+    table = _table("curve", "points", "from", "to", "file", right=("points", "from", "to"))
+    for curve in part.curves:
+        unit = curve.x_unit.replace("degC", "C")
+        ends = [
+            f"{x:.4g} C" if unit == "C" and curve.x_unit == "degC" else engineering(x, unit) for x in curve.x[[0, -1]]
+        ]
+        table.add_row(curve.name, str(curve.x.size), *ends, escape(curve.file))
+    console.print(table)
+    for notice in part.notices:
+        console.print(f"[dim]note[/dim] {escape(notice.text)}", soft_wrap=True)
+
+
+def show_findings(findings: Sequence[Finding]) -> None:
+    """What the inspection found, worst first."""
+    console = _console()
+    if not findings:
+        console.print("Nothing to object to.")
+        return
+    for finding in findings:
+        word, style = _SEVERITY[finding.severity]
+        console.print(f"[{style}]{word}[/{style}] {escape(str(finding))}", soft_wrap=True)
+    count = {s: sum(f.severity == s for f in findings) for s in _SEVERITY}
+    console.print(", ".join(f"{n} {_SEVERITY[s][0]}" for s, n in count.items() if n))
+
+
+def show_model(model: Model) -> None:
+    """The parameters with their errors, the comparison, the notices."""
+    from fitter.writers.tables import shown_checks
+
+    console = _console()
+    console.print(f"[bold]{model.part.name}[/bold]")
+    table = _table("parameter", "value", "std. error", "origin", "meaning", right=("value", "std. error"))
+    for p in model.parameters.values():
+        error = "" if p.stderr is None else engineering(p.stderr, p.unit, 2)
+        table.add_row(p.name, engineering(p.value, p.unit, 4), error, p.origin, p.meaning)
+    console.print(table)
+
+    table = _table(
+        "quantity", "condition", "stated", "fitted", "95 % interval", "off", "", "verdict",
+        right=("stated", "fitted", "95 % interval", "off"),
+    )  # fmt: skip
+    for s in shown_checks(model):
+        style = _VERDICT.get(s.check.verdict, "")
+        stated = "" if s.stated_typ is None else f"{s.stated_typ:.4g}"
+        if s.stated_min is not None or s.stated_max is not None:
+            ends = ["" if x is None else f"{x:.4g}" for x in (s.stated_min, s.stated_max)]
+            stated += (
+                f" ({' to '.join(ends)})" if all(ends) else f" ({'min' if ends[0] else 'max'} {ends[0] or ends[1]})"
+            )
+        known = s.fitted is not None and s.low is not None and s.high is not None
+        table.add_row(
+            s.check.quantity, s.check.condition, f"{stated.strip()} {s.unit}",
+            f"{s.fitted:.4g}" if known else "", f"{s.low:.4g} to {s.high:.4g}" if known else "",
+            "" if s.check.deviation is None else f"{100.0 * s.check.deviation:+.1f} %",
+            "fitted" if s.check.used_in_fit else "check",
+            f"[{style}]{s.check.verdict}[/{style}]" if style else s.check.verdict,
+        )  # fmt: skip
+    console.print(table)
+    for notice in model.notices:
+        console.print(f"[dim]note[/dim] {escape(notice.text)}", soft_wrap=True)
+
+
+def show_files(folder: Path, files: Sequence[str]) -> None:
+    """Where the output is."""
+    _console().print(f"{escape(str(folder))}: {', '.join(files)}", soft_wrap=True)
+
+
+def show_gate_charge(found: Mapping[str, Interval]) -> None:
+    """Gate-charge figures with their intervals."""
+    table = _table("figure", "value", "95 % interval", right=("value", "95 % interval"))
+    for name, label, unit in (
+        ("qg", "QG", "C"),
+        ("qgs", "QGS", "C"),
+        ("qgd", "QGD", "C"),
+        ("v_plateau", "plateau", "V"),
+    ):
+        x = found[name]
+        table.add_row(label, engineering(x.value, unit), f"{engineering(x.low, unit)} to {engineering(x.high, unit)}")
+    _console().print(table)

@@ -1,0 +1,154 @@
+"""What stands above a subcircuit: what it was made from, where it holds, what to mind."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+
+from fitter.model import FittedModel
+from fitter.models.temperature import REFERENCE
+from fitter.part import Curve, Quantity
+from fitter.version import VERSION
+from fitter.writers.netlist_text import comment
+
+__all__ = ["header"]
+
+_CAPACITANCES = (Quantity.CISS, Quantity.COSS, Quantity.CRSS)
+_TABLE_MARK = " (table)"
+
+_ABSTOL = (
+    "Circuits of amperes need ABSTOL=1e-9 among the simulator's options. At the usual default of 1e-12 A the rounding noise of "
+    "milliohm resistors at tens of volts exceeds the tolerance, and the time step collapses, with any transistor model."
+)
+
+_CAUTIONS = (
+    "The model follows typical curves. Typical values are no limits: parts scatter around them, and ratings are in the datasheet.",
+    "Safe operating area, avalanche, short circuit and self-heating are not in it.",
+    "Such circuits store energy and carry voltages that injure or kill, also after they are switched off. "
+    "A simulation shows neither that a circuit is safe nor that it works: verify on the bench.",
+    "Local codes and licensed practice come first.",
+)
+
+
+def header(model: FittedModel, t_j: float, name: str) -> str:
+    """Comment lines above a subcircuit.
+
+    Parameters
+    ----------
+    model : FittedModel
+        What the subcircuit is written from.
+    t_j : float
+        Junction temperature of the subcircuit [degC].
+    name : str
+        The subcircuit's name.
+
+    Returns
+    -------
+    str
+        Without a line end after the last line.
+    """
+    sections = (
+        _title(model, name),
+        _fitted_to(model),
+        _validity(model, t_j),
+        _parameters(model),
+        [comment("Simulator"), _item(_ABSTOL)],
+        [comment("Cautions"), *(_item(text) for text in _CAUTIONS)],
+    )
+    return f"\n{comment()}\n".join("\n".join(lines) for lines in sections)
+
+
+def _item(text: str) -> str:
+    return comment(f"- {text}", indent="  ")
+
+
+def _title(model: FittedModel, name: str) -> list[str]:
+    part = model.part
+    lines = [
+        comment(f"{name}: {part.channel}-channel power MOSFET, nodes drain gate source"),
+        comment(f"Part {part.name}, rated VDS {_figure(model, part.v_ds_max)} V, VGS {part.v_gs_max:g} V"),
+        comment(f"Fitted by fetwright {model.version or VERSION}, written by fetwright {VERSION}"),
+    ]
+    return lines + ([comment(f"Notes: {part.notes}", indent="  ")] if part.notes.strip() else [])
+
+
+def _fitted_to(model: FittedModel) -> list[str]:
+    curves = [curve.name for curve in _fitted_curves(model)]
+    blocks = [s.name for s in model.statistics]
+    if not model.part.curves:
+        curves = [name for name in blocks if not name.endswith(")")]
+    tables = [name.removesuffix(_TABLE_MARK) for name in blocks if name.endswith(_TABLE_MARK)]
+    lines = [comment("Fitted to"), _item(f"curves: {', '.join(curves) or 'none'}")]
+    lines.append(_item(f"table values: {'; '.join(_with_condition(model, t) for t in tables) or 'none'}"))
+    if model.used_gate_charge:
+        lines.append(_item("the gate charge: fitted, and no check of the model any more"))
+    else:
+        lines.append(_item("the gate charge: not fitted; c_acc and c_ch, which only it shows, are assumed"))
+    lines.append(
+        _item("the body diode is not modelled: reverse current flows in the channel only, when that is on")
+    )
+    return lines
+
+
+def _with_condition(model: FittedModel, quantity: str) -> str:
+    conditions = [check.condition for check in model.checks if check.quantity == quantity]
+    return f"{quantity} at {conditions[0]}" if conditions else quantity
+
+
+def _fitted_curves(model: FittedModel) -> list[Curve]:
+    fitted = {s.name for s in model.statistics}
+    return [curve for curve in model.part.curves if curve.name in fitted]
+
+
+def _validity(model: FittedModel, t_j: float) -> list[str]:
+    curves = _fitted_curves(model)
+    capacitance = [c for c in curves if c.quantity in _CAPACITANCES]
+    transfer = [c for c in curves if c.quantity is Quantity.TRANSFER]
+    output = [c for c in curves if c.quantity is Quantity.OUTPUT]
+    gate = [c for c in curves if c.quantity is Quantity.GATE_CHARGE]
+    ranges = (
+        ("VDS of the capacitances", "V", _ends(c.x for c in capacitance)),
+        ("VDS of the current", "V", _ends([*([c.v_ds] for c in transfer), *(c.x for c in output)])),
+        ("VGS", "V", _ends([*(c.x for c in transfer), *([c.v_gs] for c in output), *(c.y for c in gate)])),
+        ("ID", "A", _ends(c.y for c in (*transfer, *output))),
+    )
+    lines = [comment("Range of validity: what was digitized; beyond it the equations extrapolate")]
+    lines += [
+        _item(f"{what}: {_figure(model, ends[0])} to {_figure(model, ends[1])} {unit}")
+        for what, unit, ends in ranges
+        if ends is not None
+    ]
+    if not curves:
+        lines.append(
+            _item("VDS, VGS, ID: the digitized curves are not stored with this model; see the part's folder")
+        )
+    temperatures = sorted({c.t_j for c in (*transfer, *output) if c.t_j is not None} or {REFERENCE})
+    known = ", ".join(f"{t:g}" for t in temperatures)
+    extrapolated = "" if temperatures[0] <= t_j <= temperatures[-1] else ", an extrapolation"
+    lines.append(
+        _item(
+            f"Tj: the currents were digitized at {known} C; this subcircuit is for {t_j:g} C{extrapolated}, whatever the "
+            "simulator's temperature"
+        )
+    )
+    return lines
+
+
+def _ends(stretches: Iterable[Sequence[float | None]]) -> tuple[float, float] | None:
+    """Lowest and highest of all values; None where there are none."""
+    values = [float(v) for stretch in stretches for v in stretch if v is not None]
+    return (min(values), max(values)) if values else None
+
+
+def _figure(model: FittedModel, value: float) -> str:
+    """A voltage or current with the signs of the part's datasheet."""
+    return f"{model.sign * value + 0.0:.4g}"
+
+
+def _parameters(model: FittedModel) -> list[str]:
+    """The parameter set in SI, at the reference temperature and in n-channel polarity."""
+    polarity = ", in n-channel polarity" if model.part.channel == "p" else ""
+    lines = [comment(f"Parameters in SI at {REFERENCE:g} C{polarity}")]
+    for p in model.parameters.values():
+        value = " ".join(f"{p.value:.6g} {p.unit}".split())
+        lines.append(comment(f"{p.name} = {value} ({p.origin}): {p.meaning}", indent="  "))
+    return lines

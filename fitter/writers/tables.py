@@ -1,0 +1,146 @@
+"""The model as tables: parameters, comparison, digitized against fitted points, the gate-charge curve.
+
+A p-channel part's voltages and currents are negative here, as on its datasheet; charges, capacitances and energies
+are positive.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import pandas as pd
+
+from fitter.comparison import Comparison
+from fitter.gate_charge import GateChargeCurve
+from fitter.model import FittedModel
+from fitter.part import Quantity
+from fitter.units import si_factor
+
+__all__ = [
+    "GATE_CHARGE_COLUMNS",
+    "SHOWN",
+    "Shown",
+    "checks_frame",
+    "csv_text",
+    "curves_frame",
+    "gate_charge_frame",
+    "parameters_frame",
+    "shown_checks",
+]
+
+#: Unit in which each stated quantity is shown, as datasheets print it, and whether it changes sign with the channel.
+SHOWN = {
+    "qg": ("nC", 1e9, False), "qgs": ("nC", 1e9, False), "qgd": ("nC", 1e9, False), "v_plateau": ("V", 1.0, True),
+    "ciss": ("pF", 1e12, False), "coss": ("pF", 1e12, False), "crss": ("pF", 1e12, False),
+    "vgs_th": ("V", 1.0, True), "rds_on": ("mohm", 1e3, False), "gfs": ("S", 1.0, False),
+    "qoss": ("nC", 1e9, False), "eoss": ("uJ", 1e6, False), "coss_er": ("pF", 1e12, False),
+    "coss_tr": ("pF", 1e12, False), "vsd": ("V", 1.0, True), "qrr": ("nC", 1e9, False), "trr": ("ns", 1e9, False),
+}  # fmt: skip
+
+#: Columns of ``gate_charge.csv``.
+GATE_CHARGE_COLUMNS = ("qg_nC", "vgs_V", "vds_V", "id_A")
+
+_SIGNED_UNITS = ("V", "A")
+
+
+@dataclass(frozen=True, kw_only=True)
+class Shown:
+    """A comparison in the units and with the signs of the datasheet.
+
+    Parameters
+    ----------
+    check : Comparison
+        The comparison in SI.
+    unit : str
+        Unit of the figures below.
+    stated_min, stated_typ, stated_max, fitted, low, high : float or None
+        [unit]; low <= fitted <= high.
+    """
+
+    check: Comparison
+    unit: str
+    stated_min: float | None
+    stated_typ: float | None
+    stated_max: float | None
+    fitted: float | None
+    low: float | None
+    high: float | None
+
+
+def shown_checks(model: FittedModel) -> tuple[Shown, ...]:
+    """The comparison in the units and with the signs of the datasheet."""
+    result = []
+    for check in model.checks:
+        unit, factor, signed = SHOWN[check.quantity]
+        factor = factor * (model.sign if signed else 1.0)
+
+        def figure(value: float | None, factor: float = factor) -> float | None:
+            return None if value is None else value * factor
+
+        low, high = figure(check.low), figure(check.high)
+        if factor < 0.0:
+            low, high = high, low
+        result.append(
+            Shown(
+                check=check, unit=unit, stated_min=figure(check.stated.min), stated_typ=figure(check.stated.typ),
+                stated_max=figure(check.stated.max), fitted=figure(check.fitted), low=low, high=high,
+            )
+        )  # fmt: skip
+    return tuple(result)
+
+
+def parameters_frame(model: FittedModel) -> pd.DataFrame:
+    """The parameter set in SI: name, value, stderr, unit, origin."""
+    rows = [(p.name, p.value, p.stderr, p.unit, p.origin) for p in model.parameters.values()]
+    return pd.DataFrame(rows, columns=["name", "value", "stderr", "unit", "origin"])
+
+
+def checks_frame(model: FittedModel) -> pd.DataFrame:
+    """Stated against fitted, a row for each stated value, in the units of the datasheet."""
+    rows = [
+        (
+            s.check.quantity, s.unit, s.check.condition, s.stated_min, s.stated_typ, s.stated_max, s.fitted, s.low,
+            s.high, None if s.check.deviation is None else 100.0 * s.check.deviation,
+            "yes" if s.check.used_in_fit else "no", s.check.verdict,
+        )
+        for s in shown_checks(model)
+    ]  # fmt: skip
+    columns = [
+        "quantity", "unit", "condition", "stated_min", "stated_typ", "stated_max", "fitted", "fitted_low",
+        "fitted_high", "deviation_percent", "used_in_fit", "verdict",
+    ]  # fmt: skip
+    return pd.DataFrame(rows, columns=columns)
+
+
+def curves_frame(model: FittedModel) -> pd.DataFrame:
+    """Each digitized point beside the fitted value, in the units of its file."""
+    rows = []
+    curves = {curve.name: curve for curve in model.part.curves}
+    for point in model.points:
+        curve = curves[point.curve]
+        x_unit, y_unit = curve.x_column.rpartition("_")[2], curve.y_column.rpartition("_")[2]
+        x_factor, y_factor = _file_factor(x_unit, curve.x_unit), _file_factor(y_unit, curve.y_unit)
+        # A body diode's forward voltage and current are printed positive for either channel.
+        forward = curve.quantity is Quantity.BODY_DIODE
+        x_sign = model.sign if curve.x_unit in _SIGNED_UNITS and not forward else 1.0
+        y_sign = model.sign if curve.y_unit in _SIGNED_UNITS and not forward else 1.0
+        rows.append((
+            point.curve, x_sign * point.x / x_factor, x_unit, y_sign * point.y / y_factor, y_unit,
+            y_sign * point.fitted / y_factor, point.residual,
+        ))  # fmt: skip
+    return pd.DataFrame(rows, columns=["curve", "x", "x_unit", "y", "y_unit", "fitted", "residual"])
+
+
+def _file_factor(unit: str, base: str) -> float:
+    return si_factor(unit, base) if base else 1.0
+
+
+def gate_charge_frame(curve: GateChargeCurve) -> pd.DataFrame:
+    """A gate-charge curve: qg_nC, vgs_V, vds_V, id_A."""
+    columns = (curve.q_g * 1e9, curve.v_gs, curve.v_ds, curve.i_d)
+    return pd.DataFrame(dict(zip(GATE_CHARGE_COLUMNS, columns, strict=True)))
+
+
+def csv_text(frame: pd.DataFrame) -> str:
+    """A table as CSV: comma, a header line, ten significant digits, empty cells for what is not known."""
+    return str(frame.to_csv(index=False, float_format="%.10g", lineterminator="\n"))
