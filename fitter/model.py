@@ -15,9 +15,9 @@ from numpy.typing import ArrayLike, NDArray
 
 from fitter.comparison import Comparison
 from fitter.errors import OperatingPointError
-from fitter.fitting.fit import BlockStatistics
 from fitter.fitting.forms import FormTrial
 from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, Figures, intervals, standard_errors
+from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import Values
 from fitter.gate_charge import GateChargeCurve, OperatingPoint, gate_charge_curve
 from fitter.models.temperature import REFERENCE

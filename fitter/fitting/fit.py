@@ -9,54 +9,25 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.errors import FitError
-from fitter.fitting import observations, start_values
+from fitter.fitting import observations
 from fitter.fitting.assumptions import GateAssumption, assumed_space
 from fitter.fitting.blocks import Block, model_space
-from fitter.fitting.forms import CapacitanceFit, FormTrial, fit_capacitances
+from fitter.fitting.forms import FormTrial, fit_capacitances
 from fitter.fitting.intervals import Estimate
+from fitter.fitting.misfit import BlockStatistics, block_statistics
 from fitter.fitting.outliers import Outlier, set_aside
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace, Values
-from fitter.models.channel import CHANNEL
+from fitter.fitting.stages import Stage, fit_body_diode, fit_channel, fit_temperature
 from fitter.models.types import scalar
 from fitter.part import Part, Quantity
 
-__all__ = ["BlockStatistics", "FitResult", "fit"]
+__all__ = ["FitResult", "fit"]
 
 Array = NDArray[np.float64]
 
 #: How often standard deviations are widened by the misfit and the fit repeated.
 _WIDENINGS = 2
-#: How much farther from its points the transfer curve may come to lie for the sake of output curves.
-_WORSE = 1.25
-#: Factors on the output curves' standard deviations that are tried for that.
-_OUTPUT_WIDENINGS = (1.0, 4.0, 12.0, 36.0, 100.0)
-
-
-@dataclass(frozen=True, kw_only=True)
-class BlockStatistics:
-    """How well the fit meets one block of data.
-
-    Parameters
-    ----------
-    name : str
-        The block's name.
-    points, unused : int
-        Number of data, and how many of them were left aside.
-    chi_square : float
-        Sum of squared residuals at the reading errors given.
-    freedom : float
-        Degrees of freedom left to the block.
-    inflation : float
-        Factor on the standard deviations because the model's form does not quite fit.
-    """
-
-    name: str
-    points: int
-    unused: int
-    chi_square: float
-    freedom: float
-    inflation: float
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -110,12 +81,14 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
         Where the data cannot carry a fit.
     """
     capacitances = fit_capacitances(part)
-    channel = _fit_channel(part)
-    start: Values = {**_found(capacitances), **_found(channel)}
-    blocks: list[Block] = [*capacitances.blocks, *channel.blocks]
-    free = [*capacitances.free, *channel.free]
-    fixed = {**capacitances.fixed, **channel.fixed}
-    outliers = [*capacitances.outliers, *channel.outliers]
+    channel = fit_channel(part)
+    stages: list[Stage | None] = [capacitances, channel, fit_temperature(part, channel), fit_body_diode(part)]
+    done = [stage for stage in stages if stage is not None]
+    start: Values = {name: value for stage in done for name, value in _found(stage).items()}
+    blocks: list[Block] = [block for stage in done for block in stage.blocks]
+    free = [name for stage in done for name in stage.free]
+    fixed = {name: value for stage in done for name, value in stage.fixed.items()}
+    outliers = [outlier for stage in done for outlier in stage.outliers]
     if use_gate_charge:
         charge_blocks = observations.gate_charge_blocks(part)
         if not charge_blocks:
@@ -153,68 +126,7 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
     )  # fmt: skip
 
 
-@dataclass(frozen=True, kw_only=True)
-class _Stage:
-    """What one stage of the fit hands on."""
-
-    blocks: tuple[Block, ...]
-    free: tuple[str, ...]
-    fixed: Mapping[str, float]
-    outliers: tuple[Outlier, ...]
-    solution: Solution
-
-
-def _fit_channel(part: Part) -> _Stage:
-    """The channel alone, led by the transfer curve: that is what sets the plateau.
-
-    Where the square law fits all curves, output curves count in full. Where it does not (carriers that reach their
-    saturation velocity, say), they count as much as can be without the transfer curve being met much worse for it.
-    """
-    blocks = observations.channel_blocks(part)
-    outputs = [block for block in blocks if block.group == Quantity.OUTPUT]
-    leading = [block for block in blocks if block.group != Quantity.OUTPUT]
-    begin = start_values.channel_start(part)
-    start: Values = {CHANNEL[field].name: value for field, value in begin.items()}
-    fixed = {"lambda": 0.0}
-    if "rds_on (table)" not in {block.name for block in blocks}:
-        fixed["r_d"] = 0.0
-    free = tuple(d.name for d in CHANNEL.values() if d.name not in fixed)
-    rough = solve(leading, model_space(free, fixed, leading), start, robust=True)
-    marked, outliers = set_aside(rough)
-    solution = solve(marked, model_space(free, fixed, marked), rough.values)
-    if not outputs:
-        return _Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
-
-    allowed = _WORSE * _widening(solution, Quantity.TRANSFER)
-    free = tuple(d.name for d in CHANNEL.values())
-    start = {**solution.values, "lambda": 1e-3}
-    every = (*marked, *outputs)
-    rough = solve(every, model_space(free, {}, every), start, robust=True)
-    marked, outliers = set_aside(rough)
-    start = rough.values
-    for weight in _OUTPUT_WIDENINGS:
-        weighed = tuple(replace(b, inflation=weight) if b.group == Quantity.OUTPUT else b for b in marked)
-        solution = solve(weighed, model_space(free, {}, weighed), start)
-        found = _widening(solution, Quantity.TRANSFER)
-        if found <= allowed:
-            break
-        start = solution.values
-    if weight > 1.0:
-        # The balance between the two kinds of curve stays as it was found, or each would give way to the other in turn.
-        factors = {Quantity.TRANSFER: found, Quantity.OUTPUT: weight * found}
-        weighed = tuple(
-            replace(b, inflation=factors[Quantity(b.group)], held=True) if b.group in factors else b for b in weighed
-        )
-    return _Stage(blocks=weighed, free=free, fixed={}, outliers=outliers, solution=solution)
-
-
-def _widening(solution: Solution, group: str) -> float:
-    """By how much a group's standard deviations would have to be widened for its misfit."""
-    names = {block.name for block in solution.blocks if block.group == group}
-    return max(s.inflation for s in _statistics(solution) if s.name in names)
-
-
-def _found(stage: CapacitanceFit | _Stage) -> dict[str, float]:
+def _found(stage: Stage) -> dict[str, float]:
     """Values that a stage found, nuisance parameters included, without its stand-ins for what it did not see."""
     return {name: scalar(stage.solution.values[name]) for name in stage.solution.space.names}
 
@@ -225,36 +137,10 @@ def _widened(
     """Least squares, repeated with standard deviations widened where a curve's misfit exceeds its reading errors."""
     solution = solve(blocks, space, start)
     for _ in range(_WIDENINGS):
-        widths = {s.name: s.inflation for s in _statistics(solution)}
+        widths = {s.name: s.inflation for s in block_statistics(solution)}
         widened = [replace(b, inflation=widths[b.name]) for b in blocks]
         solution = solve(widened, space, solution.values)
-    return solution, _statistics(solution)
-
-
-def _statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
-    """Misfit of each block; curves of one group share a widening, or the worst would be weighed down ever more."""
-    taken = solution.leverage()
-    chi_square: dict[str, float] = {}
-    freedom: dict[str, float] = {}
-    together: dict[str, tuple[float, float]] = {}
-    for block in solution.blocks:
-        chi_square[block.name] = float(np.sum(solution.residuals[block.name][: block.points] ** 2)) * block.inflation**2
-        freedom[block.name] = max(block.used_points - taken[block.name], 0.0)
-        c, f = together.get(block.group, (0.0, 0.0))
-        together[block.group] = c + chi_square[block.name], f + freedom[block.name]
-    result = []
-    for block in solution.blocks:
-        c, f = together[block.group]
-        # A single table value says nothing of its own scatter.
-        inflation = float(np.sqrt(max(1.0, c / f))) if f >= 1.0 and block.group else 1.0
-        inflation = block.inflation if block.held else inflation
-        result.append(
-            BlockStatistics(
-                name=block.name, points=block.points, unused=block.points - block.used_points,
-                chi_square=chi_square[block.name], freedom=freedom[block.name], inflation=inflation,
-            )
-        )  # fmt: skip
-    return tuple(result)
+    return solution, block_statistics(solution)
 
 
 def _result(solution: Solution, free: Sequence[str], fixed: Mapping[str, float]) -> tuple[ParameterSpace, Array, Array]:

@@ -14,9 +14,10 @@ from numpy.typing import NDArray
 from fitter.errors import FitError
 from fitter.fitting import observations
 from fitter.fitting.blocks import Block, model_space
-from fitter.fitting.outliers import Outlier, set_aside
+from fitter.fitting.outliers import set_aside
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace
+from fitter.fitting.stages import Stage
 from fitter.fitting.start_values import junction_start, second_shield_starts, shield_starts, sorted_curve
 from fitter.models.capacitance import (
     DRAIN_SOURCE,
@@ -72,30 +73,15 @@ class FormTrial:
 
 
 @dataclass(frozen=True, kw_only=True)
-class CapacitanceFit:
+class CapacitanceFit(Stage):
     """The capacitances' fit in the forms that won.
 
     Parameters
     ----------
-    blocks : tuple of Block
-        With mis-clicked points marked.
-    free : tuple of str
-        Free parameters.
-    fixed : mapping of str to float
-        Fixed parameters [SI].
-    solution : Solution
-        The joint fit.
-    outliers : tuple of Outlier
-        Points set aside.
     trials : tuple of FormTrial
         All forms tried.
     """
 
-    blocks: tuple[Block, ...]
-    free: tuple[str, ...]
-    fixed: Mapping[str, float]
-    solution: Solution
-    outliers: tuple[Outlier, ...]
     trials: tuple[FormTrial, ...]
 
 

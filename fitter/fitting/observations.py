@@ -14,18 +14,25 @@ from fitter.fitting.space import Values
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
 from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN
 from fitter.models.channel import CHANNEL, on_resistance, threshold_voltage
+from fitter.models.diode import BODY_DIODE, forward_current, forward_voltage
 from fitter.models.temperature import REFERENCE, TEMPERATURE
 from fitter.models.transistor import GATE, Transistor
 from fitter.models.types import Numbers
 from fitter.part import Axis, Curve, Part, Quantity, Stated, StatedGateCharge
 
 __all__ = [
+    "HOT_DIODE",
+    "HOT_OUTPUT",
+    "HOT_TRANSFER",
     "TABLE_ERROR",
+    "body_diode_blocks",
+    "body_diode_curves",
     "capacitance_blocks",
     "channel_blocks",
     "curve_block",
     "from_axis",
     "gate_charge_blocks",
+    "hot_blocks",
     "to_axis",
 ]
 
@@ -39,6 +46,7 @@ TABLE_ERROR = {
     "q_gs": 0.04,
     "q_gd": 0.04,
     "v_plateau": 0.02,
+    "v_sd": 0.02,
 }
 
 #: Built-in potential of a junction, and how far the fitted one may be expected from it, as a natural logarithm:
@@ -51,9 +59,13 @@ _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
 _DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
 _CHANNEL = tuple(d.name for d in CHANNEL.values())
 _LAWS = tuple(d.name for d in TEMPERATURE.values())
+_BODY_DIODE = tuple(d.name for d in BODY_DIODE.values())
 _GATE = tuple(d.name for d in GATE.values())
 #: The path of a gate-charge curve runs on beyond the last point by this share, so that no point lies past its end.
 _BEYOND = 1.1
+
+#: Groups of curves away from 25 degC.
+HOT_TRANSFER, HOT_OUTPUT, HOT_DIODE = "transfer hot", "output hot", "body_diode hot"
 
 Evaluate = Callable[[Transistor, Numbers], Numbers]
 
@@ -78,7 +90,7 @@ def _digitized(curve: Curve) -> dict[str, object]:
     """The fields that every block of a curve takes from it."""
     return {
         "name": curve.name,
-        "group": str(curve.quantity),
+        "group": f"{curve.quantity} hot" if _hot(curve) else str(curve.quantity),
         "x": to_axis(curve.x, curve.x_axis),
         "y": to_axis(curve.y, curve.y_axis),
         "sigma_x": np.full(curve.x.size, curve.point_error * curve.x_axis.length),
@@ -94,7 +106,7 @@ def curve_block(curve: Curve) -> PointsBlock | PathBlock:
     Parameters
     ----------
     curve : Curve
-        Any quantity but body_diode.
+        Of any quantity.
 
     Returns
     -------
@@ -165,6 +177,17 @@ def _v_gs_th_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
     return _CHANNEL + _LAWS, lambda t, t_j: threshold_voltage(i_d, t.at(t_j).channel)
 
 
+def _body_diode(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
+    t_j = curve.t_j if curve.t_j is not None else REFERENCE
+
+    def evaluate(t: Transistor, v: Numbers) -> Numbers:
+        if t.diode is None:
+            raise FitError(f"{curve.name}: the model has no body diode")
+        return forward_current(_not_below_zero(v), t.diode, t_j)
+
+    return _BODY_DIODE, evaluate
+
+
 _EVALUATED: dict[Quantity, Callable[[Curve], tuple[tuple[str, ...], Evaluate]]] = {
     Quantity.CISS: _c_iss,
     Quantity.COSS: _c_oss,
@@ -173,6 +196,7 @@ _EVALUATED: dict[Quantity, Callable[[Curve], tuple[tuple[str, ...], Evaluate]]] 
     Quantity.OUTPUT: _output,
     Quantity.RDS_ON_TEMPERATURE: _r_ds_on_temperature,
     Quantity.VGS_TH_TEMPERATURE: _v_gs_th_temperature,
+    Quantity.BODY_DIODE: _body_diode,
 }
 
 
@@ -193,7 +217,12 @@ def _gate_charge_path(curve: Curve) -> PathBlock:
 
 
 def _of(part: Part, *quantities: Quantity) -> list[PointsBlock | PathBlock]:
-    return [curve_block(c) for c in part.curves if c.quantity in quantities and c.t_j in (None, REFERENCE)]
+    return [curve_block(c) for c in part.curves if c.quantity in quantities and not _hot(c)]
+
+
+def _hot(curve: Curve) -> bool:
+    """Whether a curve belongs to another junction temperature than that of the parameters."""
+    return curve.t_j not in (None, REFERENCE)
 
 
 def _typical(stated: Stated | None) -> float | None:
@@ -258,6 +287,35 @@ def channel_blocks(part: Part) -> list[Block]:
             lambda t: on_resistance(on.i_d, on.v_gs, t.channel),
         )  # fmt: skip
     return blocks
+
+
+def hot_blocks(part: Part) -> list[Block]:
+    """What shows the temperature laws: transfer and output curves away from 25 degC, RDS(on) and VGS(th) over Tj."""
+    hot = (Quantity.TRANSFER, Quantity.OUTPUT)
+    over = (Quantity.RDS_ON_TEMPERATURE, Quantity.VGS_TH_TEMPERATURE)
+    return [curve_block(c) for c in part.curves if c.quantity in over or (c.quantity in hot and _hot(c))]
+
+
+def body_diode_blocks(part: Part) -> list[Block]:
+    """The body diode's forward curves with the channel closed; without one at 25 degC, the stated VSD."""
+    curves = body_diode_curves(part)
+    blocks: list[Block] = [curve_block(c) for c in curves]
+    table = part.stated.body_diode
+    if table is not None and table.i_s is not None and all(_hot(c) for c in curves):
+        i_s = table.i_s
+
+        def drop(t: Transistor) -> Numbers:
+            return forward_voltage(i_s, t.diode) if t.diode is not None else np.asarray(np.nan)
+
+        blocks += _scalar("vsd (table)", _BODY_DIODE, table.v_sd, TABLE_ERROR["v_sd"], drop)
+    return blocks
+
+
+def body_diode_curves(part: Part) -> tuple[Curve, ...]:
+    """The body diode's curves that count: at VGS = 0 where there are such, else with the gate more firmly off."""
+    every = [c for c in part.curves_of(Quantity.BODY_DIODE) if (c.v_gs or 0.0) <= 0.0]
+    at_zero = tuple(c for c in every if not c.v_gs)
+    return at_zero or tuple(every)
 
 
 def gate_charge_blocks(part: Part) -> list[Block]:

@@ -12,7 +12,14 @@ from fitter.errors import FitError
 from fitter.models.temperature import REFERENCE
 from fitter.part import Curve, Part, Quantity
 
-__all__ = ["channel_start", "junction_start", "second_shield_starts", "shield_starts", "sorted_curve"]
+__all__ = [
+    "body_diode_start",
+    "channel_start",
+    "junction_start",
+    "second_shield_starts",
+    "shield_starts",
+    "sorted_curve",
+]
 
 Array = NDArray[np.float64]
 
@@ -139,6 +146,46 @@ def channel_start(part: Part) -> dict[str, float]:
         "v_th": -float(offset / slope), "k": k, "w": 0.1, "lam": 0.0,
         "r_s": r_s, "r_d": 0.0 if given is None else 0.3 * given,
     }  # fmt: skip
+
+
+def body_diode_start(part: Part) -> dict[str, float]:
+    """Exponential through the body diode's coolest curve: a straight line of ln I over VSD in its lower half.
+
+    Parameters
+    ----------
+    part : Part
+        With a body-diode curve or a stated VSD.
+
+    Returns
+    -------
+    dict
+        i_s [A], n, r [ohm], e_g [V], r_exponent.
+    """
+    thermal = 0.0257
+    curves = sorted(part.curves_of(Quantity.BODY_DIODE), key=lambda c: abs((c.t_j or REFERENCE) - REFERENCE))
+    n, v, i, r = 1.1, 0.8, 1.0, 0.0
+    if curves:
+        x, y = curves[0].x, np.maximum(curves[0].y, 1e-12)
+        low = y <= np.sqrt(y.min() * y.max())
+        if np.count_nonzero(low) < 3:
+            low = np.argsort(y) < 3
+        slope = float(np.polyfit(x[low], np.log(y[low]), 1)[0]) if np.ptp(x[low]) > 0.0 else 20.0
+        n = min(max(1.0 / (max(slope, 0.1) * thermal), 0.8), 5.0)
+        v, i = float(x[low].mean()), float(np.exp(np.log(y[low]).mean()))
+        top = int(np.argmax(y))
+        r = max(0.3 * (float(x[top]) - v - n * thermal * float(np.log(y[top] / i))) / float(y[top]), 1e-5)
+    elif (table := part.stated.body_diode) is not None and table.v_sd is not None and table.i_s is not None:
+        v, i = table.v_sd.typ or table.v_sd.max or 0.8, table.i_s
+    return {"i_s": float(i * np.exp(-min(v / (n * thermal), 130.0))), "n": n, "r": r, "e_g": 1.12, "r_exponent": 0.5}
+
+
+def small_current_drop(part: Part) -> float:
+    """VSD [V] at the lowest current of the body diode's curves, or the stated one; 0 where neither is given."""
+    curves = part.curves_of(Quantity.BODY_DIODE)
+    if curves:
+        return min(float(c.x[int(np.argmin(c.y))]) for c in curves)
+    table = part.stated.body_diode
+    return (table.v_sd.typ or 0.0) if table is not None and table.v_sd is not None else 0.0
 
 
 def sorted_curve(curves: tuple[Curve, ...]) -> tuple[Array, Array] | None:

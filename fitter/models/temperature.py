@@ -54,7 +54,8 @@ class TemperatureLaws:
 def channel_at(t_j: ArrayLike, channel: Channel, laws: TemperatureLaws) -> Channel:
     """The channel at another junction temperature.
 
-    VTH + a (T - T0), K (T/T0)^-b, RD (T/T0)^c, w T/T0 with T in kelvin.
+    VTH + a (T - T0), K (T/T0)^-b, RS (T/T0)^b, RD (T/T0)^c, w T/T0, with T in kelvin. RS follows 1/K because it
+    carries the mobility reduction, theta/K.
 
     Parameters
     ----------
@@ -82,6 +83,7 @@ def channel_at(t_j: ArrayLike, channel: Channel, laws: TemperatureLaws) -> Chann
         channel,
         v_th=np.asarray(channel.v_th) + np.asarray(laws.a) * (t_j - REFERENCE),
         k=np.asarray(channel.k) * ratio ** -np.asarray(laws.b),
+        r_s=np.asarray(channel.r_s) * ratio ** np.asarray(laws.b),
         r_d=np.asarray(channel.r_d) * ratio ** np.asarray(laws.c),
         w=np.asarray(channel.w) * ratio,
     )

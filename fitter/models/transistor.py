@@ -16,6 +16,7 @@ from fitter.errors import OperatingPointError
 from fitter.models import capacitance as cap
 from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN, Junction, junction_from
 from fitter.models.channel import CHANNEL, Channel, terminal_current
+from fitter.models.diode import BODY_DIODE, BodyDiode
 from fitter.models.smooth import softplus
 from fitter.models.temperature import REFERENCE, TEMPERATURE, TemperatureLaws, channel_at
 from fitter.models.types import Numbers, Value
@@ -40,7 +41,7 @@ GATE = {
 #: Every fitted parameter's definition by its name, in the order of the tables.
 DEFINITIONS: dict[str, ParameterDefinition] = {
     definition.name: definition
-    for group in (GATE, GATE_DRAIN, DRAIN_SOURCE, CHANNEL, TEMPERATURE)
+    for group in (GATE, GATE_DRAIN, DRAIN_SOURCE, CHANNEL, TEMPERATURE, BODY_DIODE)
     for definition in group.values()
 }
 
@@ -59,6 +60,8 @@ class Transistor:
         The channel at 25 degC.
     laws : TemperatureLaws or None
         None where nothing is known of other temperatures.
+    diode : BodyDiode or None
+        None where nothing is known of it; it takes the junction temperature as an argument.
     """
 
     c_gs: Value
@@ -68,10 +71,11 @@ class Transistor:
     drain_source: Junction
     channel: Channel
     laws: TemperatureLaws | None = None
+    diode: BodyDiode | None = None
 
     @classmethod
     def from_values(cls, values: Mapping[str, Value]) -> Transistor:
-        """A transistor from parameters by name; shield and temperature parameters may be absent.
+        """A transistor from parameters by name; those of shields, temperature laws and body diode may be absent.
 
         Parameters
         ----------
@@ -87,13 +91,14 @@ class Transistor:
         def group(definitions: Mapping[str, ParameterDefinition]) -> dict[str, Value]:
             return {field: values[d.name] for field, d in definitions.items() if d.name in values}
 
-        laws = group(TEMPERATURE)
+        laws, diode = group(TEMPERATURE), group(BODY_DIODE)
         return cls(
             **{field: values[d.name] for field, d in GATE.items()},
             gate_drain=junction_from(GATE_DRAIN, values),
             drain_source=junction_from(DRAIN_SOURCE, values),
             channel=Channel(**group(CHANNEL)),
             laws=TemperatureLaws(**laws) if laws else None,
+            diode=BodyDiode(**diode) if diode else None,
         )
 
     def at(self, t_j: ArrayLike) -> Transistor:

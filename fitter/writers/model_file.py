@@ -17,9 +17,9 @@ from numpy.typing import NDArray
 from fitter.comparison import Comparison
 from fitter.errors import FitterError, ModelFileError
 from fitter.fitting.assumptions import ACCUMULATION_RATIO, ON_STATE_RATIO, GateAssumption
-from fitter.fitting.fit import BlockStatistics
 from fitter.fitting.forms import FormTrial
 from fitter.fitting.intervals import Estimate
+from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import ParameterSpace
 from fitter.model import FittedModel
 from fitter.models.transistor import DEFINITIONS, Transistor

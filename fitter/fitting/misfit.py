@@ -1,0 +1,69 @@
+"""How well each block of data is met, and by how much its standard deviations want widening."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from fitter.fitting.solve import Solution
+
+__all__ = ["BlockStatistics", "block_statistics", "widening"]
+
+
+@dataclass(frozen=True, kw_only=True)
+class BlockStatistics:
+    """How well the fit meets one block of data.
+
+    Parameters
+    ----------
+    name : str
+        The block's name.
+    points, unused : int
+        Number of data, and how many of them were left aside.
+    chi_square : float
+        Sum of squared residuals at the reading errors given.
+    freedom : float
+        Degrees of freedom left to the block.
+    inflation : float
+        Factor on the standard deviations because the model's form does not quite fit.
+    """
+
+    name: str
+    points: int
+    unused: int
+    chi_square: float
+    freedom: float
+    inflation: float
+
+
+def block_statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
+    """Misfit of each block; curves of one group share a widening, or the worst would be weighed down ever more."""
+    taken = solution.leverage()
+    chi_square: dict[str, float] = {}
+    freedom: dict[str, float] = {}
+    together: dict[str, tuple[float, float]] = {}
+    for block in solution.blocks:
+        chi_square[block.name] = float(np.sum(solution.residuals[block.name][: block.points] ** 2)) * block.inflation**2
+        freedom[block.name] = max(block.used_points - taken[block.name], 0.0)
+        c, f = together.get(block.group, (0.0, 0.0))
+        together[block.group] = c + chi_square[block.name], f + freedom[block.name]
+    result = []
+    for block in solution.blocks:
+        c, f = together[block.group]
+        # A single table value says nothing of its own scatter.
+        inflation = float(np.sqrt(max(1.0, c / f))) if f >= 1.0 and block.group else 1.0
+        inflation = block.inflation if block.held else inflation
+        result.append(
+            BlockStatistics(
+                name=block.name, points=block.points, unused=block.points - block.used_points,
+                chi_square=chi_square[block.name], freedom=freedom[block.name], inflation=inflation,
+            )
+        )  # fmt: skip
+    return tuple(result)
+
+
+def widening(solution: Solution, group: str) -> float:
+    """By how much a group's standard deviations would have to be widened for its misfit; 1 where it is not there."""
+    names = {block.name for block in solution.blocks if block.group == group}
+    return max((s.inflation for s in block_statistics(solution) if s.name in names), default=1.0)
