@@ -3,18 +3,20 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from itertools import combinations
 from typing import TypeVar
 
 import numpy as np
+from numpy.typing import ArrayLike
 
-from fitter.comparison import compare, explain_gate_charge
+from fitter.comparison import compare, explain_gate_charge, explain_recovery
 from fitter.fitting.blocks import PathBlock, PointsBlock
 from fitter.fitting.fit import FitResult
 from fitter.fitting.intervals import standard_errors
 from fitter.fitting.observations import from_axis
-from fitter.model import CurveRow, FittedModel
+from fitter.model import CurveRow, FittedModel, Validity
+from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import DEFINITIONS
 from fitter.models.types import scalar
 from fitter.parameters import Origin, Parameter
@@ -27,7 +29,7 @@ Model = TypeVar("Model", bound=FittedModel)
 
 #: A standard error this large, as a natural logarithm or relative to the typical size, determines nothing.
 _UNDETERMINED = 2.0
-#: Standard deviations widened by more than this are worth a notice.
+#: A misfit of more than this many times the reading errors is worth a notice.
 _WORTH_SAYING = 1.5
 
 _PACKAGE = {
@@ -67,8 +69,14 @@ def assemble(part: Part, result: FitResult, kind: type[Model]) -> Model:
         trials=result.trials,
         checks=checks,
         points=_points(part, result),
-        notices=(*part.notices, *_notices(part, result, parameters), *explain_gate_charge(checks)),
+        notices=(
+            *part.notices,
+            *_notices(part, result, parameters),
+            *explain_gate_charge(checks),
+            *explain_recovery(checks),
+        ),
         used_gate_charge=result.used_gate_charge,
+        validity=_validity(part, {b.name for b in result.solution.blocks}),
         version=VERSION,
     )
 
@@ -94,8 +102,8 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
             elif (free[name] if d.scale == "log" else stderr / max(abs(value), 1e-300)) > _UNDETERMINED:
                 origin, note = "not determined", "the data leave it open within a factor of ten or more"
         elif name in estimate.space.fixed:
-            origin = "fixed" if name == "lambda" else "assumed"
-            note = _WHY_FIXED.get(name, "no curve shows it")
+            origin = _FIXED_AS.get(name, "assumed")
+            note = _WHY_FIXED.get(name, "no curve given shows it")
         else:
             origin, note = "assumed", _WHY_ASSUMED[name]
             stderr = float(standard_errors(lambda v, name=name: np.reshape(v[name], (-1, 1)), estimate)[0])  # type: ignore[misc]
@@ -117,7 +125,9 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     return table
 
 
+_FIXED_AS: dict[str, Origin] = {"lambda": "fixed", "tt_d": "fitted"}
 _WHY_FIXED = {
+    "tt_d": "solved for the stated recovery",
     "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
     "r_d": "no RDS(on) is stated and no output curve given",
 }
@@ -164,9 +174,9 @@ def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter])
     said += [(o.curve, _left_aside(curves[o.curve], o.index, o.sigmas)) for o in result.outliers]
     for group in dict.fromkeys(b.group for b in result.solution.blocks if b.group):
         names = [b.name for b in result.solution.blocks if b.group == group]
-        width = max(s.inflation for s in result.statistics if s.name in names)
-        if width > _WORTH_SAYING:
-            misses = f"the model's form misses the points by {width:.1f} times their reading errors"
+        misfit = max(s.misfit for s in result.statistics if s.name in names)
+        if misfit > _WORTH_SAYING:
+            misses = f"the model's form misses the points by {misfit:.1f} times their reading errors"
             said.append((group, f"{', '.join(names)}: {misses}; the intervals are widened by that"))
     fitted = {b.name for b in result.solution.blocks}
     aside = [c.name for c in part.curves if c.name not in fitted and c.quantity is not Quantity.GATE_CHARGE]
@@ -180,3 +190,28 @@ def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter])
 def _left_aside(curve: Curve, index: int, sigmas: float) -> str:
     where = f"{curve.file}:{curve.lines[index]}: a point of {curve.name}"
     return f"{where} lies {abs(sigmas):.1f} standard deviations off; it was left aside: look at it again"
+
+
+def _validity(part: Part, fitted: Collection[str]) -> Validity:
+    curves = [curve for curve in part.curves if curve.name in fitted]
+
+    def of(*quantities: Quantity) -> list[Curve]:
+        return [curve for curve in curves if curve.quantity in quantities]
+
+    transfer, output, gate = of(Quantity.TRANSFER), of(Quantity.OUTPUT), of(Quantity.GATE_CHARGE)
+    over_t_j = of(Quantity.RDS_ON_TEMPERATURE, Quantity.VGS_TH_TEMPERATURE)
+    temperatures = [REFERENCE, *(c.t_j for c in (*transfer, *output) if c.t_j is not None)]
+    temperatures += [float(t) for c in over_t_j for t in c.x[[0, -1]]]
+    return Validity(
+        capacitance_v_ds=_ends(*(c.x for c in of(Quantity.CISS, Quantity.COSS, Quantity.CRSS))),
+        current_v_ds=_ends(*([c.v_ds] for c in transfer if c.v_ds is not None), *(c.x for c in output)),
+        v_gs=_ends(*(c.x for c in transfer), *([c.v_gs] for c in output if c.v_gs is not None), *(c.y for c in gate)),
+        i_d=_ends(*(c.y for c in (*transfer, *output))),
+        t_j=(min(temperatures), max(temperatures)),
+    )
+
+
+def _ends(*stretches: ArrayLike) -> tuple[float, float] | None:
+    """Lowest and highest of all values; None where there are none."""
+    values = [np.asarray(stretch, dtype=float) for stretch in stretches]
+    return (min(float(v.min()) for v in values), max(float(v.max()) for v in values)) if values else None

@@ -13,11 +13,12 @@ from fitter.fitting.intervals import Estimate, intervals
 from fitter.fitting.space import Values
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
 from fitter.models.channel import on_resistance, threshold_voltage, transconductance
+from fitter.models.diode import forward_voltage, recovery
 from fitter.models.transistor import Transistor
-from fitter.models.types import Numbers
-from fitter.part import Notice, Part, Stated
+from fitter.models.types import Numbers, scalar
+from fitter.part import Notice, Part, Stated, StatedBodyDiode
 
-__all__ = ["Comparison", "Verdict", "compare", "explain_gate_charge"]
+__all__ = ["Comparison", "Verdict", "compare", "explain_gate_charge", "explain_recovery"]
 
 Verdict = Literal["agrees", "differs", "outside limit", "not determined", "no typ"]
 
@@ -187,15 +188,57 @@ def compare(
     if (d := stated.body_diode) is not None:
         forward = "" if d.i_s is None else f"IS {amperes(d.i_s)}"
         recovery = "" if d.i_f is None or d.di_dt is None else f"IF {amperes(d.i_f)}, dI/dt {d.di_dt * 1e-6:g} A/us"
-        add(
-            [
-                row("vsd", "V", forward, d.v_sd),
-                row("qrr", "C", recovery, d.q_rr),
-                row("trr", "s", recovery, d.t_rr),
-            ],
-            None,
-        )
+        known = Transistor.from_values(estimate.values).diode is not None
+        i_s = 0.0 if d.i_s is None else d.i_s
+
+        def forward_figures(t: Transistor) -> Sequence[Numbers]:
+            return () if t.diode is None else (forward_voltage(i_s, t.diode),)
+
+        add([row("vsd", "V", forward, d.v_sd, "vsd (table)")], forward_figures if known else None)
+        result.extend(_recovery_rows(d, recovery, scalar(estimate.values.get("tt_d", 0.0))))
     return tuple(result)
+
+
+def _recovery_rows(d: StatedBodyDiode, condition: str, transit_time: float) -> list[Comparison]:
+    """QRR and tRR of the exported diode; it was solved for one of them, QRR where that is stated."""
+    found: tuple[float | None, float | None] = (None, None)
+    if transit_time > 0.0 and d.i_f is not None and d.di_dt is not None:
+        found = recovery(transit_time, d.i_f, d.di_dt)
+    solved_for = "qrr" if d.q_rr is not None and d.q_rr.typ else "trr"
+    return [
+        Comparison(
+            quantity=quantity, unit=unit, condition=condition, stated=stated, fitted=value, low=value, high=value,
+            used_in_fit=value is not None and quantity == solved_for,
+            verdict=_verdict(stated, value, value, value),
+        )
+        for quantity, unit, stated, value in (("qrr", "C", d.q_rr, found[0]), ("trr", "s", d.t_rr, found[1]))
+        if stated is not None
+    ]  # fmt: skip
+
+
+def explain_recovery(checks: Sequence[Comparison]) -> tuple[Notice, ...]:
+    """Where one transit time cannot meet the stated QRR and tRR together: which was met, and how far off the other is.
+
+    Parameters
+    ----------
+    checks : sequence of Comparison
+        As from `compare`.
+
+    Returns
+    -------
+    tuple of Notice
+    """
+    by_name = {c.quantity: c for c in checks if c.quantity in ("qrr", "trr") and c.deviation is not None}
+    if len(by_name) < 2:
+        return ()
+    met, other = sorted(by_name.values(), key=lambda c: not c.used_in_fit)
+    if other.verdict == "agrees":
+        return ()
+    text = (
+        f"one transit time cannot meet both: {met.quantity} is met, {other.quantity} of the exported diode is off by "
+        f"{100.0 * (other.deviation or 0.0):+.0f} %: it snaps off where a real diode's current decays"
+    )
+    return (Notice(topic="trr", text=text),)
 
 
 def _gate_charge_figures(t: Transistor, point: OperatingPoint) -> Sequence[Numbers]:

@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 __all__ = [
+    "ExtrapolationWarning",
     "FitError",
     "FitterError",
     "ModelFileError",
@@ -80,6 +81,10 @@ class FitError(FitterError):
 
 class OperatingPointError(FitterError):
     """An operating point that the model cannot reach, such as a load current above what the channel carries."""
+
+
+class ExtrapolationWarning(UserWarning):
+    """A model is asked about a junction temperature outside those it was fitted at."""
 
 
 class ModelFileError(FitterError):

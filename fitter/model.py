@@ -6,6 +6,7 @@ datasheet: voltages and currents negative, charges, capacitances and energies po
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Literal
@@ -14,19 +15,20 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from fitter.comparison import Comparison
-from fitter.errors import OperatingPointError
+from fitter.errors import ExtrapolationWarning, OperatingPointError
 from fitter.fitting.forms import FormTrial
 from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, Figures, intervals, standard_errors
 from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import Values
 from fitter.gate_charge import GateChargeCurve, OperatingPoint, gate_charge_curve
+from fitter.models.channel import terminal_current
 from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import Transistor
 from fitter.models.types import scalar
 from fitter.parameters import Parameter
 from fitter.part import Load, Notice, Part, Quantity
 
-__all__ = ["CurveRow", "FittedModel", "Interval", "operating_point"]
+__all__ = ["CurveRow", "FittedModel", "Interval", "Validity", "operating_point"]
 
 Array = NDArray[np.float64]
 
@@ -65,6 +67,27 @@ class CurveRow:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Validity:
+    """What was digitized: outside of it the equations extrapolate. Each a lowest and a highest value, or None.
+
+    Parameters
+    ----------
+    capacitance_v_ds, current_v_ds : tuple of float or None
+        VDS of the capacitance curves, and of the transfer and output curves [V].
+    v_gs, i_d : tuple of float or None
+        VGS [V] and ID [A] of the transfer, output and gate-charge curves.
+    t_j : tuple of float
+        Junction temperatures of what the channel was fitted to [degC].
+    """
+
+    capacitance_v_ds: tuple[float, ...] | None = None
+    current_v_ds: tuple[float, ...] | None = None
+    v_gs: tuple[float, ...] | None = None
+    i_d: tuple[float, ...] | None = None
+    t_j: tuple[float, ...] = (REFERENCE, REFERENCE)
+
+
+@dataclass(frozen=True, kw_only=True)
 class FittedModel:
     """A model fitted to a part.
 
@@ -90,6 +113,8 @@ class FittedModel:
         What the user should know.
     used_gate_charge : bool
         Whether gate-charge data were fitted.
+    validity : Validity
+        Ranges that were digitized.
     version : str
         Version of the tool that made it.
     """
@@ -104,6 +129,7 @@ class FittedModel:
     points: tuple[CurveRow, ...] = ()
     notices: tuple[Notice, ...] = ()
     used_gate_charge: bool = False
+    validity: Validity = field(default_factory=Validity)
     version: str = ""
 
     @property
@@ -119,13 +145,49 @@ class FittedModel:
         t_j : float
             Junction temperature [degC].
 
+        Warns
+        -----
+        ExtrapolationWarning
+            Where the temperature lies outside those that were digitized.
+
         Raises
         ------
         OperatingPointError
             Where the model knows nothing of that temperature.
         """
+        if message := self.extrapolation(t_j):
+            warnings.warn(message, ExtrapolationWarning, stacklevel=3)
         values = {name: scalar(value) for name, value in self.estimate.values.items()}
         return Transistor.from_values(values).at(t_j)
+
+    def extrapolation(self, t_j: float) -> str:
+        """What to say of a junction temperature [degC] outside those that were digitized; empty inside."""
+        low, high = self.validity.t_j[0], self.validity.t_j[-1]
+        if low <= t_j <= high:
+            return ""
+        return f"{t_j:g} C lies outside the digitized {low:g} to {high:g} C: the temperature laws extrapolate"
+
+    def zero_temperature_coefficient(self) -> tuple[float, float] | None:
+        """Where the transfer curves of 25 degC and of the hottest digitized temperature cross.
+
+        Returns
+        -------
+        v_gs, i_d : float
+            [V], [A], with a p-channel part's signs, in saturation; None where they do not cross within the gate's rating.
+        """
+        hottest = self.validity.t_j[-1]
+        if hottest <= REFERENCE:
+            return None
+        cold, hot = self.transistor().channel, self.transistor(hottest).channel
+        v_gs = np.linspace(float(cold.v_th), self.part.v_gs_max, 2000)
+        v_ds = 0.5 * self.part.v_ds_max
+        lead = terminal_current(v_gs, v_ds, hot) - terminal_current(v_gs, v_ds, cold)
+        down = np.flatnonzero((lead[:-1] > 0.0) & (lead[1:] <= 0.0))
+        if down.size == 0:
+            return None
+        k = int(down[0])
+        at = v_gs[k] + (v_gs[k + 1] - v_gs[k]) * lead[k] / (lead[k] - lead[k + 1])
+        return self.sign * float(at), self.sign * float(terminal_current(at, v_ds, cold))
 
     def ciss(self, v_ds: ArrayLike) -> Array:
         """Input capacitance at VGS = 0.

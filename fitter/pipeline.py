@@ -92,7 +92,7 @@ def output_files(model: Model) -> dict[str, bytes]:
     dict of str to bytes
         The same bytes for the same model.
     """
-    from fitter.plots import sheet_files
+    from fitter.sheet import sheet_files
 
     texts = {
         "model.json": model_file.model_text(model),

@@ -73,8 +73,8 @@ def engineering(value: float, unit: str, digits: int = 3) -> str:
 
     Examples
     --------
-    >>> engineering(6.284e-8, "C"), engineering(0.0, "V"), engineering(0.5, "")
-    ('62.8 nC', '0 V', '0.5')
+    >>> engineering(6.284e-8, "C"), engineering(4.6e-10, "F", 2), engineering(0.0, "V"), engineering(0.5, "")
+    ('62.8 nC', '460 pF', '0 V', '0.5')
     """
     if not math.isfinite(value):
         return f"{value} {unit}".strip()
@@ -82,4 +82,7 @@ def engineering(value: float, unit: str, digits: int = 3) -> str:
         return f"{value:.{digits}g} {unit}".strip()
     rounded = float(f"{value:.{digits}g}")
     exponent = min(max(3 * math.floor(math.log10(abs(rounded)) / 3), -15), 9)
-    return f"{rounded / 10.0**exponent:.{digits}g} {_ENGINEERING[exponent]}{unit}"
+    figure = f"{rounded / 10.0**exponent:.{digits}g}"
+    if "e" in figure and 1.0 <= abs(rounded) / 10.0**exponent < 1000.0:
+        figure = f"{rounded / 10.0**exponent:.0f}"
+    return f"{figure} {_ENGINEERING[exponent]}{unit}"

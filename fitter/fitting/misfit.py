@@ -26,7 +26,9 @@ class BlockStatistics:
     freedom : float
         Degrees of freedom left to the block.
     inflation : float
-        Factor on the standard deviations because the model's form does not quite fit.
+        Factor on the standard deviations in the fit.
+    misfit : float
+        How many times their reading errors the group's points lie off, root mean square; about 1 where the form fits.
     """
 
     name: str
@@ -35,6 +37,7 @@ class BlockStatistics:
     chi_square: float
     freedom: float
     inflation: float
+    misfit: float
 
 
 def block_statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
@@ -53,11 +56,12 @@ def block_statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
         c, f = together[block.group]
         # A single table value says nothing of its own scatter.
         inflation = float(np.sqrt(max(1.0, c / f))) if f >= 1.0 and block.group else 1.0
+        misfit = float(np.sqrt(c / max(f, 1.0)))
         inflation = block.inflation if block.held else inflation
         result.append(
             BlockStatistics(
                 name=block.name, points=block.points, unused=block.points - block.used_points,
-                chi_square=chi_square[block.name], freedom=freedom[block.name], inflation=inflation,
+                chi_square=chi_square[block.name], freedom=freedom[block.name], inflation=inflation, misfit=misfit,
             )
         )  # fmt: skip
     return tuple(result)

@@ -161,19 +161,22 @@ def solve(
             loss="soft_l1" if robust else "linear", f_scale=_ROBUST_SCALE,
         )  # fmt: skip
     found = coordinates(result.params)
-    values = space.values(found)
-    by_block = {block.name: np.real(block.residuals(values)) for block in blocks}
-    every = np.concatenate(list(by_block.values()))
     slopes = _jacobian(blocks, space, found)
     near = _ON_BOUND / np.sqrt(np.maximum(np.sum(slopes**2, axis=0), 1e-300))
     near = np.minimum(near, 1e-3 * (upper - lower))
+    at_lower, at_upper = found - lower < near, upper - found < near
+    # The method stays strictly inside; what has come this near belongs on the bound.
+    found = np.where(at_lower, lower, np.where(at_upper, upper, found))
+    values = space.values(found)
+    by_block = {block.name: np.real(block.residuals(values)) for block in blocks}
+    every = np.concatenate(list(by_block.values()))
     return Solution(
         space=space,
         coordinates=found,
         blocks=blocks,
         residuals=by_block,
         jacobian=slopes,
-        on_bound=(found - lower < near) | (upper - found < near),
+        on_bound=at_lower | at_upper,
         chi_square=float(sum(np.sum(r**2) for r in by_block.values())),
         cost=_robust_cost(every) if robust else 0.5 * float(np.sum(every**2)),
         converged=bool(result.success and not result.aborted),

@@ -12,12 +12,12 @@ from fitter.fitting.outliers import Outlier, set_aside
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import Values
 from fitter.models.channel import CHANNEL
-from fitter.models.diode import BODY_DIODE
+from fitter.models.diode import BODY_DIODE, TRANSIT_TIME, transit_time_from_charge, transit_time_from_time
 from fitter.models.temperature import TEMPERATURE
 from fitter.models.types import scalar
 from fitter.part import Part, Quantity
 
-__all__ = ["Stage", "fit_body_diode", "fit_channel", "fit_temperature"]
+__all__ = ["Stage", "fit_body_diode", "fit_channel", "fit_temperature", "recovery_transit_time"]
 
 #: How much farther from its points the transfer curve may come to lie for the sake of output curves.
 _WORSE = 1.25
@@ -140,6 +140,29 @@ def fit_temperature(part: Part, channel: Stage) -> Stage | None:
     return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
 
 
+def recovery_transit_time(part: Part) -> dict[str, float]:
+    """The body diode's transit time from the stated QRR or, without it, tRR; empty where neither is stated.
+
+    Parameters
+    ----------
+    part : Part
+        With QRR or tRR, and the IF and dI/dt they were measured at.
+
+    Returns
+    -------
+    dict of str to float
+        tt_d [s].
+    """
+    table = part.stated.body_diode
+    if table is None or table.i_f is None or table.di_dt is None:
+        return {}
+    if table.q_rr is not None and table.q_rr.typ:
+        return {TRANSIT_TIME.name: transit_time_from_charge(table.q_rr.typ, table.i_f, table.di_dt)}
+    if table.t_rr is not None and table.t_rr.typ:
+        return {TRANSIT_TIME.name: transit_time_from_time(table.t_rr.typ, table.i_f, table.di_dt)}
+    return {}
+
+
 def fit_body_diode(part: Part) -> Stage | None:
     """The body diode from its forward curves, or from the stated VSD alone; None where neither is given.
 
@@ -167,4 +190,5 @@ def fit_body_diode(part: Part) -> Stage | None:
     rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True)
     marked, outliers = set_aside(rough)
     solution = solve(marked, model_space(free, fixed, marked), rough.values)
+    fixed |= recovery_transit_time(part)
     return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)

@@ -18,11 +18,13 @@ from fitter.parameters import ParameterDefinition
 
 __all__ = [
     "BODY_DIODE",
+    "TRANSIT_TIME",
     "BodyDiode",
     "forward_current",
     "forward_voltage",
     "recovery",
     "saturation_current",
+    "series_resistance",
     "thermal_voltage",
     "transit_time_from_charge",
     "transit_time_from_time",
@@ -49,6 +51,12 @@ BODY_DIODE = {
         name="rdio_exponent", unit="", meaning="body diode: its resistance rises as (T/T0)^rdio_exponent",
         lower=-5.0, upper=8.0, scale="linear"),
 }  # fmt: skip
+
+#: Definition of the transit time, which the stated recovery determines by itself.
+TRANSIT_TIME = ParameterDefinition(
+    name="tt_d", unit="s", meaning="body diode: transit time",
+    lower=0.0, upper=1e-3, scale="linear", typical=1e-8,
+)  # fmt: skip
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -116,7 +124,8 @@ def saturation_current(t_j: ArrayLike, d: BodyDiode) -> Numbers:
     return np.asarray(d.i_s * np.exp(3.0 / n * np.log(ratio) + d.e_g / (n * thermal_voltage(t_j)) * (ratio - 1.0)))
 
 
-def _series_resistance(t_j: ArrayLike, d: BodyDiode) -> Numbers:
+def series_resistance(t_j: ArrayLike, d: BodyDiode) -> Numbers:
+    """Series resistance [ohm] at a junction temperature [degC]: R (T/T0)^r_exponent."""
     ratio = (np.asarray(t_j) + KELVIN) / (REFERENCE + KELVIN)
     return np.asarray(d.r * np.exp(d.r_exponent * np.log(ratio)))
 
@@ -140,7 +149,7 @@ def forward_voltage(i: ArrayLike, d: BodyDiode, t_j: ArrayLike = REFERENCE) -> N
     """
     i = np.asarray(i)
     junction = np.asarray(d.n) * thermal_voltage(t_j) * np.log1p(i / saturation_current(t_j, d))
-    return np.asarray(junction + i * _series_resistance(t_j, d))
+    return np.asarray(junction + i * series_resistance(t_j, d))
 
 
 def forward_current(v: ArrayLike, d: BodyDiode, t_j: ArrayLike = REFERENCE) -> Numbers:
@@ -162,7 +171,7 @@ def forward_current(v: ArrayLike, d: BodyDiode, t_j: ArrayLike = REFERENCE) -> N
     """
     v = np.asarray(v)
     width = np.asarray(d.n) * thermal_voltage(t_j)
-    i_s, r = saturation_current(t_j, d), _series_resistance(t_j, d)
+    i_s, r = saturation_current(t_j, d), series_resistance(t_j, d)
 
     def excess(
         x: Numbers, v: Numbers = v, width: Numbers = width, i_s: Numbers = i_s, r: Numbers = r
@@ -180,7 +189,7 @@ def forward_current(v: ArrayLike, d: BodyDiode, t_j: ArrayLike = REFERENCE) -> N
 def _junction_voltages(v: Numbers, d: BodyDiode, t_j: ArrayLike) -> Numbers:
     """Junction voltage in units of N kT/q at a forward voltage."""
     width = np.asarray(d.n) * thermal_voltage(t_j)
-    i_s, r = saturation_current(t_j, d), _series_resistance(t_j, d)
+    i_s, r = saturation_current(t_j, d), series_resistance(t_j, d)
     upper = np.asarray(v / width)
     # With all the voltage over the resistance the junction would need this much: from there Newton's way is down.
     guess = np.minimum(upper, np.log1p(v / np.maximum(r * i_s, 1e-300)))

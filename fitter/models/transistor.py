@@ -16,7 +16,7 @@ from fitter.errors import OperatingPointError
 from fitter.models import capacitance as cap
 from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN, Junction, junction_from
 from fitter.models.channel import CHANNEL, Channel, terminal_current
-from fitter.models.diode import BODY_DIODE, BodyDiode
+from fitter.models.diode import BODY_DIODE, TRANSIT_TIME, BodyDiode
 from fitter.models.smooth import softplus
 from fitter.models.temperature import REFERENCE, TEMPERATURE, TemperatureLaws, channel_at
 from fitter.models.types import Numbers, Value
@@ -43,7 +43,7 @@ DEFINITIONS: dict[str, ParameterDefinition] = {
     definition.name: definition
     for group in (GATE, GATE_DRAIN, DRAIN_SOURCE, CHANNEL, TEMPERATURE, BODY_DIODE)
     for definition in group.values()
-}
+} | {TRANSIT_TIME.name: TRANSIT_TIME}
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -21,7 +21,7 @@ from fitter.fitting.forms import FormTrial
 from fitter.fitting.intervals import Estimate
 from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import ParameterSpace
-from fitter.model import FittedModel
+from fitter.model import FittedModel, Validity
 from fitter.models.transistor import DEFINITIONS, Transistor
 from fitter.models.types import scalar
 from fitter.parameters import Parameter
@@ -70,6 +70,7 @@ class _Stored:
     trials: tuple[FormTrial, ...]
     checks: tuple[Comparison, ...]
     notices: tuple[Notice, ...]
+    validity: Validity
 
 
 def model_text(model: FittedModel) -> str:
@@ -107,6 +108,7 @@ def model_text(model: FittedModel) -> str:
         "trials": to_plain(model.trials),
         "checks": to_plain(model.checks),
         "notices": to_plain(model.notices),
+        "validity": to_plain(model.validity),
     }
     return json.dumps(data, indent=1, allow_nan=False, ensure_ascii=True) + "\n"
 
@@ -156,6 +158,7 @@ def model_from_text(text: str, kind: type[Model]) -> Model:
         trials=stored.trials,
         checks=stored.checks,
         notices=stored.notices,
+        validity=stored.validity,
         used_gate_charge=stored.used_gate_charge,
         version=stored.version,
     )

@@ -2,18 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
-
 from fitter.model import FittedModel
 from fitter.models.temperature import REFERENCE
-from fitter.part import Curve, Quantity
 from fitter.version import VERSION
 from fitter.writers.netlist_text import comment
 
 __all__ = ["header"]
 
-_CAPACITANCES = (Quantity.CISS, Quantity.COSS, Quantity.CRSS)
-_TABLE_MARK = " (table)"
+_TABLE_MARK, _EXPECTED_MARK = " (table)", " (expected)"
 
 _ABSTOL = (
     "Circuits of amperes need ABSTOL=1e-9 among the simulator's options. At the usual default of 1e-12 A the rounding noise of "
@@ -72,10 +68,9 @@ def _title(model: FittedModel, name: str) -> list[str]:
 
 
 def _fitted_to(model: FittedModel) -> list[str]:
-    curves = [curve.name for curve in _fitted_curves(model)]
     blocks = [s.name for s in model.statistics]
-    if not model.part.curves:
-        curves = [name for name in blocks if not name.endswith(")")]
+    marks = (_TABLE_MARK, _EXPECTED_MARK)
+    curves = [name for name in blocks if not name.endswith(marks)]
     tables = [name.removesuffix(_TABLE_MARK) for name in blocks if name.endswith(_TABLE_MARK)]
     lines = [comment("Fitted to"), _item(f"curves: {', '.join(curves) or 'none'}")]
     lines.append(_item(f"table values: {'; '.join(_with_condition(model, t) for t in tables) or 'none'}"))
@@ -83,9 +78,12 @@ def _fitted_to(model: FittedModel) -> list[str]:
         lines.append(_item("the gate charge: fitted, and no check of the model any more"))
     else:
         lines.append(_item("the gate charge: not fitted; c_acc and c_ch, which only it shows, are assumed"))
-    lines.append(
-        _item("the body diode is not modelled: reverse current flows in the channel only, when that is on")
-    )
+    if model.transistor().diode is None:
+        lines.append(
+            _item("the body diode is not modelled: reverse current flows in the channel only, when that is on")
+        )
+    elif "tt_d" not in model.parameters:
+        lines.append(_item("the body diode stores no charge: neither QRR nor tRR is stated"))
     return lines
 
 
@@ -94,49 +92,25 @@ def _with_condition(model: FittedModel, quantity: str) -> str:
     return f"{quantity} at {conditions[0]}" if conditions else quantity
 
 
-def _fitted_curves(model: FittedModel) -> list[Curve]:
-    fitted = {s.name for s in model.statistics}
-    return [curve for curve in model.part.curves if curve.name in fitted]
-
-
 def _validity(model: FittedModel, t_j: float) -> list[str]:
-    curves = _fitted_curves(model)
-    capacitance = [c for c in curves if c.quantity in _CAPACITANCES]
-    transfer = [c for c in curves if c.quantity is Quantity.TRANSFER]
-    output = [c for c in curves if c.quantity is Quantity.OUTPUT]
-    gate = [c for c in curves if c.quantity is Quantity.GATE_CHARGE]
+    known = model.validity
     ranges = (
-        ("VDS of the capacitances", "V", _ends(c.x for c in capacitance)),
-        ("VDS of the current", "V", _ends([*([c.v_ds] for c in transfer), *(c.x for c in output)])),
-        ("VGS", "V", _ends([*(c.x for c in transfer), *([c.v_gs] for c in output), *(c.y for c in gate)])),
-        ("ID", "A", _ends(c.y for c in (*transfer, *output))),
+        ("VDS of the capacitances", "V", known.capacitance_v_ds),
+        ("VDS of the current", "V", known.current_v_ds),
+        ("VGS", "V", known.v_gs),
+        ("ID", "A", known.i_d),
     )
     lines = [comment("Range of validity: what was digitized; beyond it the equations extrapolate")]
     lines += [
-        _item(f"{what}: {_figure(model, ends[0])} to {_figure(model, ends[1])} {unit}")
+        _item(f"{what}: {_figure(model, ends[0])} to {_figure(model, ends[-1])} {unit}")
         for what, unit, ends in ranges
         if ends is not None
     ]
-    if not curves:
-        lines.append(
-            _item("VDS, VGS, ID: the digitized curves are not stored with this model; see the part's folder")
-        )
-    temperatures = sorted({c.t_j for c in (*transfer, *output) if c.t_j is not None} or {REFERENCE})
-    known = ", ".join(f"{t:g}" for t in temperatures)
-    extrapolated = "" if temperatures[0] <= t_j <= temperatures[-1] else ", an extrapolation"
-    lines.append(
-        _item(
-            f"Tj: the currents were digitized at {known} C; this subcircuit is for {t_j:g} C{extrapolated}, whatever the "
-            "simulator's temperature"
-        )
-    )
-    return lines
-
-
-def _ends(stretches: Iterable[Sequence[float | None]]) -> tuple[float, float] | None:
-    """Lowest and highest of all values; None where there are none."""
-    values = [float(v) for stretch in stretches for v in stretch if v is not None]
-    return (min(values), max(values)) if values else None
+    low, high = known.t_j[0], known.t_j[-1]
+    digitized = f"{low:g} C" if low == high else f"{low:g} to {high:g} C"
+    extrapolated = ", an extrapolation" if model.extrapolation(t_j) else ""
+    text = f"Tj: digitized at {digitized}; this subcircuit is for {t_j:g} C{extrapolated}"
+    return [*lines, _item(f"{text}, whatever the simulator's temperature")]
 
 
 def _figure(model: FittedModel, value: float) -> str:

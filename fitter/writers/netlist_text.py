@@ -15,7 +15,7 @@ _COMMENT_MARK = "* "
 COMMENT_WIDTH = _LINE_WIDTH - len(_COMMENT_MARK)
 
 #: All that free text may contain; braces, quotes, backslashes, semicolons and the like have a meaning somewhere.
-_FORBIDDEN = re.compile(r"[^A-Za-z0-9 ,.:()/%=+_-]")
+_FORBIDDEN = re.compile(r"[^A-Za-z0-9 ,.:;'^()/%=+_-]")
 #: A word that looks like a simulator's command.
 _LEADING_DOTS = re.compile(r"(?<!\S)\.+(?=[A-Za-z])")
 
@@ -79,9 +79,7 @@ def statement(text: str) -> str:
     R1 a b 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1 1
     + 1 1 1 1
     """
-    return textwrap.fill(
-        text, _LINE_WIDTH, subsequent_indent="+ ", break_long_words=False, break_on_hyphens=False
-    )
+    return textwrap.fill(text, _LINE_WIDTH, subsequent_indent="+ ", break_long_words=False, break_on_hyphens=False)
 
 
 def harmless(text: str) -> str:

@@ -1,0 +1,248 @@
+"""The one-page sheet: what was fitted, how well, and how far to trust it."""
+
+from __future__ import annotations
+
+import io
+import textwrap
+from collections.abc import Sequence
+
+import matplotlib as mpl
+import matplotlib.lines
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.backends.backend_pdf import FigureCanvasPdf
+from matplotlib.figure import Figure
+from matplotlib.gridspec import GridSpec
+
+from fitter import plots
+from fitter.model import FittedModel
+from fitter.parameters import Parameter
+from fitter.part import Quantity
+from fitter.units import engineering
+from fitter.writers.tables import Shown, shown_checks
+
+__all__ = ["CAUTIONS", "draw_sheet", "sheet_files"]
+
+#: A4, upright [inch].
+_PAGE = (8.27, 11.69)
+_DPI = 170
+_LEFT, _RIGHT = 0.07, 0.965
+#: Height of a table line, as a share of the page.
+_LINE = 0.0103
+
+CAUTIONS = (
+    "Typical values are no limits. No safe operating area, avalanche, short circuit or self-heating. Such circuits store "
+    "energy and carry hazardous voltage, also when switched off. Verify on the bench. Local codes and licensed practice "
+    "come first."
+)
+
+_SETTINGS = {
+    "font.family": "DejaVu Sans", "font.size": 6.5, "axes.titlesize": 7.5, "axes.titleweight": "bold",
+    "axes.labelsize": 6.5, "xtick.labelsize": 6.0, "ytick.labelsize": 6.0, "legend.fontsize": 6.0,
+    "legend.title_fontsize": 6.0, "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
+    "xtick.minor.width": 0.3, "ytick.minor.width": 0.3, "lines.solid_capstyle": "round", "pdf.fonttype": 42,
+    "svg.hashsalt": "fetwright", "text.usetex": False, "mathtext.fontset": "dejavusans",
+}  # fmt: skip
+
+_VERDICT_COLOUR = {"agrees": plots.COLOURS[2], "differs": plots.COLOURS[1], "outside limit": "#B00000"}
+
+
+def sheet_files(model: FittedModel) -> dict[str, bytes]:
+    """The sheet as PNG and PDF.
+
+    Parameters
+    ----------
+    model : FittedModel
+        The model.
+
+    Returns
+    -------
+    dict of str to bytes
+        ``sheet.png`` and ``sheet.pdf``; the same bytes for the same model.
+    """
+    with mpl.rc_context():
+        mpl.rcdefaults()
+        mpl.rcParams.update(_SETTINGS)
+        figure = draw_sheet(model)
+        png, pdf = io.BytesIO(), io.BytesIO()
+        FigureCanvasAgg(figure).print_png(png, metadata={"Software": None})
+        FigureCanvasPdf(figure).print_pdf(pdf, metadata={"CreationDate": None, "Creator": None, "Producer": None})
+    return {"sheet.png": png.getvalue(), "sheet.pdf": pdf.getvalue()}
+
+
+def draw_sheet(model: FittedModel) -> Figure:
+    """The sheet as a matplotlib Figure, A4 upright.
+
+    Parameters
+    ----------
+    model : FittedModel
+        The model.
+
+    Returns
+    -------
+    Figure
+        In the settings of the caller; `sheet_files` draws it in the sheet's own.
+    """
+    figure = Figure(figsize=_PAGE, dpi=_DPI)
+    _draw_head(figure, model)
+    rows = [1.25, 1.0]
+    upper = GridSpec(
+        2,
+        12,
+        figure=figure,
+        left=_LEFT,
+        right=_RIGHT,
+        top=0.918,
+        bottom=0.545,
+        height_ratios=rows,
+        hspace=0.36,
+        wspace=3.6,
+    )
+    plots.plot_capacitances(model, figure.add_subplot(upper[0, 0:6]))
+    plots.plot_gate_charge(model, figure.add_subplot(upper[0, 6:12]))
+    plots.plot_transfer(model, figure.add_subplot(upper[1, 0:4]))
+    plots.plot_transfer(model, figure.add_subplot(upper[1, 4:8]), scale="log")
+    drawn = {curve.quantity for curve in model.part.curves if any(p.curve == curve.name for p in model.points)}
+    third = figure.add_subplot(upper[1, 8:12])
+    if Quantity.OUTPUT in drawn or Quantity.BODY_DIODE not in drawn:
+        plots.plot_output(model, third)
+        if Quantity.OUTPUT not in drawn:
+            third.text(0.5, 0.5, "no output curve given", transform=third.transAxes, ha="center", color="0.5")
+    else:
+        plots.plot_body_diode(model, third)
+    lower = GridSpec(1, 1, figure=figure, left=_LEFT, right=_RIGHT, top=0.496, bottom=0.438)
+    plots.plot_residuals(model, figure.add_subplot(lower[0, 0]))
+    top = 0.375
+    _draw_parameters(figure, model, top)
+    right_end = _draw_checks(figure, model, top)
+    _draw_notices(figure, model, right_end - 0.014, 0.062)
+    _draw_cautions(figure)
+    return figure
+
+
+def _draw_head(figure: Figure, model: FittedModel) -> None:
+    part = model.part
+    figure.text(_LEFT, 0.967, part.name, fontsize=15, fontweight="bold", va="baseline")
+    ratings = f"{part.channel}-channel, {model.sign * part.v_ds_max:g} V, gate {part.v_gs_max:g} V"
+    ratings = ratings.replace("-channel", "\0").replace("-", "\N{MINUS SIGN}").replace("\0", "-channel")
+    figure.text(_LEFT + 0.02 + 0.0195 * len(part.name), 0.967, ratings, fontsize=8, va="baseline")
+    how = (
+        "gate charge fitted"
+        if model.used_gate_charge
+        else "gate charge not fitted: Cacc and Cch assumed, QG is a check"
+    )
+    figure.text(_RIGHT, 0.967, f"fetwright {model.version}: {how}", fontsize=7, ha="right", va="baseline", color="0.3")
+    figure.text(_LEFT, 0.950, _shortened(part.notes, 150), fontsize=7, va="baseline", color="0.3")
+    figure.add_artist(mpl.lines.Line2D([_LEFT, _RIGHT], [0.942, 0.942], color="black", linewidth=0.8))
+
+
+def _shortened(text: str, most: int) -> str:
+    # A dollar sign would begin a formula.
+    plain = " ".join(text.split()).replace("$", "\uff04")
+    return plain if len(plain) <= most else plain[: most - 1].rstrip() + "\N{HORIZONTAL ELLIPSIS}"
+
+
+def _row(
+    figure: Figure,
+    y: float,
+    cells: Sequence[str],
+    places: Sequence[tuple[float, str]],
+    colours: Sequence[str] = (),
+    **style: object,
+) -> None:
+    """One line of a table: texts at their places, left or right aligned."""
+    for k, (cell, (x, align)) in enumerate(zip(cells, places, strict=True)):
+        if cell:
+            colour = colours[k] if colours else "black"
+            figure.text(x, y, cell, ha=align, va="baseline", fontsize=6.0, color=colour, **style)
+
+
+def _rule(figure: Figure, y: float, left: float, right: float) -> None:
+    figure.add_artist(mpl.lines.Line2D([left, right], [y, y], color="0.6", linewidth=0.5))
+
+
+_PARAMETER_PLACES = ((_LEFT, "left"), (0.215, "right"), (0.285, "right"), (0.298, "left"))
+
+
+def _draw_parameters(figure: Figure, model: FittedModel, top: float) -> None:
+    """The parameter table, its lines as far apart as there is room for."""
+    _row(figure, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, fontweight="bold")
+    _rule(figure, top - 0.004, _LEFT, 0.372)
+    step = min(_LINE, (top - 0.012 - 0.056) / max(len(model.parameters), 1))
+    y = top - 0.0035
+    for p in model.parameters.values():
+        y -= step
+        error = "" if p.stderr is None else engineering(p.stderr, _pretty_unit(p), 2)
+        colour = "black" if p.origin == "fitted" else "0.4"
+        cells = (p.name, engineering(p.value, _pretty_unit(p), 4), error, p.origin)
+        _row(figure, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _PARAMETER_PLACES, [colour] * 4)
+
+
+def _pretty_unit(p: Parameter) -> str:
+    return {"ohm": "\N{GREEK CAPITAL LETTER OMEGA}", "A/V^2": "A/V\N{SUPERSCRIPT TWO}"}.get(p.unit, p.unit)
+
+
+_CHECK_PLACES = (
+    (0.395, "left"), (0.452, "left"), (0.690, "right"), (0.733, "right"), (0.819, "right"), (0.870, "right"),
+    (0.879, "left"), (_RIGHT, "right"),
+)  # fmt: skip
+
+
+def _draw_checks(figure: Figure, model: FittedModel, top: float) -> float:
+    """The comparison; returns where it ends."""
+    heads = ("Stated", "condition", "typ (limits)", "fitted", "95 % interval", "off", "", "verdict")
+    _row(figure, top, heads, _CHECK_PLACES, fontweight="bold")
+    _rule(figure, top - 0.004, 0.395, _RIGHT)
+    y = top - 0.0035
+    for s in shown_checks(model):
+        y -= _LINE
+        known = s.fitted is not None and s.low is not None and s.high is not None
+        off = "" if s.check.deviation is None else f"{100.0 * s.check.deviation:+.1f} %"
+        cells = (
+            s.check.quantity, _shortened(s.check.condition, 40), _stated(s), f"{s.fitted:.4g}" if known else "",
+            f"{s.low:.4g} to {s.high:.4g}" if known else "", off, "used" if s.check.used_in_fit else "",
+            s.check.verdict,
+        )  # fmt: skip
+        colours = ["black"] * 7 + [_VERDICT_COLOUR.get(s.check.verdict, "0.4")]
+        _row(figure, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _CHECK_PLACES, colours)
+    if not model.checks:
+        y -= _LINE
+        _row(figure, y, ("no table values are stated", *[""] * 7), _CHECK_PLACES)
+    return y
+
+
+def _stated(s: Shown) -> str:
+    typ = "" if s.stated_typ is None else f"{s.stated_typ:.4g}"
+    limits = [None if x is None else f"{x:.4g}" for x in (s.stated_min, s.stated_max)]
+    if all(limits):
+        inside = f" ({limits[0]} to {limits[1]})"
+    elif any(limits):
+        inside = f" (min {limits[0]})" if limits[0] else f" (max {limits[1]})"
+    else:
+        inside = ""
+    return f"{typ}{inside} {s.unit}".strip()
+
+
+def _draw_notices(figure: Figure, model: FittedModel, top: float, bottom: float) -> None:
+    """As many notices as there is room for; the command shows them all."""
+    _row(figure, top, ("Notices",), ((0.395, "left"),), fontweight="bold")
+    _rule(figure, top - 0.004, 0.395, _RIGHT)
+    y, shown = top - 0.0035, 0
+    for notice in model.notices:
+        lines = textwrap.wrap(_shortened(notice.text, 240), 112)
+        if y - _LINE * 0.9 * (len(lines) + 1) < bottom:
+            break
+        for k, line in enumerate(lines):
+            y -= _LINE * 0.9
+            text = ("\N{EN DASH} " if k == 0 else "   ") + line
+            figure.text(0.395, y, text, fontsize=5.6, va="baseline", color="0.2")
+        shown += 1
+    left = len(model.notices) - shown
+    if left or not model.notices:
+        text = f"and {left} more, in model.json" if left else "none"
+        figure.text(0.395, y - _LINE * 0.9, text, fontsize=5.6, va="baseline", color="0.4")
+
+
+def _draw_cautions(figure: Figure) -> None:
+    _rule(figure, 0.044, _LEFT, _RIGHT)
+    for k, line in enumerate(textwrap.wrap(f"CAUTION. {CAUTIONS}", 140)):
+        figure.text(_LEFT, 0.033 - 0.0105 * k, line, fontsize=6.4, va="baseline", fontweight="bold", color="#B00000")
