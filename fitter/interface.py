@@ -10,7 +10,7 @@ import pandas as pd
 from fitter.errors import ModelFileError
 from fitter.model import FittedModel
 from fitter.models.temperature import REFERENCE
-from fitter.writers import model_file, tables
+from fitter.writers import model_file, netlist, tables
 from fitter.writers.folder import write_file
 
 __all__ = ["Model", "load_model"]
@@ -32,8 +32,6 @@ class Model(FittedModel):
         OperatingPointError
             Where the model knows nothing of that temperature.
         """
-        from fitter.writers import netlist
-
         return netlist.subcircuit(self, t_j=t_j)
 
     def save(self, path: str | os.PathLike[str]) -> None:

@@ -173,7 +173,8 @@ class FittedModel:
         Returns
         -------
         v_gs, i_d : float
-            [V], [A], with a p-channel part's signs, in saturation; None where they do not cross within the gate's rating.
+            [V], [A], with a p-channel part's signs, in saturation; None where they do not cross within the gate's
+            rating.
         """
         hottest = self.validity.t_j[-1]
         if hottest <= REFERENCE:

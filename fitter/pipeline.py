@@ -9,9 +9,11 @@ from pathlib import Path
 from fitter.assembly import assemble
 from fitter.errors import FitError, OperatingPointError
 from fitter.fitting.fit import fit
+from fitter.inspection import inspect
 from fitter.interface import Model
 from fitter.part import Notice, Part
 from fitter.reader import read_part
+from fitter.sheet import sheet_files
 from fitter.writers import model_file, tables
 from fitter.writers.folder import replace_folder
 
@@ -68,8 +70,6 @@ def fit_folder(folder: Path, *, use_gate_charge: bool = False) -> Model:
     FitError
         Where a finding stops the fit, or the data cannot carry one.
     """
-    from fitter.inspection import inspect
-
     part = read_part(folder)
     findings = inspect(part)
     stops = [str(finding) for finding in findings if finding.severity == "stop"]
@@ -92,8 +92,6 @@ def output_files(model: Model) -> dict[str, bytes]:
     dict of str to bytes
         The same bytes for the same model.
     """
-    from fitter.sheet import sheet_files
-
     texts = {
         "model.json": model_file.model_text(model),
         "parameters.csv": tables.csv_text(model.to_frame()),

@@ -8,8 +8,6 @@ from collections.abc import Sequence
 
 import matplotlib as mpl
 import matplotlib.lines
-from matplotlib.backends.backend_agg import FigureCanvasAgg
-from matplotlib.backends.backend_pdf import FigureCanvasPdf
 from matplotlib.figure import Figure
 from matplotlib.gridspec import GridSpec
 
@@ -30,9 +28,9 @@ _LEFT, _RIGHT = 0.07, 0.965
 _LINE = 0.0103
 
 CAUTIONS = (
-    "Typical values are no limits. No safe operating area, avalanche, short circuit or self-heating. Such circuits store "
-    "energy and carry hazardous voltage, also when switched off. Verify on the bench. Local codes and licensed practice "
-    "come first."
+    "Typical values are no limits. No safe operating area, avalanche, short circuit or self-heating. Such circuits "
+    "store energy and carry hazardous voltage, also when switched off. Verify on the bench. Local codes and licensed "
+    "practice come first."
 )
 
 _SETTINGS = {
@@ -61,11 +59,11 @@ def sheet_files(model: FittedModel) -> dict[str, bytes]:
     """
     with mpl.rc_context():
         mpl.rcdefaults()
-        mpl.rcParams.update(_SETTINGS)
+        mpl.rcParams.update(_SETTINGS)  # type: ignore[arg-type]
         figure = draw_sheet(model)
         png, pdf = io.BytesIO(), io.BytesIO()
-        FigureCanvasAgg(figure).print_png(png, metadata={"Software": None})
-        FigureCanvasPdf(figure).print_pdf(pdf, metadata={"CreationDate": None, "Creator": None, "Producer": None})
+        figure.savefig(png, format="png", metadata={"Software": None})
+        figure.savefig(pdf, format="pdf", metadata={"CreationDate": None, "Creator": None, "Producer": None})
     return {"sheet.png": png.getvalue(), "sheet.pdf": pdf.getvalue()}
 
 
@@ -147,13 +145,13 @@ def _row(
     cells: Sequence[str],
     places: Sequence[tuple[float, str]],
     colours: Sequence[str] = (),
-    **style: object,
+    weight: str = "normal",
 ) -> None:
     """One line of a table: texts at their places, left or right aligned."""
     for k, (cell, (x, align)) in enumerate(zip(cells, places, strict=True)):
         if cell:
             colour = colours[k] if colours else "black"
-            figure.text(x, y, cell, ha=align, va="baseline", fontsize=6.0, color=colour, **style)
+            figure.text(x, y, cell, ha=align, va="baseline", fontsize=5.7, color=colour, fontweight=weight)
 
 
 def _rule(figure: Figure, y: float, left: float, right: float) -> None:
@@ -165,7 +163,7 @@ _PARAMETER_PLACES = ((_LEFT, "left"), (0.215, "right"), (0.285, "right"), (0.298
 
 def _draw_parameters(figure: Figure, model: FittedModel, top: float) -> None:
     """The parameter table, its lines as far apart as there is room for."""
-    _row(figure, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, fontweight="bold")
+    _row(figure, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, weight="bold")
     _rule(figure, top - 0.004, _LEFT, 0.372)
     step = min(_LINE, (top - 0.012 - 0.056) / max(len(model.parameters), 1))
     y = top - 0.0035
@@ -182,16 +180,16 @@ def _pretty_unit(p: Parameter) -> str:
 
 
 _CHECK_PLACES = (
-    (0.395, "left"), (0.452, "left"), (0.690, "right"), (0.733, "right"), (0.819, "right"), (0.870, "right"),
-    (0.879, "left"), (_RIGHT, "right"),
+    (0.385, "left"), (0.436, "left"), (0.690, "right"), (0.734, "right"), (0.828, "right"), (0.873, "right"),
+    (0.880, "left"), (_RIGHT, "right"),
 )  # fmt: skip
 
 
 def _draw_checks(figure: Figure, model: FittedModel, top: float) -> float:
     """The comparison; returns where it ends."""
     heads = ("Stated", "condition", "typ (limits)", "fitted", "95 % interval", "off", "", "verdict")
-    _row(figure, top, heads, _CHECK_PLACES, fontweight="bold")
-    _rule(figure, top - 0.004, 0.395, _RIGHT)
+    _row(figure, top, heads, _CHECK_PLACES, weight="bold")
+    _rule(figure, top - 0.004, 0.385, _RIGHT)
     y = top - 0.0035
     for s in shown_checks(model):
         y -= _LINE
@@ -224,8 +222,8 @@ def _stated(s: Shown) -> str:
 
 def _draw_notices(figure: Figure, model: FittedModel, top: float, bottom: float) -> None:
     """As many notices as there is room for; the command shows them all."""
-    _row(figure, top, ("Notices",), ((0.395, "left"),), fontweight="bold")
-    _rule(figure, top - 0.004, 0.395, _RIGHT)
+    _row(figure, top, ("Notices",), ((0.385, "left"),), weight="bold")
+    _rule(figure, top - 0.004, 0.385, _RIGHT)
     y, shown = top - 0.0035, 0
     for notice in model.notices:
         lines = textwrap.wrap(_shortened(notice.text, 240), 112)
@@ -234,12 +232,12 @@ def _draw_notices(figure: Figure, model: FittedModel, top: float, bottom: float)
         for k, line in enumerate(lines):
             y -= _LINE * 0.9
             text = ("\N{EN DASH} " if k == 0 else "   ") + line
-            figure.text(0.395, y, text, fontsize=5.6, va="baseline", color="0.2")
+            figure.text(0.385, y, text, fontsize=5.6, va="baseline", color="0.2")
         shown += 1
     left = len(model.notices) - shown
     if left or not model.notices:
         text = f"and {left} more, in model.json" if left else "none"
-        figure.text(0.395, y - _LINE * 0.9, text, fontsize=5.6, va="baseline", color="0.4")
+        figure.text(0.385, y - _LINE * 0.9, text, fontsize=5.6, va="baseline", color="0.4")
 
 
 def _draw_cautions(figure: Figure) -> None:

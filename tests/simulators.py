@@ -42,11 +42,11 @@ def ngspice(deck, folder, *, columns, timeout=120, allow_warnings=False):
         The scale (time, frequency or the swept source), then the vectors; complex ones as two columns each.
     """
     output = folder / "out.txt"
-    control = f".control\nset wr_singlescale\nset numdgt=12\nrun\nwrdata {output.name} {' '.join(columns)}\nquit\n.endc\n"
+    wanted = " ".join(columns)
+    control = f".control\nset wr_singlescale\nset numdgt=12\nrun\nwrdata {output.name} {wanted}\nquit\n.endc\n"
     (folder / "deck.cir").write_text(deck.rstrip() + "\n" + control + ".end\n", encoding="ascii")
-    result = subprocess.run(
-        [required("ngspice"), "-b", "deck.cir"], cwd=folder, capture_output=True, text=True, timeout=timeout, check=False
-    )
+    command = [required("ngspice"), "-b", "deck.cir"]
+    result = subprocess.run(command, cwd=folder, capture_output=True, text=True, timeout=timeout, check=False)
     said = result.stdout + result.stderr
     assert output.exists(), said[-2000:]
     if not allow_warnings:

@@ -25,7 +25,8 @@ _WORSE = 1.25
 _OUTPUT_WIDENINGS = (1.0, 4.0, 12.0, 36.0, 100.0)
 
 #: What is assumed of temperature laws that no curve given shows. Threshold: over ten datasheets -2.6 to
-#: -10 mV/C. Gain factor: mobility that phonons limit, T^-1.5. Drain resistance: RDS(on) at 150 C over 25 C is 2.3 to 2.4
+#: -10 mV/C. Gain factor: mobility that phonons limit, T^-1.5. Drain resistance: RDS(on) at 150 C over 25 C is 2.3
+#: to 2.4
 #: for superjunction parts, 1.2 to 1.9 for silicon carbide ones.
 _ASSUMED_LAWS = {"vth_tc": -6e-3, "k_exponent": 1.5, "rd_exponent": 2.0}
 #: Silicon's and silicon carbide's band gap [V]: what the activation energy is taken as where no hot curve shows it.

@@ -133,9 +133,7 @@ def csv_table(data: bytes, file: str, problems: Problems) -> CsvTable | None:
         factor = 1.0 if name.lower() == RATIO else _factor(name, figure)
         texts = tuple(cells[position] for _, cells in table)
         values = np.array([rows.number(line, name, cells[position]) for line, cells in table], dtype=float)
-        column = CsvColumn(
-            header=name, figure=figure, base=base, factor=factor, values=values * factor, texts=texts
-        )
+        column = CsvColumn(header=name, figure=figure, base=base, factor=factor, values=values * factor, texts=texts)
         _judge_sizes(column, [line for line, _ in table], file, problems)
         columns[figure.symbol] = column
     return CsvTable(
@@ -143,9 +141,7 @@ def csv_table(data: bytes, file: str, problems: Problems) -> CsvTable | None:
         header_line=header_line,
         lines=np.array([line for line, _ in table], dtype=np.int64),
         rows_whole=rows_whole,
-        header_whole=all(
-            figure is not None or not name for name, figure in zip(header, figures, strict=True)
-        ),
+        header_whole=all(figure is not None or not name for name, figure in zip(header, figures, strict=True)),
     )
 
 
@@ -166,9 +162,7 @@ def _lines(text: str, file: str, problems: Problems) -> list[tuple[int, str]] | 
             )
             return None
         if len(found) > MAX_ROWS:
-            problems.add(
-                file, f"more than {MAX_ROWS} rows", "expected the points of a few curves", line=number
-            )
+            problems.add(file, f"more than {MAX_ROWS} rows", "expected the points of a few curves", line=number)
             return None
         found.append((number, content))
     if not found:
@@ -232,11 +226,7 @@ class _Rows:
                 self._file,
                 f"{count} {'cell' if count == 1 else 'cells'} in {quoted(text)}",
                 f"expected {len(header)} as in the header; {hint}; "
-                + (
-                    "where decimals are written with a comma, separate columns by semicolons; "
-                    if commas
-                    else ""
-                )
+                + ("where decimals are written with a comma, separate columns by semicolons; " if commas else "")
                 + "leave a cell blank where no point was clicked",
                 line=line,
             )
@@ -380,12 +370,8 @@ def _judge_sizes(column: CsvColumn, lines: Sequence[int], file: str, problems: P
             wrong = np.abs(column.values) > limits.largest
             if positive:
                 wrong |= column.values < limits.smallest
-    low, high = (
-        f"{end:g} C" if signed else engineering(end, column.base) for end in (limits.smallest, limits.largest)
-    )
-    expected = f"expected {limits.noun} " + (
-        f"from {low} to {high}" if signed or positive else f"up to {high}"
-    )
+    low, high = (f"{end:g} C" if signed else engineering(end, column.base) for end in (limits.smallest, limits.largest))
+    expected = f"expected {limits.noun} " + (f"from {low} to {high}" if signed or positive else f"up to {high}")
     for row in np.flatnonzero(wrong).tolist():
         problems.add(
             file,

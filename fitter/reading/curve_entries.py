@@ -108,9 +108,7 @@ class CurveEntry:
     assumed: tuple[str, ...]
 
 
-def curve_entry(
-    table: TomlTable, *, errors: ReadingErrors, stated: StatedConditions, reverse: bool
-) -> CurveEntry:
+def curve_entry(table: TomlTable, *, errors: ReadingErrors, stated: StatedConditions, reverse: bool) -> CurveEntry:
     """Read a curve's entry; what is wrong is noted in the table's problems.
 
     Parameters
@@ -128,9 +126,7 @@ def curve_entry(
     quantity = None if text is None else Quantity(text)
     file = _file(table)
     axes = {key: axis for key in ("x_axis", "y_axis") if (axis := _axis(table, key)) is not None}
-    own = ReadingErrors(
-        point=share(table, "point_error", errors.point), axis=share(table, "axis_error", errors.axis)
-    )
+    own = ReadingErrors(point=share(table, "point_error", errors.point), axis=share(table, "axis_error", errors.axis))
     assumed: list[str] = []
     conditions = _conditions(table, quantity, stated, reverse, assumed)
     load = _load(table, quantity, stated, assumed)
@@ -150,9 +146,7 @@ def curve_entry(
 
 def share(table: TomlTable, key: str, default: float) -> float:
     """Read a reading error as a share of an axis' length, or the default."""
-    expected = (
-        f"expected a share of the axis' length from {_SMALLEST_SHARE:g} to {_LARGEST_SHARE:g}, such as 0.003"
-    )
+    expected = f"expected a share of the axis' length from {_SMALLEST_SHARE:g} to {_LARGEST_SHARE:g}, such as 0.003"
     value = table.number(key, expected)
     if value is None:
         return default
@@ -247,9 +241,7 @@ def _conditions(
     return found
 
 
-def _assumed(
-    table: TomlTable, condition: Condition, stated: StatedConditions, assumed: list[str]
-) -> float | None:
+def _assumed(table: TomlTable, condition: Condition, stated: StatedConditions, assumed: list[str]) -> float | None:
     """Take a condition that the curve does not give from the table, or by default."""
     figure = condition.figure
     if condition.default is not None:
@@ -268,9 +260,7 @@ def _assumed(
     return value
 
 
-def _load(
-    table: TomlTable, quantity: Quantity | None, stated: StatedConditions, assumed: list[str]
-) -> Load | None:
+def _load(table: TomlTable, quantity: Quantity | None, stated: StatedConditions, assumed: list[str]) -> Load | None:
     load = load_of(table)
     if quantity is None:
         return None

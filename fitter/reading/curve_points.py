@@ -54,9 +54,7 @@ class Points:
     y_texts: tuple[str, ...]
 
 
-def curve_points(
-    table: CsvTable, quantity: Quantity, file: str, problems: Problems, *, reverse: bool
-) -> Points | None:
+def curve_points(table: CsvTable, quantity: Quantity, file: str, problems: Problems, *, reverse: bool) -> Points | None:
     """Find the points of a curve, or None where they cannot be had; the problems are noted.
 
     Parameters
@@ -132,9 +130,7 @@ def curve_points(
     )
 
 
-def _column(
-    table: CsvTable, figure: Figure, quantity: Quantity, file: str, problems: Problems
-) -> CsvColumn | None:
+def _column(table: CsvTable, figure: Figure, quantity: Quantity, file: str, problems: Problems) -> CsvColumn | None:
     column = table.columns.get(figure.symbol)
     # Where a column name was not understood, that is the complaint already.
     if column is None and table.header_whole:
@@ -142,8 +138,7 @@ def _column(
         problems.add(
             file,
             f"no column of the {figure.meaning}; the columns are {there}",
-            f"expected a column such as '{figure.key}', which the {quantity} curve takes; add it, or name "
-            "another file",
+            f"expected a column such as '{figure.key}', which the {quantity} curve takes; add it, or name another file",
             line=table.header_line,
         )
     return column
@@ -173,8 +168,7 @@ def _upright(
             problems.add(
                 file,
                 "most values are negative",
-                f"expected the {figure.meaning} above zero; for a p-channel part, say so in [part]: "
-                'channel = "p"',
+                f'expected the {figure.meaning} above zero; for a p-channel part, say so in [part]: channel = "p"',
                 line=int(table.lines[rows[0]]),
                 place=column.header,
             )

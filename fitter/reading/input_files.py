@@ -36,9 +36,7 @@ _LONGEST_PATH = 200
 _MOST_NAMES = 500
 
 # Absent on Windows, where there is nothing to guard against in this way.
-_OPEN_FLAGS = (
-    os.O_RDONLY | getattr(os, "O_NOFOLLOW", 0) | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0)
-)
+_OPEN_FLAGS = os.O_RDONLY | getattr(os, "O_NOFOLLOW", 0) | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0)
 
 _CONTROL_CHARACTER = re.compile(r"[^\t\r\n -\x7e\x80-\U0010ffff]")
 
@@ -190,9 +188,7 @@ def decoded(data: bytes, file: str, problems: Problems) -> str | None:
         problems.add(file, "this is text in UTF-16", expected, line=1)
         return None
     if data.startswith(b"PK\x03\x04"):
-        problems.add(
-            file, "this is a spreadsheet or archive", "expected plain text; export it as CSV", line=1
-        )
+        problems.add(file, "this is a spreadsheet or archive", "expected plain text; export it as CSV", line=1)
         return None
     try:
         text = data.decode("utf-8-sig")
@@ -204,9 +200,7 @@ def decoded(data: bytes, file: str, problems: Problems) -> str | None:
     control = _CONTROL_CHARACTER.search(text)
     if control:
         line = text.count("\n", 0, control.start()) + 1
-        problems.add(
-            file, f"the control character {quoted(control[0])}: this is no text", expected, line=line
-        )
+        problems.add(file, f"the control character {quoted(control[0])}: this is no text", expected, line=line)
         return None
     return text
 

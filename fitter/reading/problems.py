@@ -92,7 +92,5 @@ class Problems:
         for file, problems in self._by_file.items():
             shown += sorted(problems, key=lambda problem: problem.line or 0)
             if more := self._more[file]:
-                shown.append(
-                    Problem(file=file, found=f"{more} more problems", expected="mend those above first")
-                )
+                shown.append(Problem(file=file, found=f"{more} more problems", expected="mend those above first"))
         return PartFolderError(shown)

@@ -235,12 +235,8 @@ CURVES: Mapping[Quantity, CurveSchema] = {
     Quantity.CISS: CurveSchema(x=_X_VDS, y=_Y_CISS, conditions=_CAPACITANCE, title="ciss"),
     Quantity.COSS: CurveSchema(x=_X_VDS, y=_Y_COSS, conditions=_CAPACITANCE, title="coss"),
     Quantity.CRSS: CurveSchema(x=_X_VDS, y=_Y_CRSS, conditions=_CAPACITANCE, title="crss"),
-    Quantity.TRANSFER: CurveSchema(
-        x=_X_VGS, y=_Y_ID, conditions=(Condition(figure=_V_DS), _AT_ROOM), title="transfer"
-    ),
-    Quantity.OUTPUT: CurveSchema(
-        x=_X_VDS, y=_Y_ID, conditions=(Condition(figure=_V_GS), _AT_ROOM), title="output"
-    ),
+    Quantity.TRANSFER: CurveSchema(x=_X_VGS, y=_Y_ID, conditions=(Condition(figure=_V_DS), _AT_ROOM), title="transfer"),
+    Quantity.OUTPUT: CurveSchema(x=_X_VDS, y=_Y_ID, conditions=(Condition(figure=_V_GS), _AT_ROOM), title="output"),
     Quantity.GATE_CHARGE: CurveSchema(
         x=_X_QG,
         y=_X_VGS,

@@ -50,9 +50,7 @@ def toml_document(text: str, file: str, problems: Problems) -> TomlTable | None:
     # The parser's time grows with the square of a key's parts, so a line must not be endless.
     for number, line in enumerate(lines, start=1):
         if len(line) > MAX_LINE:
-            problems.add(
-                file, f"a line of {len(line)} characters", f"expected at most {MAX_LINE}", line=number
-            )
+            problems.add(file, f"a line of {len(line)} characters", f"expected at most {MAX_LINE}", line=number)
             return None
     try:
         values = tomllib.loads(text)
@@ -264,9 +262,7 @@ class TomlTable:
             typ = self.figure(figure, key, factor, reverse=reverse)
             return None if typ is None else Stated(typ=typ)
         inner = self._inner(value, key)
-        expected = (
-            f"expected one or more of min, typ and max, as in {{ typ = 3.4, max = 4.0 }} ({figure.meaning})"
-        )
+        expected = f"expected one or more of min, typ and max, as in {{ typ = 3.4, max = 4.0 }} ({figure.meaning})"
         if not value:
             self.report_value(key, value, expected)
             return None

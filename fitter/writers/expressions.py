@@ -1,68 +1,59 @@
 """The model's equations as expressions of a circuit simulator.
 
-Only min, max, abs, exp and log (natural) are used, which every SPICE-compatible simulator spells alike. No argument of log
-is below about 1 and none of exp above a few tens, whatever voltages a simulator tries on its way to a solution. Expressions have
-a space wherever a line may end, and nowhere else.
+Only min, max, abs, exp and log (natural) are used, which every SPICE-compatible simulator spells alike. No argument of
+log is below one or so and none of exp is large, whatever voltages a simulator tries on its way to a solution.
+Expressions have a space wherever a line may end, and nowhere else.
 """
 
 from __future__ import annotations
-
-import numpy as np
 
 from fitter.models import capacitance as cap
 from fitter.models.capacitance import Junction, Shield
 from fitter.models.channel import Channel
 from fitter.models.smooth import softplus
 from fitter.models.transistor import Transistor
-from fitter.writers.netlist_text import number, signed
+from fitter.writers.netlist_text import number, scalar, signed
 
 __all__ = ["channel_current", "drain_source_charge", "gate_drain_charge", "gate_source_charge"]
 
-#: A channel-length modulation this small [1/V] changes no current by as much as 1e-6 below 1000 V.
+#: A channel-length modulation this small [1/V] changes a current by 1e-6 of itself at 1000 V.
 _NO_MODULATION = 1e-9
 
 
 def _softplus(x: str, w: float) -> str:
-    """W ln(1 + exp(x/w)) of an expression that is a sum, in the form that cannot overflow."""
+    """Softplus w ln(1 + exp(x/w)) in the form that cannot overflow."""
     return f"(max({x}, 0) + {number(w)} * log(1 + exp(-abs({x}) / {number(w)})))"
 
 
-def _over(v: str, v_th: float) -> str:
-    """A voltage less the threshold."""
-    return f"{v} {signed(-v_th)}"
-
-
 def _shielded_voltage(v: str, shield: Shield) -> str:
-    """V - sp(V-Vs; ws) + sp(-Vs; ws) for a share behind a shield.
+    """Voltage over a share behind a shield, V - sp(V-Vs; ws) + sp(-Vs; ws).
 
     Written as min(V, Vs) - ws ln(1 + exp(-|V-Vs|/ws)) + sp(-Vs; ws): no large numbers cancel.
     """
-    v_s, w = float(np.asarray(shield.v)), float(shield.width)
+    v_s, w = scalar(shield.v), scalar(shield.width)
     bend = f"{number(w)} * log(1 + exp(-abs({v} {signed(-v_s)}) / {number(w)}))"
-    return f"min({v}, {number(v_s)}) - {bend} {signed(float(softplus(-v_s, w)))}"
+    return f"min({v}, {number(v_s)}) - {bend} {signed(scalar(softplus(-v_s, w)))}"
 
 
 def _junction_charge(v: str, j: Junction, unit: float) -> str:
-    """Charge of a junction at an expression that is never negative, over a unit capacitance [V]."""
-    rest_of_m = 1.0 - float(np.asarray(j.m))
-    scale = float(np.asarray(j.c_0)) * float(np.asarray(j.phi)) / rest_of_m / unit
-    terms, share = [], 1.0
+    """Charge of a junction over a unit capacitance, at an expression that is never negative."""
+    phi, rest_of_m = scalar(j.phi), 1.0 - scalar(j.m)
+    scale = scalar(j.c_0) * phi / rest_of_m / unit
+    voltages, share = [], 1.0
     for shield in j.shields:
-        terms.append((share * float(np.asarray(shield.s)), _shielded_voltage(v, shield)))
-        share *= 1.0 - float(np.asarray(shield.s))
-    terms.append((share, v))
-    constant = float(np.asarray(j.c_f)) / unit
-    parts = [f"{number(constant)} * {v}"] if constant > 0.0 else []
-    parts += [
-        f"{number(part * scale)} * (exp({number(rest_of_m)} * log(1 + ({u}) / {number(float(np.asarray(j.phi)))})) - 1)"
-        for part, u in terms
-        if part > 0.0
-    ]
-    return " + ".join(parts) or "0"
+        voltages.append((share * scalar(shield.s), _shielded_voltage(v, shield)))
+        share *= 1.0 - scalar(shield.s)
+    voltages.append((share, v))
+    terms = [f"{number(scalar(j.c_f) / unit)} * {v}"]
+    for part, u in voltages:
+        if part > 0.0:
+            power = f"exp({number(rest_of_m)} * log(1 + ({u}) / {number(phi)}))"
+            terms.append(f"{number(part * scale)} * ({power} - 1)")
+    return " + ".join(terms)
 
 
 def _split_charge(v: str, c_below: float, j: Junction, unit: float) -> str:
-    """A junction's charge above 0 V, a constant capacitance's below."""
+    """Charge of a junction above 0 V, of a constant capacitance below."""
     return f"{number(c_below / unit)} * min({v}, 0) + {_junction_charge(f'max({v}, 0)', j, unit)}"
 
 
@@ -74,55 +65,54 @@ def gate_drain_charge(t: Transistor, v_dg: str, unit: float) -> str:
     t : Transistor
         With numbers, no arrays, for parameters.
     v_dg : str
-        Expression of the inner drain-gate voltage in n-channel polarity [V].
+        The inner drain-gate voltage in n-channel polarity [V].
     unit : float
         Unit capacitance [F].
 
     Returns
     -------
     str
-        Expression of Q/unit [V].
+        Q/unit [V].
     """
-    return _split_charge(v_dg, float(np.asarray(t.c_acc)), t.gate_drain, unit)
+    return _split_charge(v_dg, scalar(t.c_acc), t.gate_drain, unit)
 
 
 def drain_source_charge(t: Transistor, v_ds: str, unit: float) -> str:
     """Charge of the drain-source capacitance over a unit capacitance; see `gate_drain_charge`."""
-    return _split_charge(v_ds, float(np.real(cap.capacitance(0.0, t.drain_source))), t.drain_source, unit)
+    return _split_charge(v_ds, scalar(cap.capacitance(0.0, t.drain_source)), t.drain_source, unit)
 
 
 def gate_source_charge(t: Transistor, v_gs: str, unit: float) -> str:
     """Charge of the gate-source capacitance over a unit capacitance; see `gate_drain_charge`."""
-    constant, added = float(np.asarray(t.c_gs)) / unit, float(np.asarray(t.c_ch)) / unit
-    expression = f"{number(constant)} * {v_gs}"
-    if added <= 0.0:
+    v_th, w = scalar(t.channel.v_th), scalar(t.channel.w)
+    expression = f"{number(scalar(t.c_gs) / unit)} * {v_gs}"
+    if scalar(t.c_ch) <= 0.0:
         return expression
-    v_th, w = float(np.asarray(t.channel.v_th)), float(np.asarray(t.channel.w))
-    turned_on = f"{_softplus(_over(v_gs, v_th), w)} {signed(-float(softplus(-v_th, w)))}"
-    return f"{expression} + {number(added)} * ({turned_on})"
+    turned_on = f"{_softplus(f'{v_gs} {signed(-v_th)}', w)} {signed(-scalar(softplus(-v_th, w)))}"
+    return f"{expression} + {number(scalar(t.c_ch) / unit)} * ({turned_on})"
 
 
 def channel_current(c: Channel, v_gs: str, v_gd: str, v_ds: str) -> str:
     """Current of the inner channel from drain to source.
 
-    The difference of squares is written as a product, so that no digits are lost where both sides are nearly equal.
+    The difference of squares is written as a product, so that no digits are lost where both are nearly equal.
 
     Parameters
     ----------
     c : Channel
         With numbers, no arrays, for parameters.
     v_gs, v_gd, v_ds : str
-        Expressions of the inner voltages in n-channel polarity [V].
+        The inner voltages in n-channel polarity [V].
 
     Returns
     -------
     str
-        Expression of the current [A].
+        The current [A].
     """
-    v_th, w, lam = (float(np.asarray(x)) for x in (c.v_th, c.w, c.lam))
-    source_side, drain_side = (_softplus(_over(v, v_th), w) for v in (v_gs, v_gd))
+    v_th, w, lam = scalar(c.v_th), scalar(c.w), scalar(c.lam)
+    source_side, drain_side = (_softplus(f"{v} {signed(-v_th)}", w) for v in (v_gs, v_gd))
     product = f"({source_side} - {drain_side}) * ({source_side} + {drain_side})"
-    current = f"{number(0.5 * float(np.asarray(c.k)))} * {product}"
+    current = f"{number(0.5 * scalar(c.k))} * {product}"
     if lam < _NO_MODULATION:
         return current
     return f"{current} * (1 + {number(lam)} * abs({v_ds}))"

@@ -12,12 +12,14 @@ __all__ = ["header"]
 _TABLE_MARK, _EXPECTED_MARK = " (table)", " (expected)"
 
 _ABSTOL = (
-    "Circuits of amperes need ABSTOL=1e-9 among the simulator's options. At the usual default of 1e-12 A the rounding noise of "
+    "Circuits of amperes need ABSTOL=1e-9 among the simulator's options. At the usual default of 1e-12 A the "
+    "rounding noise of "
     "milliohm resistors at tens of volts exceeds the tolerance, and the time step collapses, with any transistor model."
 )
 
 _CAUTIONS = (
-    "The model follows typical curves. Typical values are no limits: parts scatter around them, and ratings are in the datasheet.",
+    "The model follows typical curves. Typical values are no limits: parts scatter around them, and ratings are "
+    "in the datasheet.",
     "Safe operating area, avalanche, short circuit and self-heating are not in it.",
     "Such circuits store energy and carry voltages that injure or kill, also after they are switched off. "
     "A simulation shows neither that a circuit is safe nor that it works: verify on the bench.",

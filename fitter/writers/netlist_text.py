@@ -6,18 +6,36 @@ import re
 import textwrap
 import unicodedata
 
-__all__ = ["COMMENT_WIDTH", "comment", "harmless", "number", "signed", "statement"]
+import numpy as np
+from numpy.typing import ArrayLike
+
+from fitter.errors import OutputError
+
+__all__ = ["comment", "harmless", "number", "scalar", "signed", "statement"]
 
 #: Lines stay below 80 characters.
 _LINE_WIDTH = 79
 _COMMENT_MARK = "* "
-#: Characters that fit into one line of a comment.
-COMMENT_WIDTH = _LINE_WIDTH - len(_COMMENT_MARK)
 
 #: All that free text may contain; braces, quotes, backslashes, semicolons and the like have a meaning somewhere.
 _FORBIDDEN = re.compile(r"[^A-Za-z0-9 ,.:;'^()/%=+_-]")
 #: A word that looks like a simulator's command.
 _LEADING_DOTS = re.compile(r"(?<!\S)\.+(?=[A-Za-z])")
+
+
+def scalar(value: ArrayLike) -> float:
+    """A parameter as one plain number.
+
+    Parameters
+    ----------
+    value : array_like
+        A number, or an array without dimensions.
+
+    Returns
+    -------
+    float
+    """
+    return float(np.asarray(value))
 
 
 def number(value: float) -> str:
@@ -32,11 +50,18 @@ def number(value: float) -> str:
     -------
     str
 
+    Raises
+    ------
+    OutputError
+        Where the value is not finite.
+
     Examples
     --------
     >>> number(0.1), number(-2.5e-9), number(1 / 3)
     ('0.1', '-2.5e-09', '0.3333333333')
     """
+    if not np.isfinite(value):
+        raise OutputError(f"a parameter of the model leads to {value}, which no simulator takes")
     return f"{value:.10g}"
 
 
@@ -83,7 +108,7 @@ def statement(text: str) -> str:
 
 
 def harmless(text: str) -> str:
-    """Free text as plain ASCII on one line, without any character that a simulator could take for more than text.
+    r"""Free text as plain ASCII on one line, without any character that a simulator could take for more than text.
 
     Letters with accents lose them; what else is not allowed becomes a question mark; dots before a word go.
 
@@ -98,7 +123,7 @@ def harmless(text: str) -> str:
 
     Examples
     --------
-    >>> harmless("f\\u00fcr 48 V\\n.control\\nshell {rm}\\\\")
+    >>> harmless("f\u00fcr 48 V\n.control\nshell {rm}\\")
     'fur 48 V control shell ?rm??'
     """
     plain = "".join(c for c in unicodedata.normalize("NFKD", text) if not unicodedata.combining(c))
@@ -128,5 +153,10 @@ def comment(text: str = "", indent: str = "") -> str:
     >>> comment()
     '*'
     """
-    lines = textwrap.wrap(harmless(text), COMMENT_WIDTH, subsequent_indent=indent, break_on_hyphens=False)
+    lines = textwrap.wrap(
+        harmless(text),
+        _LINE_WIDTH - len(_COMMENT_MARK),
+        subsequent_indent=indent,
+        break_on_hyphens=False,
+    )
     return "\n".join(_COMMENT_MARK + line for line in lines) if lines else _COMMENT_MARK.rstrip()

@@ -66,8 +66,8 @@ def measure(device, part, seed, use):
     row["dV %"] = 100 * float(np.sqrt(np.mean((d / v_true) ** 2)))
     worst = {}
     points = [(1.0, 1.0, 1.0), (0.6, 1, 1), (1.4, 1, 1), (1, 0.4, 1), (1, 1.6, 1), (1, 1, 1.2)]
-    for k, (a, b, c) in enumerate(points):
-        where = dict(v_dd=a * gc.v_dd, i_d=b * gc.i_d, v_gs=c * gc.v_gs)
+    for a, b, c in points:
+        where = {"v_dd": a * gc.v_dd, "i_d": b * gc.i_d, "v_gs": c * gc.v_gs}
         true = device.read_gate_charge(**where, load=gc.load)
         r = gate_charge_curve(t, OperatingPoint(**where, load=gc.load)).reading
         e = {

@@ -1,0 +1,137 @@
+"""Every curve by itself: its points, its axes, mis-clicks."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fitter.inspection.finding import Finding
+from fitter.inspection.reading import coordinates
+from fitter.part import Axis, Curve, Part, Quantity
+
+__all__ = ["inspect"]
+
+Array = NDArray[np.float64]
+
+#: Fewer points than this make a poor curve.
+_FEW = {Quantity.CISS: 8, Quantity.COSS: 8, Quantity.CRSS: 8, Quantity.TRANSFER: 5}
+#: Points may lie outside a printed axis by this share of it: reading errors of four standard deviations and more.
+_OUTSIDE = 0.02
+#: A point this many standard deviations off the line through its neighbours is a mis-click.
+_FAR = 8.0
+
+
+def inspect(part: Part) -> Iterator[Finding]:
+    """Findings on each curve's points and axes."""
+    for curve in part.curves:
+        yield from _axis(curve, curve.x, curve.x_axis, "x")
+        yield from _axis(curve, curve.y, curve.y_axis, "y")
+        yield from _spread(curve)
+        yield from _misclicks(curve)
+
+
+def _axis(curve: Curve, values: Array, axis: Axis, name: str) -> Iterator[Finding]:
+    if not axis.printed:
+        return
+    place = coordinates(values, axis)
+    start = np.log(axis.start) if axis.scale == "log" else axis.start
+    share = (place - start) / axis.length
+    outside = np.flatnonzero((share < -_OUTSIDE) | (share > 1.0 + _OUTSIDE))
+    if outside.size == 0:
+        return
+    worst = int(outside[np.argmax(np.abs(share[outside] - 0.5))])
+    many = outside.size > 0.2 * values.size
+    yield Finding(
+        rule="outside axis",
+        severity="doubtful",
+        topic=curve.name,
+        file=curve.file,
+        line=int(curve.lines[worst]),
+        found=f"{outside.size} of {values.size} points lie outside the {name} axis of {axis.start:g} to "
+        f"{axis.end:g} (SI), "
+        f"this one at {values[worst]:g}",
+        remedy="look at the axis' from, to and scale, and at the column's unit" if many else "look at the point again",
+    )
+
+
+def _spread(curve: Curve) -> Iterator[Finding]:
+    few = _FEW.get(curve.quantity, 4)
+    if curve.x.size < few:
+        yield Finding(
+            rule="few points",
+            severity="doubtful",
+            topic=curve.name,
+            file=curve.file,
+            found=f"only {curve.x.size} points",
+            remedy=f"click {few} at the least, more where the curve is steep",
+        )
+    x = coordinates(curve.x, curve.x_axis)
+    x = x[np.isfinite(x)]
+    whole = curve.quantity not in (Quantity.OUTPUT, Quantity.BODY_DIODE)  # these begin steeply and may end early
+    if whole and curve.x_axis.printed and x.size >= 2 and float(np.ptp(x)) < 0.2 * curve.x_axis.length:
+        yield Finding(
+            rule="one corner",
+            severity="doubtful",
+            topic=curve.name,
+            file=curve.file,
+            found="all points lie within a fifth of the x axis",
+            remedy="click the whole curve, or look at the axis' from, to and scale",
+        )
+
+
+def _misclicks(curve: Curve) -> Iterator[Finding]:
+    """Points that lie far off the straight line between their neighbours, in the axes' own coordinates."""
+    if curve.x.size < 7:
+        return
+    x, y = coordinates(curve.x, curve.x_axis), coordinates(curve.y, curve.y_axis)
+    good = np.isfinite(x) & np.isfinite(y)
+    x, y, lines = x[good] / curve.x_axis.length, y[good] / curve.y_axis.length, curve.lines[good]
+    if x.size < 7:
+        return
+    off = _off_line(x, y, curve.point_error)
+    usual = max(1.0, 1.4826 * float(np.median(np.abs(off))))
+    far = np.flatnonzero(np.abs(off) > _FAR * usual)
+    # A mis-click throws its neighbours off the line as well: only the farthest of a run is named.
+    for i in far:
+        near = off[max(i - 2, 0) : i + 3]
+        if np.abs(off[i]) < np.max(np.abs(near)):
+            continue
+        value = curve.y[good][i]
+        yield Finding(
+            rule="mis-click",
+            severity="doubtful",
+            topic=curve.name,
+            file=curve.file,
+            line=int(lines[i]),
+            found=f"the point ({curve.x[good][i]:g}, {value:g}) (SI) lies {abs(off[i]):.0f} standard deviations "
+            f"off its neighbours",
+            remedy=_slip(x, y, int(i), curve) or "look at the point again",
+        )
+
+
+def _slip(x: Array, y: Array, i: int, curve: Curve) -> str:
+    """Names a decade slip where it would put the point back on the line."""
+    others = np.delete(np.arange(x.size), i)
+    expected = float(np.interp(x[i], x[others], y[others])) * curve.y_axis.length
+    found = float(y[i]) * curve.y_axis.length
+    factor = float(np.exp(found - expected)) if curve.y_axis.scale == "log" else found / expected if expected else 1.0
+    for power in (-2, -1, 1, 2):
+        if factor > 0.0 and abs(np.log(factor / 10.0**power)) < 0.35:
+            return f"a decade slip: divide it by {10.0**power:g}"
+    return ""
+
+
+def _off_line(x: Array, y: Array, sigma: float) -> Array:
+    """Distance of each point from the line through the neighbours' means, in its standard deviations."""
+    off = np.zeros_like(y)
+    for i in range(1, x.size - 1):
+        left, right = max(i - 1, 0), min(i + 1, x.size - 1)
+        step = x[right] - x[left]
+        share = 0.5 if step <= 1e-9 else min(max((x[i] - x[left]) / step, 0.0), 1.0)
+        slope = (y[right] - y[left]) / max(step, sigma)
+        bend = 0.35 * abs(y[right] - y[left])  # how far a smooth curve may bend between neighbours
+        width = np.hypot(1.3 * sigma * np.hypot(1.0, min(abs(slope), 30.0)), bend)
+        off[i] = (y[i] - (y[left] + share * (y[right] - y[left]))) / width
+    return off

@@ -1,0 +1,28 @@
+"""All rules over one part."""
+
+from __future__ import annotations
+
+from fitter.inspection import capacitances, channel, clicks, gate_charge, table
+from fitter.inspection.finding import SEVERITIES, Finding
+from fitter.part import Part
+
+__all__ = ["inspect"]
+
+_SUBJECTS = (table.inspect, clicks.inspect, capacitances.inspect, channel.inspect, gate_charge.inspect)
+
+
+def inspect(part: Part) -> tuple[Finding, ...]:
+    """Judge a part's data by themselves and against each other.
+
+    Parameters
+    ----------
+    part : Part
+        As from `fitter.read_part`.
+
+    Returns
+    -------
+    tuple of Finding
+        Worst first, then by file and line; nothing is changed.
+    """
+    findings = [finding for subject in _SUBJECTS for finding in subject(part)]
+    return tuple(sorted(findings, key=lambda f: (SEVERITIES.index(f.severity), f.file, f.line or 0, f.rule)))

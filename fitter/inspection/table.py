@@ -1,0 +1,159 @@
+"""The table values among themselves."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import fields
+from itertools import pairwise
+
+from fitter.inspection.finding import Finding
+from fitter.inspection.reading import PART_FILE, typical
+from fitter.part import Part, Stated
+
+__all__ = ["inspect"]
+
+#: Rounding of table values to two or three digits (common practice, no source).
+_ROUNDING = 0.03
+
+
+def inspect(part: Part) -> Iterator[Finding]:
+    """Findings on the table values."""
+    yield from _order(part)
+    yield from _gate_charge(part)
+    yield from _output_charge(part)
+    yield from _conditions(part)
+
+
+def _finding(rule: str, severity: str, topic: str, found: str, remedy: str) -> Finding:
+    return Finding(
+        rule=rule,
+        severity=severity,
+        topic=topic,
+        file=PART_FILE,
+        found=found,
+        remedy=remedy,  # type: ignore[arg-type]
+    )
+
+
+def _order(part: Part) -> Iterator[Finding]:
+    """Min <= typ <= max of every stated value."""
+    for group in fields(part.stated):
+        values = getattr(part.stated, group.name)
+        for item in fields(values) if values is not None else ():
+            stated = getattr(values, item.name)
+            if not isinstance(stated, Stated):
+                continue
+            known = [
+                (n, v) for n, v in (("min", stated.min), ("typ", stated.typ), ("max", stated.max)) if v is not None
+            ]
+            for (low_name, low), (high_name, high) in pairwise(known):
+                if low > high:
+                    yield _finding(
+                        "order",
+                        "doubtful",
+                        f"stated.{group.name}.{item.name}",
+                        f"{low_name} {low:g} is above {high_name} {high:g} (SI)",
+                        "look at the row again: min, typ and max must rise",
+                    )
+
+
+def _gate_charge(part: Part) -> Iterator[Finding]:
+    table = part.stated.gate_charge
+    if table is None:
+        return
+    q_g, q_gs, q_gd = typical(table.q_g), typical(table.q_gs), typical(table.q_gd)
+    if q_g and q_gs and q_gd and q_gs + q_gd > q_g * (1.0 + _ROUNDING):
+        yield _finding(
+            "charge sum",
+            "doubtful",
+            "qg",
+            f"QGS + QGD = {(q_gs + q_gd) * 1e9:.3g} nC is above QG = {q_g * 1e9:.3g} nC",
+            "one of the three is from another row, or QG is stated at another VGS",
+        )
+    plateau = typical(table.v_plateau)
+    if plateau and plateau >= table.v_gs:
+        yield _finding(
+            "plateau",
+            "doubtful",
+            "v_plateau",
+            f"the plateau, {plateau:g} V, is not below VGS = {table.v_gs:g} V",
+            "one of the two is from another row",
+        )
+    capacitance = part.stated.capacitance
+    if capacitance is None:
+        return
+    c_iss, c_rss = typical(capacitance.c_iss), typical(capacitance.c_rss)
+    near = 0.5 <= capacitance.v_ds / table.v_dd <= 2.0
+    if q_gd and c_rss and near and c_rss * min(capacitance.v_ds, table.v_dd) > 1.1 * q_gd:
+        yield _finding(
+            "crss below qgd",
+            "doubtful",
+            "qgd",
+            f"Crss times VDS = {c_rss * capacitance.v_ds * 1e9:.3g} nC is above QGD = {q_gd * 1e9:.3g} nC, yet "
+            f"Crss only grows "
+            "towards low VDS",
+            "look at the units of Crss and QGD",
+        )
+    if q_gs and c_iss and plateau:
+        ratio = q_gs / (c_iss * plateau)
+        # QGS / Vplateau = Ciss(VDD): 0.98 to 1.00 on three datasheets; QG(th) = Ciss VTH within 0.84 to 1.13 on
+        # sixteen.
+        if not 0.6 <= ratio <= 1.6:
+            yield _finding(
+                "first leg",
+                "doubtful",
+                "qgs",
+                f"QGS is {ratio:.3g} times Ciss times the plateau voltage; it should be about once",
+                _power_of_ten(ratio, "QGS or Ciss"),
+            )
+
+
+def _power_of_ten(factor: float, what: str) -> str:
+    for power in (-3, -2, -1, 1, 2, 3):
+        if 0.7 <= factor / 10.0**power <= 1.4:
+            return f"a factor of about {10.0**power:g}: look at the unit of {what}"
+    return f"look at {what} and the plateau again"
+
+
+def _output_charge(part: Part) -> Iterator[Finding]:
+    o = part.stated.output_charge
+    if o is None:
+        return
+    er, tr, q, e = typical(o.c_oss_er), typical(o.c_oss_tr), typical(o.q_oss), typical(o.e_oss)
+    if er and tr and er > tr * (1.0 + _ROUNDING):
+        yield _finding(
+            "co order",
+            "doubtful",
+            "coss_er, coss_tr",
+            f"Co(er) = {er * 1e12:.3g} pF is above Co(tr) = {tr * 1e12:.3g} pF; where Coss falls it cannot be",
+            "exchange coss_er_pF and coss_tr_pF: datasheets have printed their footnotes exchanged",
+        )
+    for what, unit, stated, implied in (
+        ("qoss", 1e9, q, None if tr is None else tr * o.v_ds),
+        ("eoss", 1e6, e, None if er is None else 0.5 * er * o.v_ds**2),
+    ):
+        if stated and implied and not 0.85 <= stated / implied <= 1.18:
+            yield _finding(
+                "co definition",
+                "doubtful",
+                what,
+                f"{what} = {stated * unit:.3g} differs from {implied * unit:.3g}, which "
+                f"Co({'tr' if what == 'qoss' else 'er'}) means at "
+                f"{o.v_ds:g} V",
+                "one of them is from another row or in another unit",
+            )
+
+
+def _conditions(part: Part) -> Iterator[Finding]:
+    """Conditions beyond the ratings."""
+    s = part.stated
+    voltages = [("stated.gate_charge vdd", s.gate_charge.v_dd, part.v_ds_max)] if s.gate_charge else []
+    voltages += [("stated.gate_charge vgs", s.gate_charge.v_gs, part.v_gs_max)] if s.gate_charge else []
+    voltages += [("stated.capacitance vds", s.capacitance.v_ds, part.v_ds_max)] if s.capacitance else []
+    voltages += [("stated.on_resistance vgs", s.on_resistance.v_gs, part.v_gs_max)] if s.on_resistance else []
+    voltages += [("stated.output_charge vds", s.output_charge.v_ds, part.v_ds_max)] if s.output_charge else []
+    for topic, value, rating in voltages:
+        if value > rating * 1.001:
+            yield _finding(
+                "rating", "doubtful", topic, f"{value:g} V is above the rating of {rating:g} V", "look at both again"
+            )

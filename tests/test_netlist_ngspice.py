@@ -1,0 +1,115 @@
+"""The emitted subcircuit in ngspice: accepted without a warning, and the tool's own curves come out of it."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from simulators import ngspice
+
+from fitter.part import Package
+
+pytestmark = pytest.mark.simulator
+
+#: Circuits of amperes need it; see the subcircuit's header.
+OPTIONS = ".options ABSTOL=1e-9\n"
+#: Nearly ideal: it clamps at a few millivolts above its supply.
+CLAMP = ".model clamp D(IS=1e-9 N=0.1)\n"
+FREE_WHEEL = ".model wheel D(IS=1e-12 RS=2m CJO=200p TT=5n)\n"
+
+
+@pytest.fixture
+def model(fitted, demo):
+    return fitted(demo, True)
+
+
+def bare(model):
+    """The model without package: a measuring bridge subtracts gate resistance and leads, too."""
+    return replace(model, part=replace(model.part, package=Package()))
+
+
+def write(model, folder):
+    (folder / "part.lib").write_text(model.subcircuit(), encoding="ascii")
+    return f"test\n.include part.lib\n{OPTIONS}"
+
+
+def swapped(model, first, second):
+    """Two nodes in the order that suits the channel's polarity."""
+    return f"{first} {second}" if model.sign > 0 else f"{second} {first}"
+
+
+@pytest.mark.parametrize("share", [0.01, 0.1, 0.4, 0.9])
+def test_capacitances_at_one_megahertz(model, tmp_path, share):
+    v_ds = model.sign * share * model.part.v_ds_max
+    begin, name, omega = write(bare(model), tmp_path), model.part.name, 2e6 * np.pi
+    drive = f"Vd d 0 DC {v_ds} AC 1\nVg g 0 0\nX1 d g 0 {name}\n.ac lin 1 1e6 1e6\n"
+    row = ngspice(begin + drive, tmp_path, columns=["i(vg)", "i(vd)"])[0]
+    c_rss, c_oss = abs(row[2]) / omega, abs(row[4]) / omega
+    drive = f"Vd d 0 DC {v_ds}\nVg g 0 DC 0 AC 1\nX1 d g 0 {name}\n.ac lin 1 1e6 1e6\n"
+    c_iss = abs(ngspice(begin + drive, tmp_path, columns=["i(vg)"])[0][2]) / omega
+    assert c_rss == pytest.approx(float(model.crss(v_ds)), rel=0.005)
+    assert c_oss == pytest.approx(float(model.coss(v_ds)), rel=0.005)
+    assert c_iss == pytest.approx(float(model.ciss(v_ds)), rel=0.005)
+
+
+def test_transfer_and_output(model, tmp_path):
+    s, name = model.sign, model.part.name
+    begin, v_gs = write(model, tmp_path), s * model.test_point().v_gs
+    for v_ds in (s * 10.0, s * 0.5):
+        sweep = f".dc Vg {0.3 * v_gs} {v_gs} {v_gs / 40}\n"
+        rows = ngspice(f"{begin}Vd d 0 {v_ds}\nVg g 0 0\nX1 d g 0 {name}\n{sweep}", tmp_path, columns=["i(vd)"])
+        expected = model.drain_current(rows[:, 0], v_ds)
+        carried = np.abs(expected) > 1e-6 * np.abs(expected).max()
+        np.testing.assert_allclose(-rows[carried, 1], expected[carried], rtol=0.005, atol=1e-6)
+
+
+@pytest.mark.parametrize("load", ["current", "resistive"])
+def test_gate_charge_by_a_constant_gate_current(model, tmp_path, load):
+    s, p = model.sign, model.test_point()
+    expected = model.gate_charge(s * p.v_dd, s * p.i_d, s * p.v_gs, load)
+    i_g = 1e-3
+    duration = expected.total / i_g
+    start = duration / 50
+    if load == "current":
+        source = f"Iload {swapped(model, 'vdd', 'd')} {p.i_d}\nDclamp {swapped(model, 'd', 'vdd')} clamp\n"
+    else:
+        source = f"Rload vdd d {p.v_dd / p.i_d}\n"
+    deck = (
+        write(bare(model), tmp_path) + CLAMP + f"Vdd vdd 0 {s * p.v_dd}\n" + source
+        + f"Ig {swapped(model, '0', 'g')} PULSE(0 {i_g} {start} 1n 1n 1 2)\nRleak g 0 1e9\n"
+        + f"X1 d g 0 {model.part.name}\n.tran {duration / 1000} {duration + start} 0 {duration / 1000}\n"
+    )  # fmt: skip
+    rows = ngspice(deck, tmp_path, columns=["v(g)"])
+    charge, v_gs = (rows[:, 0] - start) * i_g, s * rows[:, 1]
+    levels = np.linspace(0.1, 0.97, 60) * p.v_gs
+    found = np.interp(levels, np.maximum.accumulate(v_gs), charge)
+    wanted = np.interp(levels, np.abs(expected.v_gs), expected.q_g)
+    np.testing.assert_allclose(found, wanted, rtol=0.005, atol=0.0005 * expected.total)
+
+
+@pytest.mark.parametrize("r_gate", [0.5, 5.0, 50.0, 100.0])
+def test_clamped_inductive_double_pulse(model, tmp_path, r_gate):
+    s, p = model.sign, model.test_point()
+    t_switch = max((r_gate + (model.part.package.r_g or 0.0)) * 40 * float(model.ciss(s * p.v_dd)), 0.3e-6)
+    t_on = 20 * t_switch
+    inductance = p.v_dd * t_on / p.i_d
+    gap, second = 6 * t_switch, 6 * t_switch
+    # Two pulses: the first one brings the inductor to the load's current, the second one switches that current.
+    times = [0, 1e-8, t_on, t_on + 1e-8, t_on + gap, t_on + gap + 1e-8, t_on + gap + second, t_on + gap + second + 1e-8]
+    levels = [0, 1, 1, 0, 0, 1, 1, 0]
+    pulses = " ".join(f"{t + 1e-7:.9g} {s * p.v_gs * x:.6g}" for t, x in zip(times, levels, strict=True))
+    end = times[-1] + gap
+    deck = (
+        write(model, tmp_path) + FREE_WHEEL
+        + f"Vdd vdd 0 {s * p.v_dd}\nLload vdd d {inductance} IC=0\nDwheel {swapped(model, 'd', 'vdd')} wheel\n"
+        + f"Vdrive in 0 PWL(0 0 {pulses})\nRgate in g {r_gate}\nX1 d g 0 {model.part.name}\n"
+        + f".tran {t_switch / 20} {end}\n"
+    )  # fmt: skip
+    rows = ngspice(deck, tmp_path, columns=["v(d)", "i(lload)", "v(g)"])
+    time, v_d, i_l = rows[:, 0], s * rows[:, 1], s * rows[:, 2]
+    assert time[-1] == pytest.approx(end, rel=1e-6)
+    before = np.interp(t_on, time, i_l)
+    assert before == pytest.approx(p.i_d, rel=0.15)
+    assert np.interp(t_on, time, v_d) < 0.25 * p.v_dd + 2.0  # on
+    assert np.interp(t_on + 0.9 * gap, time, v_d) > 0.9 * p.v_dd  # off, the free-wheel diode carries the current
+    assert np.interp(t_on + gap + 0.9 * second, time, v_d) < 0.25 * p.v_dd + 2.0  # on again
+    assert np.interp(end, time, v_d) > 0.9 * p.v_dd
