@@ -79,9 +79,7 @@ def shielded_trench(v, *, area, pitch, mesa, depth, doping, oxide, overlap, t_ga
     x = depth_grid(0.8 * mesa)
     for y in (np.arange(24) + 0.5) / 24:
         t_oxide = oxide[0] + (oxide[1] - oxide[0]) * y
-        c = surface_capacitance(
-            v, x, np.full_like(x, doping[0] + (doping[1] - doping[0]) * y), SILICON, t_oxide
-        )
+        c = surface_capacitance(v, x, np.full_like(x, doping[0] + (doping[1] - doping[0]) * y), SILICON, t_oxide)
         left = still_open(depleted(c, t_oxide, SILICON), 0.5 * mesa, 0.09)
         c_wall += wall * depth / 24 * c * left
         open_mesa += left / 24
@@ -93,9 +91,7 @@ def shielded_trench(v, *, area, pitch, mesa, depth, doping, oxide, overlap, t_ga
     w_body = depletion_width(np.maximum(v, 0.0), top, n_top, SILICON, v_built=0.75)
     c_body = area * mesa / pitch * open_mesa * eps / w_body
     # Trench bottoms, and used-up mesas through them, over the epitaxy
-    c_bottom = (
-        area / (oxide[1] * 1.5 / OXIDE + np.maximum(w_below, 20e-9) / eps) * (1.0 - mesa / pitch * open_mesa)
-    )
+    c_bottom = area / (oxide[1] * 1.5 / OXIDE + np.maximum(w_below, 20e-9) / eps) * (1.0 - mesa / pitch * open_mesa)
     screen = (mesa + 2.0 * oxide[0] * eps / OXIDE) / np.pi
     depth_used = depth * (1.0 - open_mesa) + w_below
     c_slot = wall * 0.25 * mesa * eps / (depth_used + 0.2 * UM) * np.exp(-depth_used / screen)
@@ -104,9 +100,7 @@ def shielded_trench(v, *, area, pitch, mesa, depth, doping, oxide, overlap, t_ga
     return c_gd, c_wall + c_body + c_bottom
 
 
-def planar_neck(
-    v, *, material, area, pitch, half, n_neck, body_depth, drift, t_gate, v_built, pads, v_flat=0.2
-):
+def planar_neck(v, *, material, area, pitch, half, n_neck, body_depth, drift, t_gate, v_built, pads, v_flat=0.2):
     """Cgd and Cds [F] of a planar cell: the gate over a neck that the bodies close as they deplete it.
 
     Parameters

@@ -119,9 +119,7 @@ def problems_of(folder: Path) -> tuple[Problem, ...]:
         assert text.isprintable(), "a message stands on one line"
         assert len(text) < 500
         assert problem.found
-        assert (
-            "expected" in problem.expected or "did you mean" in problem.expected or "mend" in problem.expected
-        )
+        assert "expected" in problem.expected or "did you mean" in problem.expected or "mend" in problem.expected
     return found
 
 

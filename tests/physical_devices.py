@@ -314,9 +314,7 @@ class Device:
             i_run = np.full(inner.shape, float(i_d))
         else:
             r_load = v_dd / i_d
-            full = float(
-                brentq(lambda v: float(self.drain_current(v_gs, v)) - (v_dd - v) / r_load, 0.0, v_dd)
-            )
+            full = float(brentq(lambda v: float(self.drain_current(v_gs, v)) - (v_dd - v) / r_load, 0.0, v_dd))
             early = np.geomspace(1e-6 * i_d, 0.5 * i_d, points // 2)
             v_late = np.geomspace(0.5 * v_dd, full, points // 2)[1:]
             i_run = np.concatenate([early, (v_dd - v_late) / r_load])

@@ -98,9 +98,7 @@ def _capacitances(page, device, sheet):
     for name, c in (("ciss", device.c_iss), ("coss", device.c_oss), ("crss", device.c_rss)):
         file = "capacitance" if sheet.shared_file else name
         columns = ("vds_V", f"{name}_pF")
-        page.add(
-            name, file, columns, (v_ds, c(v_ds)), sheet.c_axes, sheet.c_points, vgs_V="0", frequency_MHz="1"
-        )
+        page.add(name, file, columns, (v_ds, c(v_ds)), sheet.c_axes, sheet.c_points, vgs_V="0", frequency_MHz="1")
 
 
 def _channel(page, device, sheet):
@@ -146,6 +144,4 @@ def _temperature(page, device, sheet):
         id_A=sheet.i_d, vgs_V=sheet.v_gs,
     )  # fmt: skip
     v_th, columns = device.v_gs_th(sheet.i_th, t_j), ("tj_C", "vgs_th_V")
-    page.add(
-        "vgs_th_temperature", "vgs_th_temperature", columns, (t_j, v_th), sheet.v_th_axes, 12, id_A=sheet.i_th
-    )
+    page.add("vgs_th_temperature", "vgs_th_temperature", columns, (t_j, v_th), sheet.v_th_axes, 12, id_A=sheet.i_th)

@@ -36,9 +36,7 @@ def test_the_folders_are_what_their_script_writes(tmp_path):
         names = {file.name for file in folder.iterdir()}
         assert names == {file.name for file in kept.iterdir() if file.is_file()}
         for name in names:
-            assert (folder / name).read_text("utf-8") == (kept / name).read_text("utf-8"), (
-                f"{folder.name}/{name}"
-            )
+            assert (folder / name).read_text("utf-8") == (kept / name).read_text("utf-8"), f"{folder.name}/{name}"
 
 
 @pytest.mark.parametrize("folder", DEMO_PARTS)
@@ -68,9 +66,7 @@ def test_the_p_channel_part_is_printed_with_its_signs():
 def test_clicks_are_off_by_the_stated_shares_of_the_axes():
     device = ALL["shielded_150v"]()
     curve = next(
-        c
-        for c in digitization.printed_curves(device)
-        if c.quantity == "output" and "vgs_V = 5.5" in c.conditions
+        c for c in digitization.printed_curves(device) if c.quantity == "output" and "vgs_V = 5.5" in c.conditions
     )
     flat = replace(curve, x=np.linspace(0.2, 3.8, 50), y=np.full(50, 80.0))
     common, single = [], []
@@ -89,9 +85,7 @@ def test_without_errors_the_clicks_lie_on_the_curve_and_on_the_page():
         x, y = digitization.click(curve, np.random.default_rng(1), point=0.0, axis=0.0)
         assert x.size >= curve.points - 2
         u, v = curve.x_axis.place(curve.x), curve.y_axis.place(curve.y)
-        away = np.hypot(
-            np.subtract.outer(curve.x_axis.place(x), u), np.subtract.outer(curve.y_axis.place(y), v)
-        )
+        away = np.hypot(np.subtract.outer(curve.x_axis.place(x), u), np.subtract.outer(curve.y_axis.place(y), v))
         assert np.max(np.min(away, axis=1)) < 0.03
         assert np.all(curve.x_axis.holds(x) & curve.y_axis.holds(y))
 
@@ -99,9 +93,7 @@ def test_without_errors_the_clicks_lie_on_the_curve_and_on_the_page():
 def test_part_of_a_folder_leaves_the_rest_as_it_was(tmp_path):
     device = ALL["trench_30v"]()
     whole = digitization.write_part_folder(device, tmp_path / "whole", 5)
-    less = digitization.write_part_folder(
-        device, tmp_path / "less", 5, include={"crss", "transfer"}, stated=False
-    )
+    less = digitization.write_part_folder(device, tmp_path / "less", 5, include={"crss", "transfer"}, stated=False)
     assert {f.name for f in less.iterdir()} == {
         "part.toml",
         "crss.csv",
@@ -139,9 +131,7 @@ def test_surface_capacitance_between_its_limits():
     """Oxide; with eps/L_D in series at flat band; Cox/sqrt(1 + 2V/V0) depleted (Sze & Ng, ch. 4)."""
     t, n = 50e-9, 2e22
     c_ox, u_t, eps = OXIDE / t, physics.thermal_voltage(25.0), SILICON.permittivity
-    accumulated, flat, deep = physics.surface_capacitance(
-        np.array([-5.0, 0.0, 12.0]), *uniform(n), SILICON, t
-    )
+    accumulated, flat, deep = physics.surface_capacitance(np.array([-5.0, 0.0, 12.0]), *uniform(n), SILICON, t)
     assert 0.98 * c_ox < accumulated < c_ox, "what is missing is the accumulation layer's own thickness"
     debye = np.sqrt(eps * u_t / (Q * n))
     assert flat == pytest.approx(1.0 / (1.0 / c_ox + debye / eps), rel=0.01)
@@ -281,9 +271,7 @@ def test_gate_charge_is_in_proportion_as_on_datasheets(name):
     """QGS = Ciss(VDD) Vplateau, nearly; the last leg 1.2 to 2.3 times Ciss: read off published tables."""
     device = ALL[name]()
     sheet = sheet_of(device)
-    reading = device.read_gate_charge(
-        sheet.v_dd, sheet.i_d, sheet.v_gs, v_th=float(device.v_gs_th(sheet.i_th))
-    )
+    reading = device.read_gate_charge(sheet.v_dd, sheet.i_d, sheet.v_gs, v_th=float(device.v_gs_th(sheet.i_th)))
     c_iss = float(device.c_iss(sheet.v_dd))
     assert 0.9 < reading.q_gs / (c_iss * reading.v_plateau) < 1.05
     curve = device.gate_charge(sheet.v_dd, sheet.i_d, sheet.v_gs)

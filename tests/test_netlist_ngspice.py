@@ -14,7 +14,7 @@ pytestmark = pytest.mark.simulator
 OPTIONS = ".options ABSTOL=1e-9\n"
 #: Nearly ideal: it clamps at a few millivolts above its supply.
 CLAMP = ".model clamp D(IS=1e-9 N=0.1)\n"
-FREE_WHEEL = ".model wheel D(IS=1e-12 RS=2m CJO=200p TT=5n)\n"
+FREE_WHEEL = ".model wheel D(IS=1e-12 RS=2m CJO=200p)\n"
 
 
 @pytest.fixture

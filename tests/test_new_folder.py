@@ -49,9 +49,7 @@ def test_what_is_written(tmp_path):
 def test_others_may_read_it_as_they_may_other_folders(tmp_path):
     (tmp_path / "usual").mkdir()
     write_new_folder(tmp_path / "new")
-    assert stat.S_IMODE((tmp_path / "new").stat().st_mode) == stat.S_IMODE(
-        (tmp_path / "usual").stat().st_mode
-    )
+    assert stat.S_IMODE((tmp_path / "new").stat().st_mode) == stat.S_IMODE((tmp_path / "usual").stat().st_mode)
 
 
 def test_reading_it_says_what_to_fill_in(tmp_path):
@@ -170,9 +168,7 @@ def test_a_file_in_the_way(tmp_path):
 
 
 def test_no_folder_above(tmp_path):
-    with pytest.raises(
-        OutputError, match=r"there is no folder '.*nowhere' to write it into; make that first"
-    ):
+    with pytest.raises(OutputError, match=r"there is no folder '.*nowhere' to write it into; make that first"):
         write_new_folder(tmp_path / "nowhere" / "new")
     assert names(tmp_path) == []
 

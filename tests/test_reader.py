@@ -288,9 +288,7 @@ def test_every_quantity(tmp_path):
 
 def test_normalised_on_resistance_stays_a_ratio(tmp_path):
     append = curve("rds_on_temperature", "r.csv", "id_A = 50", "vgs_V = 10")
-    part = read_part(
-        make_folder(tmp_path, append=append, files={"r.csv": "tj_C,rds_on_ratio\n25,1\n150,1.8\n"})
-    )
+    part = read_part(make_folder(tmp_path, append=append, files={"r.csv": "tj_C,rds_on_ratio\n25,1\n150,1.8\n"}))
     found = only(part, Quantity.RDS_ON_TEMPERATURE)
     assert found.y_unit == ""
     assert found.y.tolist() == [1.0, 1.8]
@@ -337,9 +335,7 @@ def test_conditions_are_taken_from_the_table_with_a_notice(tmp_path):
     assert (r_ds_on.v_gs, r_ds_on.i_d) == (10.0, 30.0)
     assert only(part, Quantity.VGS_TH_TEMPERATURE).i_d == pytest.approx(250e-6)
     assert len(part.notices) == 6
-    assert "gate charge: The curve's 'vdd' is not given; 40 V is taken from stated.gate_charge." in texts(
-        part
-    )
+    assert "gate charge: The curve's 'vdd' is not given; 40 V is taken from stated.gate_charge." in texts(part)
     assert "vgs_th(Tj): The curve's 'id' is not given; 250 uA is taken from stated.threshold." in texts(part)
 
 
@@ -422,16 +418,12 @@ def test_without_axes_the_range_of_the_data_is_taken_with_a_notice(tmp_path):
     ],
 )
 def test_guess_of_a_capacitance_curve_s_x_axis(tmp_path, points, scale):
-    csv = "vds_V,ciss_pF,coss_pF,crss_pF\n" + "".join(
-        f"{x},{4000 - x},{2000 - x},{300 - x}\n" for x in points
-    )
+    csv = "vds_V,ciss_pF,coss_pF,crss_pF\n" + "".join(f"{x},{4000 - x},{2000 - x},{300 - x}\n" for x in points)
     part = read_part(make_folder(tmp_path, files={"part.toml": without_axes(PART), "capacitance.csv": csv}))
     assert part.curves[0].x_axis.scale == scale
 
 
-@pytest.mark.parametrize(
-    ("lowest", "scale"), [("0.001", "log"), ("2", "linear"), ("0", "linear"), ("-0.5", "linear")]
-)
+@pytest.mark.parametrize(("lowest", "scale"), [("0.001", "log"), ("2", "linear"), ("0", "linear"), ("-0.5", "linear")])
 def test_guess_of_a_transfer_curve_s_y_axis(tmp_path, lowest, scale):
     files = {"part.toml": without_axes(PART), "transfer.csv": f"vgs_V,id_A\n2,{lowest}\n4,20\n5,120\n"}
     part = read_part(make_folder(tmp_path, files=files))

@@ -202,9 +202,7 @@ def test_curves_that_are_no_array(tmp_path):
     start = PART.index("[[curve]]")
     text = PART[:start] + '[curve]\nquantity = "ciss"\n'
     found = messages(make_folder(tmp_path, files={"part.toml": text}))
-    assert any(
-        "part.toml:8 [curve]: found a table; expected a table [[curve]] for each curve" in m for m in found
-    )
+    assert any("part.toml:8 [curve]: found a table; expected a table [[curve]] for each curve" in m for m in found)
 
 
 def test_conditions_of_the_other_quantities(tmp_path):
@@ -322,11 +320,7 @@ def test_all_problems_of_all_files_are_listed_at_once(tmp_path):
 
 def test_very_many_problems_are_counted(tmp_path):
     text = "vgs_V,id_A\n" + "x,1\n" * 1000
-    found = [
-        p
-        for p in problems_of(make_folder(tmp_path, files={"transfer.csv": text}))
-        if p.file == "transfer.csv"
-    ]
+    found = [p for p in problems_of(make_folder(tmp_path, files={"transfer.csv": text})) if p.file == "transfer.csv"]
     assert len(found) == MAX_PROBLEMS_PER_FILE + 1
     assert found[-1].found == f"{1000 - MAX_PROBLEMS_PER_FILE} more problems"
 
@@ -467,9 +461,7 @@ def test_other_curves(tmp_path, quantity, text, line):
 def test_a_constant_curve_needs_its_printed_axis(tmp_path):
     edits = {'y_axis = { scale = "linear", from = 0, to = 200 }\n': ""}
     files = {"transfer.csv": "vgs_V,id_A\n3,2\n4,2\n"}
-    check(
-        make_folder(tmp_path, edits, files=files), ("[id_A]: all points have the same value '2'", "'y_axis'")
-    )
+    check(make_folder(tmp_path, edits, files=files), ("[id_A]: all points have the same value '2'", "'y_axis'"))
 
 
 def test_p_channel_slips(tmp_path):

@@ -85,9 +85,9 @@ def test_the_part_file_may_come_from_windows(tmp_path):
 
 
 def test_points_around_zero_keep_their_noise(tmp_path):
-    transfer = read_part(
-        make_folder(tmp_path, files={"transfer.csv": "vgs_V,id_A\n2,-0.4\n2.2,0.3\n5,120\n"})
-    ).curves[3]
+    transfer = read_part(make_folder(tmp_path, files={"transfer.csv": "vgs_V,id_A\n2,-0.4\n2.2,0.3\n5,120\n"})).curves[
+        3
+    ]
     assert transfer.y.tolist() == [-0.4, 0.3, 120.0]
 
 
@@ -214,9 +214,7 @@ def test_written_points_come_back(tmp_path_factory, rows, separator, decimal_com
 
     cells = [("vgs_V", "id_A"), *((cell(x), cell(y)) for x, y in rows)]
     text = line_end.join(separator.join(row) for row in cells)
-    folder = make_folder(
-        tmp_path_factory.mktemp("part"), files={"transfer.csv": ("\ufeff" * mark + text).encode()}
-    )
+    folder = make_folder(tmp_path_factory.mktemp("part"), files={"transfer.csv": ("\ufeff" * mark + text).encode()})
     points = [(x, y, line) for line, (x, y) in enumerate(rows, start=2) if y is not None]
     values = [y for _, y, _ in points]
     too_few = len({x for x, _, _ in points}) < 2

@@ -261,9 +261,7 @@ def test_any_bytes_as_a_csv_file(tmp_path_factory, data):
 
 
 @fuzz
-@given(
-    bits=st.lists(csv_bits, max_size=40), head=st.sampled_from(["", "vgs_V,id_A\n1,2\n", "vgs_V;id_A\n1;2\n"])
-)
+@given(bits=st.lists(csv_bits, max_size=40), head=st.sampled_from(["", "vgs_V,id_A\n1,2\n", "vgs_V;id_A\n1;2\n"]))
 def test_any_pieces_of_csv(tmp_path_factory, bits, head):
     text = head + "".join(bits)
     part_or_error(make_folder(tmp_path_factory.mktemp("part"), files={"transfer.csv": text.encode()}))

@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from dataclasses import fields
 from itertools import pairwise
 
-from fitter.inspection.finding import Finding
+from fitter.inspection.finding import Finding, Severity
 from fitter.inspection.reading import PART_FILE, typical
 from fitter.part import Part, Stated
 
@@ -24,14 +24,14 @@ def inspect(part: Part) -> Iterator[Finding]:
     yield from _conditions(part)
 
 
-def _finding(rule: str, severity: str, topic: str, found: str, remedy: str) -> Finding:
+def _finding(rule: str, severity: Severity, topic: str, found: str, remedy: str) -> Finding:
     return Finding(
         rule=rule,
         severity=severity,
         topic=topic,
         file=PART_FILE,
         found=found,
-        remedy=remedy,  # type: ignore[arg-type]
+        remedy=remedy,
     )
 
 

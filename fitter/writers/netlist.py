@@ -28,6 +28,10 @@ __all__ = ["subcircuit"]
 
 #: Capacitance over which a charge becomes a voltage [F]: over it the charges of power transistors are some volts.
 _UNIT = 1e-9
+#: Time by which a charge's current lags behind it [s]: far below any switching time, yet enough to damp the numerical
+#: oscillation of the trapezoidal rule at a capacitor that a voltage source drives. As a resistance in series with a
+#: capacitance of 1 nF it is 20 milliohms.
+_DELAY = 20e-12
 #: Resistances below this [ohm] are left out: a conductance this large drowns all others in rounding noise.
 _LEAST_RESISTANCE = 1e-7
 #: Inductances below this [H] are left out: with the smallest capacitances they ring beyond every time step.
@@ -73,10 +77,13 @@ def subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | None = No
         )
     t = model.transistor(t_j)
     package = model.part.package
-    drain = _Lead("drain", package.l_d, scalar(t.channel.r_d))
+    share = _share_of_diode(t, t_j)
+    drain = _Lead("drain", package.l_d, scalar(t.channel.r_d), share)
     gate = _Lead("gate", package.l_g, package.r_g)
-    source = _Lead("source", package.l_s, scalar(t.channel.r_s))
-    nodes = _Nodes(drain.inner, gate.inner, source.inner, p_channel=model.part.channel == "p")
+    source = _Lead("source", package.l_s, scalar(t.channel.r_s), share)
+    p_channel = model.part.channel == "p"
+    nodes = _Nodes(drain.inner, gate.inner, source.inner, p_channel)
+    junction = _Nodes(drain.core, gate.inner, source.core, p_channel)
     lines = [
         header(model, t_j, name),
         f".SUBCKT {name} drain gate source",
@@ -89,51 +96,66 @@ def subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | None = No
         comment(f"Charges, in volts over {number(_UNIT)} F, and the currents that change them"),
         *_charge("GD", nodes.drain_gate, gate_drain_charge(t, nodes.v_dg, _UNIT)),
         *_charge("GS", nodes.gate_source, gate_source_charge(t, nodes.v_gs, _UNIT)),
-        *_charge("DS", nodes.drain_source, drain_source_charge(t, nodes.v_ds, _UNIT)),
-        *_body_diode(model, t, t_j, drain.outer, source.outer),
+        *_charge("DS", junction.drain_source, drain_source_charge(t, junction.v_ds, _UNIT)),
+        *_body_diode(model, t, t_j, share, junction),
         f".ENDS {name}",
     ]
     return "\n".join(lines) + "\n"
 
 
+def _share_of_diode(t: Transistor, t_j: float) -> float:
+    """Share of RS and RD that lies in the body diode's way, too: as much as its own resistance has room for.
+
+    The body's junction, diode and charge, sits behind some resistance: right behind an inductance its charge would
+    ring with no loss, and a diode without charge would end in a node without capacitance, at which simulators stall.
+    """
+    series = scalar(t.channel.r_s) + scalar(t.channel.r_d)
+    if t.diode is None or series <= 0.0:
+        return 1.0
+    return min(1.0, scalar(series_resistance(t_j, t.diode)) / series)
+
+
 @dataclass(frozen=True)
 class _Lead:
-    """From a terminal to its inner node: an inductance [H], then a resistance [ohm]; either may be absent."""
+    """From a terminal to its inner node: an inductance [H], then a resistance [ohm]; either may be absent.
+
+    The body's junction is at the core, a share of the resistance behind the inductance.
+    """
 
     terminal: str
     inductance: float | None
     resistance: float | None
+    share: float = 1.0
 
     @property
-    def _has_inductance(self) -> bool:
-        return (self.inductance or 0.0) >= _LEAST_INDUCTANCE
-
-    @property
-    def _has_resistance(self) -> bool:
-        return (self.resistance or 0.0) >= _LEAST_RESISTANCE
+    def _parts(self) -> list[tuple[str, str, float]]:
+        """Element, node behind it, value; from the terminal inwards, without those too small to matter."""
+        letter, whole = self.terminal[0].upper(), self.resistance or 0.0
+        outer, rest = self.share * whole, (1.0 - self.share) * whole
+        parts = [
+            (f"L{letter}", f"{self.terminal}_lead", self.inductance or 0.0, _LEAST_INDUCTANCE),
+            (f"R{letter}", f"{self.terminal}_core", outer, _LEAST_RESISTANCE),
+            (f"R{letter}C", f"{self.terminal}_in", rest, _LEAST_RESISTANCE),
+        ]
+        return [(name, node, value) for name, node, value, least in parts if value >= least]
 
     @property
     def inner(self) -> str:
-        """The inner node: the terminal itself where nothing lies between."""
-        return f"{self.terminal}_in" if self._has_inductance or self._has_resistance else self.terminal
+        """The node of the channel and of the gate's charges; the terminal itself where nothing lies between."""
+        return self._parts[-1][1] if self._parts else self.terminal
 
     @property
-    def outer(self) -> str:
-        """The node between inductance and resistance: leads carry all current, RD and RS only the channel's."""
-        if self._has_inductance and self._has_resistance:
-            return f"{self.terminal}_lead"
-        return self.inner if self._has_inductance else self.terminal
+    def core(self) -> str:
+        """The node of the body's junction."""
+        before = [node for name, node, _ in self._parts if not name.endswith("C")]
+        return before[-1] if before else self.terminal
 
     def elements(self) -> list[str]:
         """One line for each element."""
-        letter = self.terminal[0].upper()
-        between = f"{self.terminal}_lead" if self._has_resistance else self.inner
-        lines = []
-        if self._has_inductance:
-            lines.append(f"L{letter} {self.terminal} {between} {number(self.inductance or 0.0)}")
-        if self._has_resistance:
-            start = between if self._has_inductance else self.terminal
-            lines.append(f"R{letter} {start} {self.inner} {number(self.resistance or 0.0)}")
+        lines, node = [], self.terminal
+        for name, end, value in self._parts:
+            lines.append(f"{name} {node} {end} {number(value)}")
+            node = end
         return lines
 
 
@@ -196,24 +218,27 @@ def _channel(t: Transistor, nodes: _Nodes) -> list[str]:
 
 def _charge(name: str, pair: tuple[str, str], expression: str) -> list[str]:
     """A charge between two nodes, from its expression in volts over the unit capacitance."""
-    held, sensed, (plus, minus) = f"q{name}".lower(), f"i{name}".lower(), pair
+    (held, damped, sensed), (plus, minus) = (f"{letter}{name}".lower() for letter in "qri"), pair
     return [
         statement(f"EQ{name} {held} 0 VALUE={{{expression}}}"),
-        f"CQ{name} {held} {sensed} {number(_UNIT)}",
+        f"CQ{name} {held} {damped} {number(_UNIT)}",
+        f"RQ{name} {damped} {sensed} {number(_DELAY / _UNIT)}",
         f"VQ{name} {sensed} 0 0",
         f"FQ{name} {plus} {minus} VQ{name} 1",
     ]
 
 
-def _body_diode(model: FittedModel, t: Transistor, t_j: float, drain: str, source: str) -> list[str]:
-    """The body diode outside the channel's resistances; its depletion charge is Cds, its own model stores only TT I."""
+def _body_diode(model: FittedModel, t: Transistor, t_j: float, share: float, junction: _Nodes) -> list[str]:
+    """The body diode; its depletion charge is Cds, its own model stores only TT I."""
     if t.diode is None:
         return []
     # The diode's law at t_j, for a simulator that runs at its own nominal temperature.
     n = scalar(t.diode.n) * (t_j + KELVIN) / (_NOMINAL + KELVIN)
-    i_s, r_s = scalar(saturation_current(t_j, t.diode)), scalar(series_resistance(t_j, t.diode))
+    i_s = scalar(saturation_current(t_j, t.diode))
+    before = share * (scalar(t.channel.r_s) + scalar(t.channel.r_d))
+    r_s = max(scalar(series_resistance(t_j, t.diode)) - before, 0.0)
     transit_time = scalar(model.estimate.values.get(TRANSIT_TIME.name, 0.0))
-    anode, cathode = (drain, source) if model.part.channel == "p" else (source, drain)
+    cathode, anode = junction.drain_source
     card = f".MODEL {_DIODE_MODEL} D(IS={number(i_s)} N={number(n)} RS={number(r_s)} TT={number(transit_time)} CJO=0)"
     return [
         comment(f"Body diode at {t_j:g} C; leave the simulator's temperature at {_NOMINAL:g} C"),
