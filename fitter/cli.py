@@ -6,13 +6,16 @@ Whatever takes long to import is imported inside the commands, so that help text
 from __future__ import annotations
 
 import sys
+import warnings
+from collections.abc import Iterator
+from contextlib import contextmanager
 from enum import StrEnum
 from pathlib import Path
 from typing import Annotated, Optional
 
 import typer
 
-from fitter.errors import FitterError
+from fitter.errors import ExtrapolationWarning, FitterError
 
 __all__ = ["app", "main"]
 
@@ -123,7 +126,9 @@ def netlist(
     from fitter.interface import load_model
     from fitter.writers.folder import write_file
 
-    text = load_model(model).subcircuit(t_j=tj)
+    loaded = load_model(model)
+    with _told(loaded.extrapolation(tj)):
+        text = loaded.subcircuit(t_j=tj)
     if out is None:
         typer.echo(text, nl=False)
     else:
@@ -153,13 +158,24 @@ def charge(
     from fitter.writers.folder import write_file
 
     loaded = load_model(model)
-    found = loaded.gate_charge_intervals(vdd, i_d, vgs, load.value, tj)
-    if out is not None:
+    with _told(loaded.extrapolation(tj), *loaded.beyond(vdd, i_d, vgs)):
+        found = loaded.gate_charge_intervals(vdd, i_d, vgs, load.value, tj)
         curve = loaded.gate_charge(vdd, i_d, vgs, load.value, tj)
+    if out is not None:
         write_file(out, tables.csv_text(tables.gate_charge_frame(curve)).encode())
     screen.show_gate_charge(found)
     if out is not None:
         typer.echo(out)
+
+
+@contextmanager
+def _told(*messages: str) -> Iterator[None]:
+    """Say once on stderr that a result extrapolates, in place of the warnings that a program would get."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", ExtrapolationWarning)
+        yield
+    for message in filter(None, messages):
+        typer.echo(f"fetwright: note: {message}", err=True)
 
 
 def main() -> None:

@@ -32,6 +32,9 @@ __all__ = ["CurveRow", "FittedModel", "Interval", "Validity", "operating_point"]
 
 Array = NDArray[np.float64]
 
+#: A point this little beyond the last click is no extrapolation.
+_SLACK = 1.02
+
 
 @dataclass(frozen=True, kw_only=True)
 class Interval:
@@ -166,6 +169,36 @@ class FittedModel:
         if low <= t_j <= high:
             return ""
         return f"{t_j:g} C lies outside the digitized {low:g} to {high:g} C: the temperature laws extrapolate"
+
+    def beyond(self, vdd: float, i_d: float, v_gs: float) -> tuple[str, ...]:
+        """What to say of an operating point beyond the ratings, or beyond what was digitized.
+
+        Parameters
+        ----------
+        vdd, i_d, v_gs : float
+            Supply [V], load current [A] and gate voltage [V]; signs do not matter.
+
+        Returns
+        -------
+        tuple of str
+            Empty where there is nothing to say.
+        """
+        known = self.validity
+        limits = (
+            ("VDD", abs(vdd), "V", self.part.v_ds_max, known.capacitance_v_ds, "the capacitances"),
+            ("ID", abs(i_d), "A", np.inf, known.i_d, "the channel"),
+            ("VGS", abs(v_gs), "V", self.part.v_gs_max, None, ""),
+        )
+        said = []
+        for name, value, unit, rated, digitized, what in limits:
+            if value > rated:
+                said.append(f"{name} = {value:g} {unit} lies above the rated {rated:g} {unit}")
+            elif digitized is not None and value > digitized[-1] * _SLACK:
+                said.append(
+                    f"{name} = {value:g} {unit} lies above {digitized[-1]:.4g} {unit}, where the digitized curves of "
+                    f"{what} end: the equations extrapolate"
+                )
+        return tuple(said)
 
     def zero_temperature_coefficient(self) -> tuple[float, float] | None:
         """Where the transfer curves of 25 degC and of the hottest digitized temperature cross.

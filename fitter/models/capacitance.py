@@ -179,8 +179,8 @@ def depletion_capacitance(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: Array
     --------
     An abrupt junction of 1 nF/cm^2 and 1 V has a tenth of that at 99 V (sqrt(100) = 10):
 
-    >>> float(depletion_capacitance(99.0, 1e-9, 1.0, 0.5))
-    1e-10
+    >>> round(float(depletion_capacitance(99.0, 1e-9, 1.0, 0.5)) * 1e9, 9)
+    0.1
     """
     return np.asarray(np.asarray(c_0) * np.exp(-np.asarray(m) * np.log1p(np.asarray(v) / np.asarray(phi))))
 

@@ -18,7 +18,7 @@ from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN, Junction, juncti
 from fitter.models.channel import CHANNEL, Channel, terminal_current
 from fitter.models.diode import BODY_DIODE, TRANSIT_TIME, BodyDiode
 from fitter.models.smooth import softplus
-from fitter.models.temperature import REFERENCE, TEMPERATURE, TemperatureLaws, channel_at
+from fitter.models.temperature import KELVIN, REFERENCE, TEMPERATURE, TemperatureLaws, channel_at
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
@@ -112,8 +112,10 @@ class Transistor:
         Raises
         ------
         OperatingPointError
-            Where `t_j` is not 25 degC and the model has no temperature laws.
+            Where `t_j` is not 25 degC and the model has no temperature laws, or where it is no temperature.
         """
+        if not np.all(np.isfinite(t_j)) or np.any(np.asarray(t_j) <= -KELVIN):
+            raise OperatingPointError(f"a junction temperature of {t_j} C lies below absolute zero or is no number")
         if np.all(np.asarray(t_j) == REFERENCE):
             return self
         if self.laws is None:
