@@ -5,6 +5,7 @@ Whatever takes long to import is imported inside the commands, so that help text
 
 from __future__ import annotations
 
+import os
 import sys
 import warnings
 from collections.abc import Iterator
@@ -180,6 +181,8 @@ def _told(*messages: str) -> Iterator[None]:
 
 def main() -> None:
     """Run the command; the one place where an error becomes a message and an exit status."""
+    # The matrices are small: threads that wait for each other cost more than they save, on a busy machine twentyfold.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     try:
         app()
     except FitterError as error:

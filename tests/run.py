@@ -1,8 +1,7 @@
 """Set up what is missing and run every check: style, types, layers, tests.
 
-``python3 tests/run.py`` is all a newcomer needs; it makes ``.venv`` with everything in it and, as root on a
-machine with Debian's
-packages, installs the simulators. Arguments go to pytest. With CI=true a missing simulator is a failure.
+``python3 tests/run.py`` is all a newcomer needs; it makes ``.venv`` with everything in it and, as root on a machine
+with Debian's packages, installs the simulators. Arguments go to pytest. With CI=true a missing simulator is a failure.
 """
 
 import os
@@ -64,6 +63,7 @@ def simulators():
 
 def main():
     """Everything, the fast checks first."""
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # as the command does: the matrices are small
     environment()
     simulators()
     run(BIN / "ruff", "check", ".")

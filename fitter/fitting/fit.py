@@ -26,9 +26,6 @@ __all__ = ["FitResult", "fit"]
 
 Array = NDArray[np.float64]
 
-#: How often standard deviations are widened by the misfit and the fit repeated.
-_WIDENINGS = 2
-
 
 @dataclass(frozen=True, kw_only=True)
 class FitResult:
@@ -103,7 +100,7 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
             fixed.pop("lambda")
             free.append("lambda")
         rough = solve(
-            [*blocks, *charge_blocks], model_space(free, fixed, [*blocks, *charge_blocks]), start, robust=True
+            [*blocks, *charge_blocks], model_space(free, fixed, [*blocks, *charge_blocks]), start, robust=True, rough=True
         )
         marked, found = set_aside(rough)
         by_name = {block.name: block for block in marked}
@@ -134,12 +131,12 @@ def _found(stage: Stage) -> dict[str, float]:
 def _widened(
     blocks: Sequence[Block], space: ParameterSpace, start: Values
 ) -> tuple[Solution, tuple[BlockStatistics, ...]]:
-    """Least squares, repeated with standard deviations widened where a curve's misfit exceeds its reading errors."""
-    solution = solve(blocks, space, start)
-    for _ in range(_WIDENINGS):
+    """Least squares, repeated twice with standard deviations widened where a curve's misfit exceeds its reading errors."""
+    solution = solve(blocks, space, start, rough=True)
+    for last in (False, True):
         widths = {s.name: s.inflation for s in block_statistics(solution)}
         widened = [replace(b, inflation=widths[b.name]) for b in blocks]
-        solution = solve(widened, space, solution.values)
+        solution = solve(widened, space, solution.values, rough=not last)
     return solution, block_statistics(solution)
 
 

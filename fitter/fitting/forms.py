@@ -166,12 +166,12 @@ def fit_capacitances(part: Part) -> CapacitanceFit:
 
     free = ("c_gs", *gate_drain.free, *drain_source.free)
     start = {"c_gs": c_gs, **gate_drain.values, **drain_source.values}
-    rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True)
+    rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
     points = sum(b.used_points for b in marked)
     if points <= len(free):
         raise FitError(f"{points} points of capacitance are too few for a model of {len(free)} parameters")
-    solution = solve(marked, model_space(free, fixed, marked), rough.values)
+    solution = solve(marked, model_space(free, fixed, marked), rough.values, rough=True)
     return CapacitanceFit(
         blocks=marked, free=free, fixed=fixed, solution=solution, outliers=outliers,
         trials=gate_drain.trials + drain_source.trials,
@@ -249,6 +249,6 @@ def _choose(
 def _best(blocks: Sequence[Block], starts: Sequence[Mapping[str, float]], space: ParameterSpace) -> Solution:
     """The lowest of the minima that the better starts lead to."""
     if len(starts) > _FOLLOWED:
-        looks = [solve(blocks, space, start, robust=True, evaluations=_FIRST_LOOK) for start in starts]
+        looks = [solve(blocks, space, start, robust=True, rough=True, evaluations=_FIRST_LOOK) for start in starts]
         starts = [look.values for look in sorted(looks, key=lambda look: look.cost)[:_FOLLOWED]]  # type: ignore[misc]
     return min((solve(blocks, space, start, robust=True) for start in starts), key=lambda end: end.cost)

@@ -23,7 +23,8 @@ _MOST_EVALUATIONS = 400
 _NOWHERE = 1e6
 #: Residuals up to about this many standard deviations count by their square in a robust pass, too.
 _ROBUST_SCALE = 3.0
-_TOLERANCE = 1e-8
+#: Relative change of cost and coordinates that ends a fit; a look that only prepares the next fit takes the second.
+_TOLERANCE, _ROUGH_TOLERANCE = 1e-8, 1e-4
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -97,6 +98,7 @@ def solve(
     start: Values,
     *,
     robust: bool = False,
+    rough: bool = False,
     evaluations: int = _MOST_EVALUATIONS,
 ) -> Solution:
     """Fit the free parameters to the blocks.
@@ -111,6 +113,8 @@ def solve(
         Start values [SI] of the free parameters; nuisance parameters may be absent and start at 0.
     robust : bool
         Whether far-off points count by their distance instead of its square (soft L1), for a first pass.
+    rough : bool
+        Whether a tolerance of 1e-4 will do, for a fit from which only another one starts.
     evaluations : int
         How often the residuals may be computed.
 
@@ -155,9 +159,10 @@ def solve(
         raise FitError(
             "the fit cannot begin: at its start values the channel does not carry the gate-charge test's current"
         )
+    tolerance = _ROUGH_TOLERANCE if rough else _TOLERANCE
     with np.errstate(invalid="ignore"):  # lmfit's own covariance, which is not used, may not be positive
         result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations).minimize(
-            method="least_squares", jac=jacobian, x_scale="jac", ftol=_TOLERANCE, xtol=_TOLERANCE, gtol=_TOLERANCE,
+            method="least_squares", jac=jacobian, x_scale="jac", ftol=tolerance, xtol=tolerance, gtol=tolerance,
             loss="soft_l1" if robust else "linear", f_scale=_ROBUST_SCALE,
         )  # fmt: skip
     found = coordinates(result.params)

@@ -75,9 +75,9 @@ def fit_channel(part: Part) -> Stage:
     if "rds_on (table)" not in {block.name for block in blocks}:
         fixed["r_d"] = 0.0
     free = tuple(d.name for d in CHANNEL.values() if d.name not in fixed)
-    rough = solve(leading, model_space(free, fixed, leading), start, robust=True)
+    rough = solve(leading, model_space(free, fixed, leading), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
-    solution = solve(marked, model_space(free, fixed, marked), rough.values)
+    solution = solve(marked, model_space(free, fixed, marked), rough.values, rough=True)
     if not outputs:
         return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
 
@@ -85,12 +85,12 @@ def fit_channel(part: Part) -> Stage:
     free = tuple(d.name for d in CHANNEL.values())
     start = {**solution.values, "lambda": 1e-3}
     every = (*marked, *outputs)
-    rough = solve(every, model_space(free, {}, every), start, robust=True)
+    rough = solve(every, model_space(free, {}, every), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
     start = rough.values
     for weight in _OUTPUT_WIDENINGS:
         weighed = tuple(replace(b, inflation=weight) if b.group == Quantity.OUTPUT else b for b in marked)
-        solution = solve(weighed, model_space(free, {}, weighed), start)
+        solution = solve(weighed, model_space(free, {}, weighed), start, rough=True)
         found = widening(solution, Quantity.TRANSFER)
         if found <= allowed:
             break
@@ -132,9 +132,9 @@ def fit_temperature(part: Part, channel: Stage) -> Stage | None:
     free = tuple(d.name for d in TEMPERATURE.values() if d.name in seen)
     fixed = {name: value for name, value in _ASSUMED_LAWS.items() if name not in seen}
     held = {**channel.fixed, **{name: scalar(channel.solution.values[name]) for name in channel.free}, **fixed}
-    rough = solve(blocks, model_space(free, held, blocks), _ASSUMED_LAWS, robust=True)
+    rough = solve(blocks, model_space(free, held, blocks), _ASSUMED_LAWS, robust=True, rough=True)
     marked, outliers = set_aside(rough)
-    solution = solve(marked, model_space(free, held, marked), rough.values)
+    solution = solve(marked, model_space(free, held, marked), rough.values, rough=True)
     # What the laws cannot follow must not bend the channel at 25 degC.
     widths = {block.group: widening(solution, block.group) for block in marked}
     marked = tuple(replace(b, inflation=widths[b.group], held=True) for b in marked)
@@ -188,8 +188,8 @@ def fit_body_diode(part: Part) -> Stage | None:
     if not any(block.group == Quantity.BODY_DIODE for block in blocks):
         fixed |= {"n_d": 1.1, "r_dio": 0.0}
     free = tuple(d.name for d in BODY_DIODE.values() if d.name not in fixed)
-    rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True)
+    rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
-    solution = solve(marked, model_space(free, fixed, marked), rough.values)
+    solution = solve(marked, model_space(free, fixed, marked), rough.values, rough=True)
     fixed |= recovery_transit_time(part)
     return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from fitter.models.roots import carries_derivatives, increasing_root, lifted_root
-from fitter.models.smooth import inverse_softplus, logistic, softplus
+from fitter.models.smooth import inverse_softplus, softplus, softplus_and_slope
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
@@ -140,12 +140,13 @@ def conductances(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> tuple[Numbers,
     """
     v_gs, v_ds = np.asarray(v_gs), np.asarray(v_ds)
     over_s, over_d = v_gs - c.v_th, v_gs - v_ds - c.v_th
-    source_side, drain_side = softplus(over_s, c.w), softplus(over_d, c.w)
+    source_side, source_slope = softplus_and_slope(over_s, c.w)
+    drain_side, drain_slope = softplus_and_slope(over_d, c.w)
     k, lam = np.asarray(c.k), np.asarray(c.lam)
     modulation = 1.0 + lam * _magnitude(v_ds)
     square = 0.5 * k * (source_side - drain_side) * (source_side + drain_side)
-    g_drain = k * drain_side * logistic(over_d, c.w)
-    g_m = (k * source_side * logistic(over_s, c.w) - g_drain) * modulation
+    g_drain = k * drain_side * drain_slope
+    g_m = (k * source_side * source_slope - g_drain) * modulation
     g_ds = g_drain * modulation + square * lam * np.where(v_ds.real < 0.0, -1.0, 1.0)
     return square * modulation, g_m, g_ds
 

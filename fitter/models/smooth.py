@@ -7,7 +7,7 @@ from numpy.typing import ArrayLike
 
 from fitter.models.types import Numbers
 
-__all__ = ["inverse_softplus", "logistic", "softplus"]
+__all__ = ["inverse_softplus", "logistic", "softplus", "softplus_and_slope"]
 
 
 def _minus_magnitude(t: Numbers) -> Numbers:
@@ -60,6 +60,31 @@ def logistic(x: ArrayLike, w: ArrayLike) -> Numbers:
     t = np.asarray(x) / np.asarray(w)
     e = np.exp(_minus_magnitude(t))
     return np.where(t.real > 0.0, 1.0, e) / (1.0 + e)
+
+
+def softplus_and_slope(x: ArrayLike, w: ArrayLike) -> tuple[Numbers, Numbers]:
+    """Both `softplus` and `logistic`, for the price of one exponential.
+
+    Parameters
+    ----------
+    x, w : array_like
+        As for `softplus`.
+
+    Returns
+    -------
+    value, slope : ndarray
+
+    Examples
+    --------
+    >>> value, slope = softplus_and_slope(0.3, 0.1)
+    >>> bool(value == softplus(0.3, 0.1)), bool(slope == logistic(0.3, 0.1))
+    (True, True)
+    """
+    x = np.asarray(x)
+    t = x / np.asarray(w)
+    above = t.real > 0.0
+    e = np.exp(np.where(above, -t, t))
+    return np.where(above, x, 0.0) + w * np.log1p(e), np.where(above, 1.0, e) / (1.0 + e)
 
 
 def inverse_softplus(y: ArrayLike, w: ArrayLike) -> Numbers:
