@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Collection, Mapping
+from collections.abc import Collection, Mapping, Sequence
 from itertools import combinations
 from typing import TypeVar
 
@@ -12,9 +12,11 @@ from numpy.typing import ArrayLike
 
 from fitter.comparison import compare, explain_gate_charge, explain_recovery
 from fitter.fitting.blocks import PathBlock, PointsBlock
+from fitter.fitting.determination import OPEN, spreads, undetermined
 from fitter.fitting.fit import FitResult
 from fitter.fitting.intervals import standard_errors
 from fitter.fitting.observations import from_axis
+from fitter.leave_out import LeftOut
 from fitter.model import CurveRow, FittedModel, Validity
 from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import DEFINITIONS
@@ -27,8 +29,6 @@ __all__ = ["assemble"]
 
 Model = TypeVar("Model", bound=FittedModel)
 
-#: A standard error this large, as a natural logarithm or relative to the typical size, determines nothing.
-_UNDETERMINED = 2.0
 #: A misfit of more than this many times the reading errors is worth a notice.
 _WORTH_SAYING = 1.5
 
@@ -40,7 +40,7 @@ _PACKAGE = {
 }
 
 
-def assemble(part: Part, result: FitResult, kind: type[Model]) -> Model:
+def assemble(part: Part, result: FitResult, kind: type[Model], left_out: Sequence[LeftOut] = ()) -> Model:
     """Put a finished model together.
 
     Parameters
@@ -51,6 +51,8 @@ def assemble(part: Part, result: FitResult, kind: type[Model]) -> Model:
         The fit.
     kind : type
         `FittedModel` or a class derived from it.
+    left_out : sequence of LeftOut
+        Each group of data predicted from the others, if that was asked for.
 
     Returns
     -------
@@ -76,6 +78,7 @@ def assemble(part: Part, result: FitResult, kind: type[Model]) -> Model:
             *explain_recovery(checks),
         ),
         used_gate_charge=result.used_gate_charge,
+        left_out=tuple(left_out),
         validity=_validity(part, {b.name for b in result.solution.blocks}),
         version=VERSION,
     )
@@ -83,7 +86,7 @@ def assemble(part: Part, result: FitResult, kind: type[Model]) -> Model:
 
 def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     estimate = result.estimate
-    values = estimate.values
+    values, spread = estimate.values, spreads(estimate)
     free = {d.name: math.sqrt(v) for d, v in zip(estimate.space.free, np.diag(estimate.covariance), strict=True)}
     table: dict[str, Parameter] = {}
     for name, d in DEFINITIONS.items():
@@ -99,7 +102,7 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
             if name in result.on_bound:
                 origin, stderr = "fixed", None
                 note = f"ended on its bound of {value:.3g} {d.unit}".rstrip()
-            elif (free[name] if d.scale == "log" else stderr / max(abs(value), 1e-300)) > _UNDETERMINED:
+            elif spread[name] > OPEN:
                 origin, note = "not determined", "the data leave it open within a factor of ten or more"
         elif name in estimate.space.fixed:
             origin = _FIXED_AS.get(name, "assumed")
@@ -129,7 +132,7 @@ _FIXED_AS: dict[str, Origin] = {"lambda": "fixed", "tt_d": "fitted"}
 _WHY_FIXED = {
     "tt_d": "solved for the stated recovery",
     "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
-    "r_d": "no RDS(on) is stated and no output curve given",
+    "r_d": "is taken as 0: the stated RDS(on), or an output curve at low VDS, would tell",
 }
 _WHY_ASSUMED = {
     "c_ch": "shows on no curve at VGS = 0; the on-state input capacitance is taken as 1.5 (1.0 to 2.3) Ciss(VDD)",
@@ -166,10 +169,11 @@ def _points(part: Part, result: FitResult) -> tuple[CurveRow, ...]:
 
 
 def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter]) -> list[Notice]:
-    said = [(p.name, f"{p.name} {p.note}") for p in parameters.values() if "bound" in p.note]
-    undetermined = [p.name for p in parameters.values() if p.origin == "not determined"]
-    if undetermined:
-        said.append(("parameters", f"the data do not determine {', '.join(undetermined)}"))
+    said = [
+        (p.name, f"{p.name} {p.note}") for p in parameters.values() if "bound" in p.note or (p.name == "r_d" and p.note)
+    ]
+    open_ones = [p.name for p in parameters.values() if p.origin in ("fitted", "not determined")]
+    said += [(u.names[0], u.text) for u in undetermined(result.estimate, open_ones)]
     curves = {c.name: c for c in part.curves}
     said += [(o.curve, _left_aside(curves[o.curve], o.index, o.sigmas)) for o in result.outliers]
     for group in dict.fromkeys(b.group for b in result.solution.blocks if b.group):

@@ -96,6 +96,12 @@ def fit(
         bool,
         typer.Option("--use-gate-charge", help="Fit the gate-charge data, too, instead of keeping them as a check."),
     ] = False,
+    leave_out: Annotated[
+        bool,
+        typer.Option(
+            "--leave-out", help="Leave out each curve and table value in turn and predict it from the others."
+        ),
+    ] = False,
     strict: Annotated[
         bool,
         typer.Option("--strict", help="Exit with status 1 where the fitted model violates a stated limit."),
@@ -105,10 +111,11 @@ def fit(
     from fitter import screen
     from fitter.pipeline import OUTPUT_FOLDER, fit_folder, write_outputs
 
-    model = fit_folder(folder, use_gate_charge=use_gate_charge)
+    model = fit_folder(folder, use_gate_charge=use_gate_charge, leave_out=leave_out)
     target = folder / OUTPUT_FOLDER if out is None else out
     files = write_outputs(model, target)
     screen.show_model(model)
+    screen.show_left_out(model)
     screen.show_files(target, files)
     if strict and any(c.verdict == "outside limit" for c in model.checks):
         raise typer.Exit(LIMIT_VIOLATED)

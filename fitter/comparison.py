@@ -11,19 +11,21 @@ import numpy as np
 from fitter.errors import OperatingPointError
 from fitter.fitting.intervals import Estimate, intervals
 from fitter.fitting.space import Values
-from fitter.gate_charge import OperatingPoint, gate_charge_curve
+from fitter.gate_charge import GateChargeReading, OperatingPoint, gate_charge_curve, read_gate_charge
 from fitter.models.channel import on_resistance, threshold_voltage, transconductance
 from fitter.models.diode import forward_voltage, recovery
 from fitter.models.transistor import Transistor
 from fitter.models.types import Numbers, scalar
-from fitter.part import Notice, Part, Stated, StatedBodyDiode
+from fitter.part import Curve, Notice, Part, Stated, StatedBodyDiode
 
-__all__ = ["Comparison", "Verdict", "compare", "explain_gate_charge", "explain_recovery"]
+__all__ = ["Comparison", "Verdict", "compare", "digitized_reading", "explain_gate_charge", "explain_recovery"]
 
 Verdict = Literal["agrees", "differs", "outside limit", "not determined", "no typ"]
 
 #: A typical value this near agrees even where the interval is narrower.
 _NEAR = 0.05
+#: Slopes of a digitized gate-charge curve are taken over this share of its charge: clicks are about 4 % apart.
+_WINDOW = 0.15
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -239,6 +241,24 @@ def explain_recovery(checks: Sequence[Comparison]) -> tuple[Notice, ...]:
         f"{100.0 * (other.deviation or 0.0):+.0f} %: it snaps off where a real diode's current decays"
     )
     return (Notice(topic="trr", text=text),)
+
+
+def digitized_reading(curve: Curve, v_th: float) -> GateChargeReading:
+    """What JESD24-2's rule reads off a digitized gate-charge curve.
+
+    Parameters
+    ----------
+    curve : Curve
+        The curve; QG is the charge of its last point.
+    v_th : float
+        Threshold voltage, the upper end of the first line [V].
+
+    Returns
+    -------
+    GateChargeReading
+    """
+    order = np.argsort(curve.x)
+    return read_gate_charge(curve.x[order], curve.y[order], v_th, window=_WINDOW)
 
 
 def _gate_charge_figures(t: Transistor, point: OperatingPoint) -> Sequence[Numbers]:

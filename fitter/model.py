@@ -21,6 +21,7 @@ from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, Figures, interva
 from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import Values
 from fitter.gate_charge import GateChargeCurve, OperatingPoint, gate_charge_curve
+from fitter.leave_out import LeftOut
 from fitter.models.channel import terminal_current
 from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import Transistor
@@ -116,6 +117,8 @@ class FittedModel:
         What the user should know.
     used_gate_charge : bool
         Whether gate-charge data were fitted.
+    left_out : tuple of LeftOut
+        Each group of data predicted from the others, where that was asked for; a loaded model has none.
     validity : Validity
         Ranges that were digitized.
     version : str
@@ -132,6 +135,7 @@ class FittedModel:
     points: tuple[CurveRow, ...] = ()
     notices: tuple[Notice, ...] = ()
     used_gate_charge: bool = False
+    left_out: tuple[LeftOut, ...] = ()
     validity: Validity = field(default_factory=Validity)
     version: str = ""
 

@@ -6,6 +6,7 @@ import json
 from dataclasses import replace
 from pathlib import Path
 
+from fitter import leave_out as checks
 from fitter.assembly import assemble
 from fitter.errors import FitError, OperatingPointError
 from fitter.fitting.fit import fit
@@ -22,11 +23,11 @@ __all__ = ["OUTPUT_FOLDER", "fit_folder", "fit_part", "output_files", "write_out
 #: Name of the output folder inside the part folder, unless told otherwise.
 OUTPUT_FOLDER = "model"
 
-_TEXT_FILES = ("model.json", "parameters.csv", "checks.csv", "curves.csv", "gate_charge.csv")
+_TEXT_FILES = ("model.json", "parameters.csv", "checks.csv", "curves.csv", "gate_charge.csv", "left_out.csv")
 _SHEET_FILES = ("sheet.png", "sheet.pdf")
 
 
-def fit_part(part: Part, *, use_gate_charge: bool = False) -> Model:
+def fit_part(part: Part, *, use_gate_charge: bool = False, leave_out: bool = False) -> Model:
     """Fit a model to a part.
 
     Parameters
@@ -35,6 +36,8 @@ def fit_part(part: Part, *, use_gate_charge: bool = False) -> Model:
         As from `fitter.read_part`.
     use_gate_charge : bool
         Fit the gate-charge data, too, instead of keeping them as a check.
+    leave_out : bool
+        Leave out each group of data in turn, too, and predict it from the others: `Model.left_out`.
 
     Returns
     -------
@@ -45,17 +48,18 @@ def fit_part(part: Part, *, use_gate_charge: bool = False) -> Model:
     FitError
         Where the data cannot carry a fit.
     """
-    return assemble(part, fit(part, use_gate_charge=use_gate_charge), Model)
+    result = fit(part, use_gate_charge=use_gate_charge)
+    return assemble(part, result, Model, checks.leave_out(part, result) if leave_out else ())
 
 
-def fit_folder(folder: Path, *, use_gate_charge: bool = False) -> Model:
+def fit_folder(folder: Path, *, use_gate_charge: bool = False, leave_out: bool = False) -> Model:
     """Read a part folder, judge it, and fit it where nothing speaks against it.
 
     Parameters
     ----------
     folder : Path
         The part folder.
-    use_gate_charge : bool
+    use_gate_charge, leave_out : bool
         As for `fit_part`.
 
     Returns
@@ -76,7 +80,8 @@ def fit_folder(folder: Path, *, use_gate_charge: bool = False) -> Model:
     if stops:
         raise FitError("\n".join(["these data would make a meaningless model:", *stops]))
     doubts = tuple(Notice(topic=f.topic, text=str(f)) for f in findings if f.severity == "doubtful")
-    return fit_part(replace(part, notices=part.notices + doubts), use_gate_charge=use_gate_charge)
+    part = replace(part, notices=part.notices + doubts)
+    return fit_part(part, use_gate_charge=use_gate_charge, leave_out=leave_out)
 
 
 def output_files(model: Model) -> dict[str, bytes]:
@@ -100,6 +105,8 @@ def output_files(model: Model) -> dict[str, bytes]:
         "gate_charge.csv": _gate_charge_text(model),
         f"{model.part.name}.lib": model.subcircuit(),
     }
+    if model.left_out:
+        texts["left_out.csv"] = tables.csv_text(tables.left_out_frame(model))
     return {**{name: text.encode() for name, text in texts.items()}, **sheet_files(model)}
 
 

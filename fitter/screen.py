@@ -20,7 +20,7 @@ if TYPE_CHECKING:
     from fitter.model import Interval
     from fitter.part import Part
 
-__all__ = ["show_files", "show_findings", "show_gate_charge", "show_model", "show_reading"]
+__all__ = ["show_files", "show_findings", "show_gate_charge", "show_left_out", "show_model", "show_reading"]
 
 #: Width where the output is no terminal.
 _WIDTH = 118
@@ -30,6 +30,8 @@ _SEVERITY = {
     "doubtful": ("doubtful", "yellow"),
     "note": ("note", "dim"),
 }
+#: Deviations beyond this many standard deviations stand out.
+_FAR = 3.0
 _VERDICT = {"agrees": "green", "differs": "yellow", "outside limit": "bold red"}
 
 
@@ -108,6 +110,31 @@ def show_model(model: Model) -> None:
     console.print(table)
     for notice in model.notices:
         console.print(f"[dim]note[/dim] {escape(notice.text)}", soft_wrap=True)
+
+
+def show_left_out(model: Model) -> None:
+    """Each group of data predicted from the others; nothing where that was not asked for."""
+    from fitter.writers.tables import shown_left_out
+
+    rows = shown_left_out(model)
+    if not rows:
+        return
+    table = _table(
+        "left out", "figure", "given", "predicted", "95 % interval", "off", "sigmas",
+        right=("given", "predicted", "95 % interval", "off", "sigmas"),
+    )  # fmt: skip
+    for s in rows:
+        given = f"{s.given:.4g} {s.unit}".strip()
+        if s.predicted is None or s.row.sigmas is None:
+            table.add_row(s.row.left_out, s.row.quantity, given, "", "not determined by the others", "", "")
+            continue
+        style = "yellow" if abs(s.row.sigmas) > _FAR else ""
+        sigmas = f"{s.row.sigmas:+.1f}"
+        table.add_row(
+            s.row.left_out, s.row.quantity, given, f"{s.predicted:.4g}", f"{s.low:.4g} to {s.high:.4g}",
+            f"{100.0 * (s.predicted / s.given - 1.0):+.1f} %", f"[{style}]{sigmas}[/{style}]" if style else sigmas,
+        )  # fmt: skip
+    _console().print(table)
 
 
 def show_files(folder: Path, files: Sequence[str]) -> None:

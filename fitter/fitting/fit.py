@@ -99,9 +99,8 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
             # The slope of the plateau determines it.
             fixed.pop("lambda")
             free.append("lambda")
-        rough = solve(
-            [*blocks, *charge_blocks], model_space(free, fixed, [*blocks, *charge_blocks]), start, robust=True, rough=True
-        )
+        every = [*blocks, *charge_blocks]
+        rough = solve(every, model_space(free, fixed, every), start, robust=True, rough=True)
         marked, found = set_aside(rough)
         by_name = {block.name: block for block in marked}
         blocks += [by_name[block.name] for block in charge_blocks]
@@ -131,7 +130,7 @@ def _found(stage: Stage) -> dict[str, float]:
 def _widened(
     blocks: Sequence[Block], space: ParameterSpace, start: Values
 ) -> tuple[Solution, tuple[BlockStatistics, ...]]:
-    """Least squares, repeated twice with standard deviations widened where a curve's misfit exceeds its reading errors."""
+    """Least squares, and twice more with standard deviations widened where a misfit exceeds the reading errors."""
     solution = solve(blocks, space, start, rough=True)
     for last in (False, True):
         widths = {s.name: s.inflation for s in block_statistics(solution)}

@@ -21,6 +21,8 @@ Array = NDArray[np.float64]
 _ON_BOUND = 0.02
 _MOST_EVALUATIONS = 400
 _NOWHERE = 1e6
+#: Information added to every scaled coordinate: where the data give none, the variance comes out huge, not zero.
+_LEAST_INFORMATION = 1e-12
 #: Residuals up to about this many standard deviations count by their square in a robust pass, too.
 _ROBUST_SCALE = 3.0
 #: Relative change of cost and coordinates that ends a fit; a look that only prepares the next fit takes the second.
@@ -70,13 +72,18 @@ class Solution:
 
     @property
     def covariance(self) -> Array:
-        """Covariance of the coordinates, shape (n, n); rows and columns of those on a bound are zero."""
+        """Covariance of the coordinates, shape (n, n).
+
+        Rows and columns of those on a bound are zero; directions that the data leave open have a huge variance.
+        """
         inside = ~self.on_bound
         result = np.zeros((inside.size, inside.size))
         information = self.jacobian[:, inside].T @ self.jacobian[:, inside]
         # Scaled to a unit diagonal first: the information spans many decades otherwise.
-        scale = np.sqrt(np.maximum(np.diag(information), 1e-300))
-        inverse = np.linalg.pinv(information / np.outer(scale, scale), rcond=1e-14, hermitian=True)
+        seen = np.diag(information)
+        scale = np.sqrt(np.where(seen > 0.0, seen, 1.0))
+        scaled = information / np.outer(scale, scale) + _LEAST_INFORMATION * np.eye(scale.size)
+        inverse = np.linalg.inv(scaled)
         result[np.ix_(inside, inside)] = inverse / np.outer(scale, scale)
         return result
 

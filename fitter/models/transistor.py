@@ -115,7 +115,7 @@ class Transistor:
             Where `t_j` is not 25 degC and the model has no temperature laws, or where it is no temperature.
         """
         if not np.all(np.isfinite(t_j)) or np.any(np.asarray(t_j) <= -KELVIN):
-            raise OperatingPointError(f"a junction temperature of {np.asarray(t_j)} C lies below absolute zero or is no number")
+            raise OperatingPointError(f"{np.asarray(t_j)} C is no junction temperature: below absolute zero")
         if np.all(np.asarray(t_j) == REFERENCE):
             return self
         if self.laws is None:

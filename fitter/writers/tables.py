@@ -12,6 +12,7 @@ import pandas as pd
 
 from fitter.comparison import Comparison
 from fitter.gate_charge import GateChargeCurve
+from fitter.leave_out import MEAN, LeftOut
 from fitter.model import FittedModel
 from fitter.part import Quantity
 from fitter.units import si_factor
@@ -24,8 +25,11 @@ __all__ = [
     "csv_text",
     "curves_frame",
     "gate_charge_frame",
+    "left_out_frame",
     "parameters_frame",
+    "ShownLeftOut",
     "shown_checks",
+    "shown_left_out",
 ]
 
 #: Unit in which each stated quantity is shown, as datasheets print it, and whether it changes sign with the channel.
@@ -133,6 +137,68 @@ def curves_frame(model: FittedModel) -> pd.DataFrame:
 
 def _file_factor(unit: str, base: str) -> float:
     return si_factor(unit, base) if base else 1.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class ShownLeftOut:
+    """A figure that was left out, in the units and with the signs of the datasheet.
+
+    Parameters
+    ----------
+    row : LeftOut
+        The figure in SI.
+    unit : str
+        Unit of the figures below.
+    given, predicted, low, high : float or None
+        [unit]; low <= predicted <= high.
+    """
+
+    row: LeftOut
+    unit: str
+    given: float
+    predicted: float | None
+    low: float | None
+    high: float | None
+
+
+def shown_left_out(model: FittedModel) -> tuple[ShownLeftOut, ...]:
+    """What was left out and predicted, in the units and with the signs of the datasheet."""
+    columns = {c.name: c for c in model.part.curves}
+    result = []
+    for row in model.left_out:
+        if row.condition != MEAN:
+            unit, factor, signed = SHOWN[row.quantity]
+        else:
+            curve = columns[row.left_out]
+            unit = curve.y_column.rpartition("_")[2]
+            factor = 1.0 / _file_factor(unit, curve.y_unit)
+            signed = curve.y_unit in _SIGNED_UNITS and curve.quantity is not Quantity.BODY_DIODE
+        factor *= model.sign if signed else 1.0
+        ends = [None if x is None else x * factor for x in (row.predicted, row.low, row.high)]
+        if factor < 0.0:
+            ends = [ends[0], ends[2], ends[1]]
+        result.append(
+            ShownLeftOut(
+                row=row, unit=unit, given=row.given * factor, predicted=ends[0], low=ends[1], high=ends[2],
+            )
+        )  # fmt: skip
+    return tuple(result)
+
+
+def left_out_frame(model: FittedModel) -> pd.DataFrame:
+    """Each group of data predicted from the others: a row for each figure, in the units of the datasheet."""
+    rows = [
+        (
+            s.row.left_out, s.row.quantity, s.unit, s.row.condition, s.given, s.predicted, s.low, s.high,
+            None if s.predicted is None else 100.0 * (s.predicted / s.given - 1.0), s.row.sigmas,
+        )
+        for s in shown_left_out(model)
+    ]  # fmt: skip
+    columns = [
+        "left_out", "quantity", "unit", "condition", "given", "predicted", "predicted_low", "predicted_high",
+        "deviation_percent", "sigmas",
+    ]  # fmt: skip
+    return pd.DataFrame(rows, columns=columns)
 
 
 def gate_charge_frame(curve: GateChargeCurve) -> pd.DataFrame:
