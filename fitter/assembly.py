@@ -169,9 +169,8 @@ def _points(part: Part, result: FitResult) -> tuple[CurveRow, ...]:
 
 
 def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter]) -> list[Notice]:
-    said = [
-        (p.name, f"{p.name} {p.note}") for p in parameters.values() if "bound" in p.note or (p.name == "r_d" and p.note)
-    ]
+    worth_saying = [p for p in parameters.values() if "bound" in p.note or (p.note and p.name == "r_d")]
+    said = [(p.name, f"{p.name} {p.note}") for p in worth_saying]
     open_ones = [p.name for p in parameters.values() if p.origin in ("fitted", "not determined")]
     said += [(u.names[0], u.text) for u in undetermined(result.estimate, open_ones)]
     curves = {c.name: c for c in part.curves}

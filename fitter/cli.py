@@ -98,9 +98,7 @@ def fit(
     ] = False,
     leave_out: Annotated[
         bool,
-        typer.Option(
-            "--leave-out", help="Leave out each curve and table value in turn and predict it from the others."
-        ),
+        typer.Option("--leave-out", help="Predict each curve and table value from all the others, too."),
     ] = False,
     strict: Annotated[
         bool,
@@ -119,6 +117,16 @@ def fit(
     screen.show_files(target, files)
     if strict and any(c.verdict == "outside limit" for c in model.checks):
         raise typer.Exit(LIMIT_VIOLATED)
+
+
+@app.command("next")
+def next_(folder: PartFolder) -> None:
+    """Say what to digitize next: how much each missing curve or table value would narrow the intervals, best first."""
+    from fitter import screen
+    from fitter.pipeline import next_to_digitize
+
+    model, found = next_to_digitize(folder)
+    screen.show_prospects(model, found)
 
 
 @app.command()

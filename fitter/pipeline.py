@@ -12,13 +12,14 @@ from fitter.errors import FitError, OperatingPointError
 from fitter.fitting.fit import fit
 from fitter.inspection import inspect
 from fitter.interface import Model
-from fitter.part import Notice, Part
+from fitter.part import Notice, Part, Quantity
+from fitter.prospects import Prospects, prospects
 from fitter.reader import read_part
 from fitter.sheet import sheet_files
 from fitter.writers import model_file, tables
 from fitter.writers.folder import replace_folder
 
-__all__ = ["OUTPUT_FOLDER", "fit_folder", "fit_part", "output_files", "write_outputs"]
+__all__ = ["OUTPUT_FOLDER", "fit_folder", "fit_part", "next_to_digitize", "output_files", "write_outputs"]
 
 #: Name of the output folder inside the part folder, unless told otherwise.
 OUTPUT_FOLDER = "model"
@@ -74,14 +75,43 @@ def fit_folder(folder: Path, *, use_gate_charge: bool = False, leave_out: bool =
     FitError
         Where a finding stops the fit, or the data cannot carry one.
     """
+    return fit_part(_judged(folder), use_gate_charge=use_gate_charge, leave_out=leave_out)
+
+
+def _judged(folder: Path) -> Part:
+    """The part in a folder, with what was found doubtful among its notices."""
     part = read_part(folder)
     findings = inspect(part)
     stops = [str(finding) for finding in findings if finding.severity == "stop"]
     if stops:
         raise FitError("\n".join(["these data would make a meaningless model:", *stops]))
     doubts = tuple(Notice(topic=f.topic, text=str(f)) for f in findings if f.severity == "doubtful")
-    part = replace(part, notices=part.notices + doubts)
-    return fit_part(part, use_gate_charge=use_gate_charge, leave_out=leave_out)
+    return replace(part, notices=part.notices + doubts)
+
+
+def next_to_digitize(folder: Path) -> tuple[Model, Prospects]:
+    """Fit everything that a part folder gives, and rank what could be given in addition.
+
+    Parameters
+    ----------
+    folder : Path
+        The part folder.
+
+    Returns
+    -------
+    Model, Prospects
+
+    Raises
+    ------
+    PartFolderError, FitError
+        As for `fit_folder`.
+    """
+    part = _judged(folder)
+    table = part.stated.gate_charge
+    typical = table is not None and any(x is not None and x.typ for x in (table.q_g, table.q_gs, table.q_gd))
+    result = fit(part, use_gate_charge=bool(part.curves_of(Quantity.GATE_CHARGE)) or typical)
+    model = assemble(part, result, Model)
+    return model, prospects(part, result, model.test_point())
 
 
 def output_files(model: Model) -> dict[str, bytes]:

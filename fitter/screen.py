@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import sys
 from collections.abc import Mapping, Sequence
 from pathlib import Path
@@ -19,8 +20,17 @@ if TYPE_CHECKING:
     from fitter.interface import Model
     from fitter.model import Interval
     from fitter.part import Part
+    from fitter.prospects import Prospects
 
-__all__ = ["show_files", "show_findings", "show_gate_charge", "show_left_out", "show_model", "show_reading"]
+__all__ = [
+    "show_files",
+    "show_findings",
+    "show_gate_charge",
+    "show_left_out",
+    "show_model",
+    "show_prospects",
+    "show_reading",
+]
 
 #: Width where the output is no terminal.
 _WIDTH = 118
@@ -135,6 +145,33 @@ def show_left_out(model: Model) -> None:
             f"{100.0 * (s.predicted / s.given - 1.0):+.1f} %", f"[{style}]{sigmas}[/{style}]" if style else sigmas,
         )  # fmt: skip
     _console().print(table)
+
+
+def show_prospects(model: Model, found: Prospects) -> None:
+    """How much narrower the intervals would be with one more curve or table value."""
+    labels = {"qg": "QG", "qgd": "QGD", "v_plateau": "plateau", "eoss": "Eoss"}
+    p = model.test_point()
+    sign = model.sign
+    console = _console()
+    console.print(
+        f"[bold]{model.part.name}[/bold]: half of the 95 % interval, relative to the figure, "
+        f"at VDD {sign * p.v_dd:g} V, ID {sign * p.i_d:g} A, VGS {sign * p.v_gs:g} V",
+        soft_wrap=True,
+    )
+    table = _table("with", *labels.values(), "narrower by", right=(*labels.values(), "narrower by"))
+
+    def row(what: str, widths: Mapping[str, float], gain: float | None) -> None:
+        cells = [f"{100.0 * widths[name]:.2g} %" for name in labels]
+        table.add_row(what, *cells, "" if gain is None else f"{100.0 * (1.0 - math.exp(-gain)):.0f} %")
+
+    row("all that is given", found.now, None)
+    for prospect in found.missing:
+        row(prospect.what, prospect.widths, prospect.gain)
+    for prospect in found.again:
+        row(f"{prospect.what}, clicked a second time", prospect.widths, prospect.gain)
+    console.print(table)
+    if not found.missing:
+        console.print("Every curve and table value that the fit can use for these figures is given.")
 
 
 def show_files(folder: Path, files: Sequence[str]) -> None:
