@@ -138,7 +138,8 @@ def gate_charge_curve(transistor: Transistor, point: OperatingPoint) -> GateChar
     Raises
     ------
     OperatingPointError
-        Where the channel cannot carry the load's current at the final VGS, or the point makes no sense.
+        Where the channel cannot carry the load's current at the final VGS, carries it at VGS = 0 already, or the
+        point makes no sense. A resistive load may end with less than its full current; QGD is no number then.
     """
     channel = transistor.channel
     load = _LoadLine(point, channel)
@@ -202,9 +203,12 @@ def _end_of_walk(point: OperatingPoint, channel: Channel, load: _LoadLine, inner
         return carried - current, g_ds - line.slope * (1.0 + g_m * c.r_s)
 
     plateau = inner_v_gs_1 + load.current(load.start) * channel.r_s
+    if np.any(inner_v_gs_1.real <= 0.0):
+        raise OperatingPointError("the channel conducts at VGS = 0 already: there is no gate-charge curve from there")
     if np.any(plateau.real >= point.v_gs):
+        share = f"{100.0 * _LOAD_LINE_START:g} % of " if point.load == "resistive" else ""
         raise OperatingPointError(
-            f"the channel does not carry the load's {point.i_d:g} A at VGS = {point.v_gs:g} V: "
+            f"the channel does not carry {share}the load's {point.i_d:g} A at VGS = {point.v_gs:g} V: "
             f"that takes {float(np.max(plateau.real)):.3g} V"
         )
     real = channel.real()
@@ -245,7 +249,7 @@ def read_gate_charge(q_g: ArrayLike, v_gs: ArrayLike, v_th: ArrayLike, window: f
     """Read QGS, QGD and the plateau off a gate-charge curve, fitted or digitized, by the rule of JESD24-2.
 
     The plateau voltage is VGS where dVGS/dQ first has its minimum. Line 1 is the regression of VGS on Q below
-    VGS(th), line 2 that over the on-state, taken as the upper half of the way from the plateau to the end.
+    VGS(th) and the plateau, line 2 that over the on-state: the upper half of the way from the plateau to the end.
     QGS is the charge where line 1 reaches the plateau voltage, QGD the charge where line 2 does, less QGS.
     (The rule as quoted in public documents; the standard itself was not at hand.)
 
@@ -281,9 +285,10 @@ def read_gate_charge(q_g: ArrayLike, v_gs: ArrayLike, v_th: ArrayLike, window: f
     total = q_g[..., -1]
     v_plateau = _flattest(q_g, v_gs, window)
     # Each point counts by the charge it stands for, so that the lines do not depend on how points are spread.
-    share = np.gradient(q_g.real, axis=-1) if q_g.shape[-1] > 1 else np.ones(q_g.shape)
+    share = np.gradient(q_g, axis=-1) if q_g.shape[-1] > 1 else np.ones(q_g.shape)
     half_way = 0.5 * (v_plateau + v_gs[..., -1])
-    first = share * (v_gs.real <= v_th.real[..., None])
+    # Where the load takes so little current that the plateau lies below VTH, the line ends below the plateau.
+    first = share * (v_gs.real <= np.minimum(v_th.real, 0.95 * v_plateau.real)[..., None])
     last = share * (v_gs.real >= half_way.real[..., None])
     with np.errstate(divide="ignore", invalid="ignore"):
         q_gs = _charge_at(q_g, v_gs, first, v_plateau)

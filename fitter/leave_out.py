@@ -231,11 +231,11 @@ def _nothing(predicted: float, low: float, high: float) -> bool:
 def _curve_row(curve: Curve, block: PointsBlock, estimate: Estimate) -> LeftOut:
     """A curve by its mean in the coordinate of its y axis: there its common errors are simplest."""
     used = block.used
-    quiet = replace(block, shift_x=0.0, shift_y=0.0)
 
     def mean(values: Values) -> Numbers:
-        return np.asarray(np.mean(quiet.function(values, quiet.x)[..., used], axis=-1, keepdims=True))
+        return np.asarray(np.mean(block.fitted(values)[..., used], axis=-1, keepdims=True))
 
+    quiet = replace(block, shift_x=0.0, shift_y=0.0)
     slope = np.real(quiet.curve(estimate.values)[1])[used]
     count = max(int(np.count_nonzero(used)), 1)
     independent = np.hypot(block.sigma_y[used], slope * block.sigma_x[used])

@@ -25,6 +25,8 @@ Array = NDArray[np.float64]
 
 #: Step of the slope, as a share of the points' spread along x.
 _SLOPE_STEP = 1e-6
+#: A point's true x is looked for within this many standard deviations of the clicked one.
+_FARTHEST = 3.0
 
 
 def nuisance(block: str, axis: str) -> ParameterDefinition:
@@ -130,27 +132,50 @@ class PointsBlock(_Digitized):
     ----------
     function : callable
         Takes values and x in its axis' coordinate, shape (..., m); returns y in its axis' coordinate.
+    begins : float
+        Lowest x, in the axis' coordinate, for which the model has a curve.
+    looks : int
+        How often a point's true x is looked for, by the tangent at the last one. 0 takes the slope at the clicked x:
+        enough where the curve is nearly straight over a reading error.
     """
 
     function: Callable[[Values, Numbers], Numbers]
+    begins: float = -np.inf
+    looks: int = 0
 
     def curve(self, values: Values) -> tuple[Numbers, Numbers]:
-        """The model and its slope at the points, common errors applied, in the axes' coordinates."""
+        """The model and its slope at the clicked x, common errors applied, in the axes' coordinates."""
         shift_x, shift_y = self._shifts(values)
-        x = self.x - shift_x
+        here, slope = self._tangent(values, self.x - shift_x)
+        return here + shift_y, slope
+
+    def _tangent(self, values: Values, x: Numbers) -> tuple[Numbers, Numbers]:
+        """The model and its slope at x; left of where it begins, along its tangent there."""
+        inside = np.where(np.real(x) < self.begins, self.begins, x)
         step = _SLOPE_STEP * max(float(np.ptp(self.x)), 1e-9)
-        both = self.function(values, np.concatenate([x, x + step], axis=-1))
+        both = self.function(values, np.concatenate([inside, inside + step], axis=-1))
         here, next_to_it = both[..., : self.x.size], both[..., self.x.size :]
-        return here + shift_y, (next_to_it - here) / step
+        slope = (next_to_it - here) / step
+        return here + slope * (x - inside), slope
 
     def deviations(self, values: Values) -> Numbers:
         """Distance of every point, used or not, in standard deviations of its reading error, shape (..., n)."""
-        model, slope = self.curve(values)
-        return (self.y - model) / np.sqrt(self.sigma_y**2 + slope**2 * self.sigma_x**2)
+        shift_x, shift_y = self._shifts(values)
+        x, y = self.x - shift_x, self.y - shift_y
+        at = x
+        for look in range(self.looks + 1):
+            model, slope = self._tangent(values, at)
+            off = y - model - slope * (x - at)
+            variance = self.sigma_y**2 + slope**2 * self.sigma_x**2
+            if look < self.looks:
+                moved = slope * off * self.sigma_x**2 / variance
+                far = np.abs(np.real(moved)) > _FARTHEST * self.sigma_x
+                at = x + np.where(far, _FARTHEST * self.sigma_x * np.sign(np.real(moved)), moved)
+        return np.asarray(off / np.sqrt(variance))
 
     def fitted(self, values: Values) -> Numbers:
         """The model at every point's x, without the common errors, in the axis' coordinate, shape (..., n)."""
-        return self.function(values, self.x)
+        return self.function(values, np.maximum(self.x, self.begins))
 
     def residuals(self, values: Values) -> Numbers:
         """Residuals and priors in standard deviations, shape (..., points + nuisances)."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -64,6 +65,12 @@ _GATE = tuple(d.name for d in GATE.values())
 #: The path of a gate-charge curve runs on beyond the last point by this share, so that no point lies past its end.
 _BEYOND = 1.1
 
+_CAPACITANCES = (Quantity.CISS, Quantity.COSS, Quantity.CRSS)
+#: Curves that begin at 0 along x.
+_FROM_ZERO = (*_CAPACITANCES, Quantity.BODY_DIODE)
+#: On a linear VDS axis the first volts, where capacitances fall steeply, are within a few reading errors of each other.
+_LOOKS = 2
+
 #: Groups of curves away from 25 degC.
 HOT_TRANSFER, HOT_OUTPUT, HOT_DIODE = "transfer hot", "output hot", "body_diode hot"
 
@@ -120,24 +127,23 @@ def curve_block(curve: Curve) -> PointsBlock | PathBlock:
         y = evaluate(Transistor.from_values(values), from_axis(x, curve.x_axis))
         return _model_to_axis(y, curve.y_axis)
 
-    return PointsBlock(**_digitized(curve), model_parameters=parameters, function=function)  # type: ignore[arg-type]
-
-
-def _not_below_zero(v: Numbers) -> Numbers:
-    """A point clicked at 0 V may come to lie below it by the reading error; the printed curve ends at 0."""
-    return np.where(v.real > 0.0, v, 0.0)
+    # A point clicked at 0 V may come to lie below it by the reading error; the printed curve ends at 0.
+    begins = 0.0 if curve.quantity in _FROM_ZERO and curve.x_axis.scale == "linear" else -np.inf
+    looks = _LOOKS if curve.quantity in _CAPACITANCES else 0
+    block = PointsBlock(**_digitized(curve), model_parameters=parameters, function=function)  # type: ignore[arg-type]
+    return replace(block, begins=begins, looks=looks)
 
 
 def _c_iss(_: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    return ("c_gs", *_GATE_DRAIN), lambda t, v: t.c_iss(_not_below_zero(v))
+    return ("c_gs", *_GATE_DRAIN), lambda t, v: t.c_iss(v)
 
 
 def _c_oss(_: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    return (*_DRAIN_SOURCE, *_GATE_DRAIN), lambda t, v: t.c_oss(_not_below_zero(v))
+    return (*_DRAIN_SOURCE, *_GATE_DRAIN), lambda t, v: t.c_oss(v)
 
 
 def _c_rss(_: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    return _GATE_DRAIN, lambda t, v: t.c_rss(_not_below_zero(v))
+    return _GATE_DRAIN, lambda t, v: t.c_rss(v)
 
 
 def _channel_parameters(t_j: float) -> tuple[str, ...]:
@@ -183,7 +189,7 @@ def _body_diode(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
     def evaluate(t: Transistor, v: Numbers) -> Numbers:
         if t.diode is None:
             raise FitError(f"{curve.name}: the model has no body diode")
-        return forward_current(_not_below_zero(v), t.diode, t_j)
+        return forward_current(v, t.diode, t_j)
 
     return _BODY_DIODE, evaluate
 

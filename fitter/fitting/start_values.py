@@ -189,10 +189,11 @@ def small_current_drop(part: Part) -> float:
 
 
 def sorted_curve(curves: tuple[Curve, ...]) -> tuple[Array, Array] | None:
-    """All points of some curves in rising order of x; None where there are none."""
+    """All points of some curves in rising order of x, none of them below 0; None where there are no curves."""
     if not curves:
         return None
-    x = np.concatenate([c.x for c in curves])
+    # Points clicked at 0 may come to lie below it by the reading error.
+    x = np.concatenate([np.maximum(c.x, 0.0) for c in curves])
     y = np.concatenate([c.y for c in curves])
     order = np.argsort(x, kind="stable")
     return x[order], y[order]

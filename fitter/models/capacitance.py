@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fitter.models.smooth import logistic, softplus
+from fitter.models.smooth import log1p, logistic, softplus
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
@@ -182,7 +182,7 @@ def depletion_capacitance(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: Array
     >>> round(float(depletion_capacitance(99.0, 1e-9, 1.0, 0.5)) * 1e9, 9)
     0.1
     """
-    return np.asarray(np.asarray(c_0) * np.exp(-np.asarray(m) * np.log1p(np.asarray(v) / np.asarray(phi))))
+    return np.asarray(np.asarray(c_0) * np.exp(-np.asarray(m) * log1p(np.asarray(v) / np.asarray(phi))))
 
 
 def depletion_charge(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike) -> Numbers:
@@ -206,7 +206,7 @@ def depletion_charge(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike)
     2.0
     """
     phi, rest = np.asarray(phi), 1.0 - np.asarray(m)
-    return np.asarray(np.asarray(c_0) * phi / rest * np.expm1(rest * np.log1p(np.asarray(v) / phi)))
+    return np.asarray(np.asarray(c_0) * phi / rest * np.expm1(rest * log1p(np.asarray(v) / phi)))
 
 
 def _shielded_voltage(v: Numbers, shield: Shield) -> Numbers:

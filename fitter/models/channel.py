@@ -114,7 +114,7 @@ def channel_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     v_gs, v_ds = np.asarray(v_gs), np.asarray(v_ds)
     source_side = softplus(v_gs - c.v_th, c.w)
     drain_side = softplus(v_gs - v_ds - c.v_th, c.w)
-    # The difference of squares as a product: no digits are lost where the two sides are nearly equal.
+    # The difference of squares as a product: fewer digits are lost where the two sides are nearly equal.
     square = (source_side - drain_side) * (source_side + drain_side)
     return np.asarray(0.5 * np.asarray(c.k) * square * (1.0 + np.asarray(c.lam) * _magnitude(v_ds)))
 
@@ -164,7 +164,7 @@ def terminal_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     Returns
     -------
     ndarray
-        [A]; solved to about 1e-13 of itself.
+        [A]; solved to about 1e-13 of itself, but for what rounding leaves of it below some millivolts of VDS.
     """
     v_gs, v_ds = np.asarray(v_gs), np.asarray(v_ds)
     if c.carries_derivatives or carries_derivatives(v_gs, v_ds):
@@ -245,12 +245,11 @@ def threshold_voltage(i_d: ArrayLike, c: Channel) -> Numbers:
         return lifted_root(lambda v: _excess_as_diode(v, i_d, c), root)
     # Without the drain's side and the resistances' drop; the true voltage is near.
     guess = np.asarray(c.v_th) + inverse_softplus(np.sqrt(2.0 * i_d / np.asarray(c.k)), c.w)
-    guess = np.maximum(guess + i_d * c.r_s, 1e-6)
+    # The whole drop over the resistances leaves the channel without a voltage.
+    drop = i_d * (np.asarray(c.r_s) + c.r_d)
+    guess = np.maximum(guess + i_d * c.r_s, 1.01 * drop + 1e-6)
     return increasing_root(
-        lambda v: _excess_as_diode(v, i_d, c),
-        guess,
-        np.full_like(guess, 1e-9),
-        guess + 2.0 + 100.0 * np.asarray(c.w),
+        lambda v: _excess_as_diode(v, i_d, c), guess, drop + 1e-9, guess + drop + 2.0 + 100.0 * np.asarray(c.w)
     )
 
 

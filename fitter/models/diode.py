@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from fitter.models.roots import carries_derivatives, increasing_root, lifted_root
+from fitter.models.smooth import log1p
 from fitter.models.temperature import KELVIN, REFERENCE
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
@@ -148,7 +149,7 @@ def forward_voltage(i: ArrayLike, d: BodyDiode, t_j: ArrayLike = REFERENCE) -> N
         [V]
     """
     i = np.asarray(i)
-    junction = np.asarray(d.n) * thermal_voltage(t_j) * np.log1p(i / saturation_current(t_j, d))
+    junction = np.asarray(d.n) * thermal_voltage(t_j) * log1p(i / saturation_current(t_j, d))
     return np.asarray(junction + i * series_resistance(t_j, d))
 
 
@@ -192,7 +193,7 @@ def _junction_voltages(v: Numbers, d: BodyDiode, t_j: ArrayLike) -> Numbers:
     i_s, r = saturation_current(t_j, d), series_resistance(t_j, d)
     upper = np.asarray(v / width)
     # With all the voltage over the resistance the junction would need this much: from there Newton's way is down.
-    guess = np.minimum(upper, np.log1p(v / np.maximum(r * i_s, 1e-300)))
+    guess = np.minimum(upper, log1p(v / np.maximum(r * i_s, 1e-300)))
     return increasing_root(
         lambda x: (width * x + r * i_s * np.expm1(x) - v, width + r * i_s * np.exp(x)),
         guess, np.zeros_like(upper), upper * (1.0 + 1e-12) + 1e-12,

@@ -40,7 +40,7 @@ def increasing_root(
         value, slope = function(x)
         low = np.where(value < 0.0, x, low)
         high = np.where(value > 0.0, x, high)
-        with np.errstate(divide="ignore", invalid="ignore"):
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             new = x - value / slope
         new = np.where((new >= low) & (new <= high), new, 0.5 * (low + high))
         new = np.where(value == 0.0, x, new)

@@ -7,12 +7,27 @@ from numpy.typing import ArrayLike
 
 from fitter.models.types import Numbers
 
-__all__ = ["inverse_softplus", "logistic", "softplus", "softplus_and_slope"]
+__all__ = ["inverse_softplus", "log1p", "logistic", "softplus", "softplus_and_slope"]
 
 
 def _minus_magnitude(t: Numbers) -> Numbers:
     """-|t|, as an analytic function on either side of Re t = 0."""
     return np.where(t.real > 0.0, -t, t)
+
+
+def log1p(z: Numbers) -> Numbers:
+    """ln(1 + z), for a complex z to first order in its imaginary part, which carries a derivative.
+
+    numpy's own loses all digits of a small complex argument.
+
+    Examples
+    --------
+    >>> complex(log1p(np.asarray(1e-20 + 1e-30j)))
+    (1e-20+1e-30j)
+    """
+    if not np.iscomplexobj(z):
+        return np.asarray(np.log1p(z))
+    return np.asarray(np.log1p(z.real) + 1j * (z.imag / (1.0 + z.real)))
 
 
 def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
@@ -36,7 +51,7 @@ def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
     1.0
     """
     x, w = np.asarray(x), np.asarray(w)
-    return np.asarray(np.where(x.real > 0.0, x, 0.0) + w * np.log1p(np.exp(_minus_magnitude(x / w))))
+    return np.asarray(np.where(x.real > 0.0, x, 0.0) + w * log1p(np.exp(_minus_magnitude(x / w))))
 
 
 def logistic(x: ArrayLike, w: ArrayLike) -> Numbers:
@@ -84,7 +99,7 @@ def softplus_and_slope(x: ArrayLike, w: ArrayLike) -> tuple[Numbers, Numbers]:
     t = x / np.asarray(w)
     above = t.real > 0.0
     e = np.exp(np.where(above, -t, t))
-    return np.where(above, x, 0.0) + w * np.log1p(e), np.where(above, 1.0, e) / (1.0 + e)
+    return np.where(above, x, 0.0) + w * log1p(e), np.where(above, 1.0, e) / (1.0 + e)
 
 
 def inverse_softplus(y: ArrayLike, w: ArrayLike) -> Numbers:

@@ -115,7 +115,9 @@ class Transistor:
             Where `t_j` is not 25 degC and the model has no temperature laws, or where it is no temperature.
         """
         if not np.all(np.isfinite(t_j)) or np.any(np.asarray(t_j) <= -KELVIN):
-            raise OperatingPointError(f"{np.asarray(t_j)} C is no junction temperature: below absolute zero")
+            raise OperatingPointError(
+                f"{np.asarray(t_j)} C is no junction temperature: a finite one above absolute zero is expected"
+            )
         if np.all(np.asarray(t_j) == REFERENCE):
             return self
         if self.laws is None:

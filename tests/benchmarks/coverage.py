@@ -1,0 +1,98 @@
+"""Prints how often 95 % intervals hold the truth, on data made from the fitted models themselves.
+
+Run as ``python tests/benchmarks/coverage.py [--count 300] [demo part ...]``. For each part: a model is fitted, its
+parameters are taken for the truth, curves and table values are made from it and clicked again with other errors, and
+each of these is fitted. Printed are the share of intervals that hold the truth, and the spread of the estimates over
+the one that the information matrix promises (1 is the Cramer-Rao bound).
+"""
+
+import argparse
+import os
+import sys
+from concurrent.futures import ProcessPoolExecutor
+from pathlib import Path
+
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+sys.path.insert(0, str(Path(__file__).parents[1]))
+
+import numpy as np
+from redigitize import exact, inside, redigitize
+
+from fitter.comparison import compare
+from fitter.fitting.determination import OPEN, spreads
+from fitter.fitting.fit import fit
+from fitter.reader import read_part
+
+DEMOS = Path(__file__).resolve().parents[2] / "digitized_curves"
+PARTS = ("cargo_80v", "wall_box_650v", "ferry_charger_1200v", "camper_van_p40v")
+FIGURES = ("qg", "qgs", "qgd", "v_plateau", "qoss", "eoss")
+
+
+def truth_of(name):
+    part = read_part(DEMOS / name)
+    return part, inside(fit(part, use_gate_charge=True).estimate.values)
+
+
+def one(job):
+    """Figures and parameters of one re-digitization: name -> (truth, estimate, low, high, standard error)."""
+    part, values, seed = job
+    again = redigitize(part, values, seed)
+    result = fit(again, use_gate_charge=True)
+    true = {c.quantity: c.fitted for c in compare(part, exact(values), (), False)}
+    rows = {}
+    for c in compare(again, result.estimate, (), True):
+        if c.quantity in FIGURES:
+            rows[c.quantity] = (true[c.quantity], c.fitted, c.low, c.high, (c.high - c.low) / 3.92)
+    sigma = np.sqrt(np.diag(result.estimate.covariance))
+    spread = spreads(result.estimate)
+    same_form = {n for n in values if n[:2] in ("s1", "s2")} == {
+        n for n in result.estimate.space.names if n[:2] in ("s1", "s2")
+    }
+    for d, u, s in zip(result.estimate.space.free, result.estimate.coordinates, sigma, strict=True):
+        if d.name not in values or d.name in result.on_bound or spread[d.name] > OPEN:
+            continue
+        if not same_form and d.name.endswith(("_gd", "_ds")):
+            continue
+        true_u = np.log(values[d.name]) if d.scale == "log" else values[d.name] / d.typical
+        rows[d.name] = (true_u, u, u - 1.96 * s, u + 1.96 * s, s)
+    return rows
+
+
+def study(name, count, workers):
+    part, values = truth_of(name)
+    jobs = [(part, values, seed) for seed in range(count)]
+    with ProcessPoolExecutor(workers) as pool:
+        found = list(pool.map(one_safely, jobs, chunksize=4))
+    failed = sum(f is None for f in found)
+    found = [f for f in found if f is not None]
+    print(f"\n{name}: {len(found)} fits" + (f", {failed} failed" if failed else ""))
+    print(f"  {'':14s} {'n':>4s} {'held':>7s} {'spread/promised':>16s}")
+    for figure in dict.fromkeys(key for rows in found for key in rows):
+        table = np.array([rows[figure] for rows in found if figure in rows], dtype=float)
+        true, estimate, low, high, sigma = table.T
+        held = np.mean((low <= true) & (true <= high))
+        spread = np.std(estimate - true) / np.median(sigma)
+        print(f"  {figure:14s} {len(table):4d} {100 * held:6.1f}% {spread:16.3f}")
+    sys.stdout.flush()
+
+
+def one_safely(job):
+    try:
+        return one(job)
+    except Exception as error:
+        print(f"seed {job[2]}: {type(error).__name__}: {error}", file=sys.stderr)
+        return None
+
+
+def main():
+    parser = argparse.ArgumentParser(description=__doc__.split("\n")[0])
+    parser.add_argument("parts", nargs="*", default=PARTS)
+    parser.add_argument("--count", type=int, default=300)
+    parser.add_argument("--workers", type=int, default=2)
+    arguments = parser.parse_args()
+    for name in arguments.parts:
+        study(name, arguments.count, arguments.workers)
+
+
+if __name__ == "__main__":
+    main()
