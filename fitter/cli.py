@@ -153,6 +153,25 @@ def netlist(
 
 
 @app.command()
+def decks(
+    model: ModelFile,
+    out: Annotated[Path, typer.Option("--out", metavar="DIR", help="Folder to write into.")],
+    tj: Junction = 25.0,
+) -> None:
+    """Write ready-to-run circuits that repeat what the datasheet measures, each with the values to expect."""
+    from fitter.interface import load_model
+    from fitter.writers.decks import deck_files
+    from fitter.writers.folder import replace_folder
+
+    loaded = load_model(model)
+    with _told(loaded.extrapolation(tj)):
+        files = {name: text.encode() for name, text in deck_files(loaded, tj).items()}
+    replace_folder(out, files, files)
+    for name in files:
+        typer.echo(out / name)
+
+
+@app.command()
 def charge(
     model: ModelFile,
     vdd: Annotated[float, typer.Option("--vdd", metavar="V", help="Supply of the load circuit in volts.")],
