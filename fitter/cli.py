@@ -5,6 +5,7 @@ Whatever takes long to import is imported inside the commands, so that help text
 
 from __future__ import annotations
 
+import io
 import os
 import sys
 import warnings
@@ -21,7 +22,7 @@ from fitter.errors import ExtrapolationWarning, FitterError
 __all__ = ["app", "main"]
 
 #: Exit statuses besides 0.
-LIMIT_VIOLATED, BAD_INPUT, OWN_FAULT = 1, 2, 3
+LIMIT_VIOLATED, BAD_INPUT, OWN_FAULT, INTERRUPTED = 1, 2, 3, 130
 
 app = typer.Typer(
     name="fetwright",
@@ -107,10 +108,10 @@ def fit(
 ) -> None:
     """Fit the model: read, check, fit, predict the gate charge, compare it with what is stated, write everything."""
     from fitter import screen
-    from fitter.pipeline import OUTPUT_FOLDER, fit_folder, write_outputs
+    from fitter.pipeline import fit_folder, output_target, write_outputs
 
+    target = output_target(folder, out)
     model = fit_folder(folder, use_gate_charge=use_gate_charge, leave_out=leave_out)
-    target = folder / OUTPUT_FOLDER if out is None else out
     files = write_outputs(model, target)
     screen.show_model(model)
     screen.show_left_out(model)
@@ -217,18 +218,30 @@ def main() -> None:
     """Run the command; the one place where an error becomes a message and an exit status."""
     # The matrices are small: threads that wait for each other cost more than they save, on a busy machine twentyfold.
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")  # a screen that lacks a character gets a question mark
     try:
-        app()
+        try:
+            app()
+        finally:
+            sys.stdout.flush()
+    except SystemExit as end:
+        if isinstance(end.__context__, BrokenPipeError):
+            raise SystemExit(0) from None  # whoever read the output has gone
+        if end.code == INTERRUPTED:
+            typer.echo("fetwright: interrupted", err=True)
+        raise
     except FitterError as error:
         _fail(f"fetwright: {error}", BAD_INPUT)
     except MemoryError:
         _fail("fetwright: out of memory", BAD_INPUT)
-    except KeyboardInterrupt:
-        _fail("fetwright: interrupted; nothing was written", 130)
     except BrokenPipeError:
-        # Whoever read the output has gone; writing to the closed pipe once more at exit would complain.
+        # Writing to the closed pipe once more at exit would complain.
         sys.stderr.close()
         raise SystemExit(0) from None
+    except OSError as error:
+        _fail(f"fetwright: {error.strerror or error}", BAD_INPUT)
     except Exception as error:
         import traceback
 

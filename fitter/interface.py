@@ -84,8 +84,10 @@ def load_model(path: str | os.PathLike[str]) -> Model:
     try:
         if not path.is_file():
             raise ModelFileError(f"{path}: no such file; `fetwright fit` writes one")
+        if path.stat().st_size > model_file.LARGEST:
+            raise ModelFileError(f"{path}: a model file has at most {model_file.LARGEST} bytes")
         text = path.read_text(encoding="utf-8")
-    except (OSError, UnicodeDecodeError) as error:
+    except (OSError, ValueError) as error:
         raise ModelFileError(f"{path}: cannot be read as a text file ({error})") from error
     try:
         return model_file.model_from_text(text, Model)

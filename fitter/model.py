@@ -35,6 +35,8 @@ Array = NDArray[np.float64]
 
 #: A point this little beyond the last click is no extrapolation.
 _SLACK = 1.02
+#: Largest voltage [V] and current [A] of an operating point.
+_LARGEST = 1e5
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -405,4 +407,6 @@ def operating_point(vdd: float, i_d: float, v_gs: float, load: str) -> Operating
     for name, value in figures.items():
         if not np.isfinite(value) or value == 0.0:
             raise OperatingPointError(f"{name} = {value:g} makes no gate-charge test; give a figure other than zero")
+        if abs(value) > _LARGEST:
+            raise OperatingPointError(f"{name} = {value:g} is beyond every transistor: at most {_LARGEST:g} is taken")
     return OperatingPoint(v_dd=abs(vdd), i_d=abs(i_d), v_gs=abs(v_gs), load=load)  # type: ignore[arg-type]

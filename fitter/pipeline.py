@@ -8,7 +8,7 @@ from pathlib import Path
 
 from fitter import leave_out as checks
 from fitter.assembly import assemble
-from fitter.errors import FitError, OperatingPointError
+from fitter.errors import FitError, OperatingPointError, OutputError
 from fitter.fitting.fit import fit
 from fitter.inspection import inspect
 from fitter.interface import Model
@@ -19,7 +19,15 @@ from fitter.sheet import sheet_files
 from fitter.writers import model_file, tables
 from fitter.writers.folder import replace_folder
 
-__all__ = ["OUTPUT_FOLDER", "fit_folder", "fit_part", "next_to_digitize", "output_files", "write_outputs"]
+__all__ = [
+    "OUTPUT_FOLDER",
+    "fit_folder",
+    "fit_part",
+    "next_to_digitize",
+    "output_files",
+    "output_target",
+    "write_outputs",
+]
 
 #: Name of the output folder inside the part folder, unless told otherwise.
 OUTPUT_FOLDER = "model"
@@ -150,6 +158,32 @@ def _gate_charge_text(model: Model) -> str:
     return tables.csv_text(tables.gate_charge_frame(curve))
 
 
+def output_target(folder: Path, out: Path | None) -> Path:
+    """Where the outputs of a part folder go.
+
+    Parameters
+    ----------
+    folder : Path
+        The part folder.
+    out : Path or None
+        What the user wants; None for ``model`` inside the part folder.
+
+    Raises
+    ------
+    OutputError
+        Where it is the part folder, or a folder that holds it: input would be mixed with output, or lost.
+    """
+    if out is None:
+        return folder / OUTPUT_FOLDER
+    try:
+        inside, outside = folder.resolve(), out.resolve()
+    except (OSError, RuntimeError, ValueError) as error:
+        raise OutputError(f"{out}: cannot be written ({error})") from error
+    if outside == inside or outside in inside.parents:
+        raise OutputError(f"{out}: that holds the part folder's own files; choose another --out")
+    return out
+
+
 def write_outputs(model: Model, target: Path) -> tuple[str, ...]:
     """Write everything into a folder, all or nothing.
 
@@ -171,6 +205,12 @@ def write_outputs(model: Model, target: Path) -> tuple[str, ...]:
         Where the folder cannot be written; then nothing has changed.
     """
     files = output_files(model)
+    taken = [name for name in files if (target / name).exists()]
+    if taken and not (target / "model.json").exists():
+        raise OutputError(
+            f"{target}: {taken[0]} is there, but no model.json: it is not an earlier output of this tool and would be "
+            "lost; choose another --out"
+        )
     replace_folder(target, files, {*_TEXT_FILES, *_SHEET_FILES, *_earlier_subcircuit(target)})
     return tuple(files)
 

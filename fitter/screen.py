@@ -58,13 +58,16 @@ def _table(*columns: str, right: Sequence[str] = ()) -> Table:
 
 def show_reading(part: Part) -> None:
     """What was read: the part, its curves, what the reader assumed."""
-    console = _console()
-    console.print(f"[bold]{part.name}[/bold]: {part.channel}-channel, {part.v_ds_max:g} V, gate {part.v_gs_max:g} V")
+    console, sign = _console(), -1.0 if part.channel == "p" else 1.0
+    console.print(
+        f"[bold]{part.name}[/bold]: {part.channel}-channel, {sign * part.v_ds_max:g} V, gate {part.v_gs_max:g} V"
+    )
     table = _table("curve", "points", "from", "to", "file", right=("points", "from", "to"))
     for curve in part.curves:
         unit = curve.x_unit.replace("degC", "C")
         ends = [
-            f"{x:.4g} C" if unit == "C" and curve.x_unit == "degC" else engineering(x, unit) for x in curve.x[[0, -1]]
+            f"{x:.4g} C" if curve.x_unit == "degC" else engineering(sign * x if unit == "V" else x, unit)
+            for x in curve.x[[0, -1]]
         ]
         table.add_row(curve.name, str(curve.x.size), *ends, escape(curve.file))
     console.print(table)

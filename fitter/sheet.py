@@ -8,6 +8,7 @@ from collections.abc import Sequence
 
 import matplotlib as mpl
 import matplotlib.lines
+from matplotlib import font_manager
 from matplotlib.figure import Figure
 from matplotlib.gridspec import GridSpec
 
@@ -134,8 +135,9 @@ def _draw_head(figure: Figure, model: FittedModel) -> None:
 
 
 def _shortened(text: str, most: int) -> str:
-    # A dollar sign would begin a formula.
-    plain = " ".join(text.split()).replace("$", "\uff04")
+    # What the font lacks would make the plot warn; a dollar sign would begin a formula.
+    known = font_manager.get_font(font_manager.findfont("DejaVu Sans")).get_charmap()
+    plain = "".join(c if ord(c) in known else "?" for c in " ".join(text.split())).replace("$", r"\$")
     return plain if len(plain) <= most else plain[: most - 1].rstrip() + "\N{HORIZONTAL ELLIPSIS}"
 
 

@@ -7,15 +7,19 @@ import ctypes.util
 import os
 import re
 import shutil
+import stat
 import tempfile
-from collections.abc import Collection, Mapping
+from collections.abc import Collection, Iterator, Mapping
+from contextlib import contextmanager
 from pathlib import Path
 
 from fitter.errors import OutputError
 
 __all__ = ["replace_folder", "write_file"]
 
-_MARK = ".fetwright-"
+#: Begin the names of what a run has beside its target: what is new, and what is set aside.
+_MARK, _ASIDE = ".fetwright-", ".fetwright-aside-"
+_OLD = "old"
 _AT_FDCWD = -100
 _RENAME_EXCHANGE = 2
 
@@ -40,31 +44,34 @@ def replace_folder(target: Path, files: Mapping[str, bytes], own: Collection[str
     OutputError
         Where the folder cannot be written; then nothing has changed.
     """
-    target = Path(os.path.abspath(target))  # noqa: PTH100 - Path.resolve would follow a link that the user set up on purpose
-    if target.is_symlink():
-        target = target.resolve()
-    if target.exists() and not target.is_dir():
-        raise OutputError(f"{target.name}: there is a file of that name; choose another --out")
     new: Path | None = None
-    try:
-        target.parent.mkdir(parents=True, exist_ok=True)
-        _sweep(target)
-        new = Path(tempfile.mkdtemp(prefix=f".{target.name}{_MARK}{os.getpid()}-", dir=target.parent))
-        for name, content in files.items():
-            _write_through(new / name, content)
-        if target.is_dir():
-            _carry_over(target, new, {*own, *files})
-        new.chmod(0o777 & ~_umask())
-        _put_in_place(new, target)
-    except OSError as error:
-        raise OutputError(f"{target}: cannot be written ({error.strerror or error}); nothing was changed") from error
-    finally:
-        if new is not None and new.exists():
-            shutil.rmtree(new, ignore_errors=True)
+    with _said(target):
+        target = Path(os.path.abspath(target))  # noqa: PTH100 - a link that the user set up on purpose stays one
+        if target.is_symlink():
+            target = target.resolve(strict=False)
+        if target.exists() and not target.is_dir():
+            raise OutputError(f"{target.name}: there is a file of that name; choose another --out")
+        try:
+            target.parent.mkdir(parents=True, exist_ok=True)
+            _sweep(target)
+            new = Path(tempfile.mkdtemp(prefix=f".{target.name}{_MARK}{os.getpid()}-", dir=target.parent))
+            for name, content in files.items():
+                _write_through(new / name, content)
+            mode = 0o777 & ~_umask()
+            if target.is_dir():
+                mode = stat.S_IMODE(target.stat().st_mode)
+                _carry_over(target, new, {*own, *files})
+            new.chmod(mode)
+            _put_in_place(new, target)
+        finally:
+            if new is not None and new.exists():
+                shutil.rmtree(new, ignore_errors=True)
 
 
 def write_file(target: Path, content: bytes) -> None:
     """Write one file so that it is either the old one or the new one, whenever it is looked at.
+
+    What is no ordinary file, such as a device or a pipe, is written to as it is.
 
     Parameters
     ----------
@@ -78,17 +85,35 @@ def write_file(target: Path, content: bytes) -> None:
     OutputError
         Where it cannot be written; then nothing has changed.
     """
-    new: str | None = None
+    new: Path | None = None
+    with _said(target):
+        if target.exists() and not target.is_file() and not target.is_dir():
+            target.write_bytes(content)
+            return
+        try:
+            _sweep(target)
+            mode = stat.S_IMODE(target.stat().st_mode) if target.exists() else 0o666 & ~_umask()
+            handle, name = tempfile.mkstemp(prefix=f".{target.name}{_MARK}{os.getpid()}-", dir=target.parent)
+            new = Path(name)
+            os.close(handle)
+            _write_through(new, content)
+            new.chmod(mode)
+            new.replace(target)
+        finally:
+            if new is not None:
+                new.unlink(missing_ok=True)
+
+
+@contextmanager
+def _said(target: Path) -> Iterator[None]:
+    """Whatever the system objects to becomes an `OutputError`."""
     try:
-        handle, new = tempfile.mkstemp(prefix=f".{target.name}{_MARK}", dir=target.parent)
-        os.close(handle)
-        _write_through(Path(new), content)
-        Path(new).chmod(0o666 & ~_umask())
-        Path(new).replace(target)
+        yield
     except OSError as error:
-        if new is not None:
-            Path(new).unlink(missing_ok=True)
         raise OutputError(f"{target}: cannot be written ({error.strerror or error}); nothing was changed") from error
+    except (ValueError, RuntimeError) as error:
+        # A name with a zero byte, links that lead in a circle.
+        raise OutputError(f"{target}: cannot be written ({error}); nothing was changed") from error
 
 
 def _write_through(path: Path, content: bytes) -> None:
@@ -109,6 +134,8 @@ def _carry_over(old: Path, new: Path, own: Collection[str]) -> None:
     """Give the new folder what the old one holds beside the tool's own files: linked, or else copied."""
     for entry in old.iterdir():
         if entry.name in own:
+            if entry.is_dir() and not entry.is_symlink():
+                raise OutputError(f"{entry}: a folder of that name is in the way of a file; choose another --out")
             continue
         if entry.is_dir() and not entry.is_symlink():
             shutil.copytree(entry, new / entry.name, symlinks=True, copy_function=_link_or_copy)
@@ -130,15 +157,16 @@ def _put_in_place(new: Path, target: Path) -> None:
         return
     if _exchange(new, target):
         return
-    aside = Path(tempfile.mkdtemp(prefix=f".{target.name}{_MARK}{os.getpid()}-", dir=target.parent)) / "old"
-    target.rename(aside)
+    aside = Path(tempfile.mkdtemp(prefix=f".{target.name}{_ASIDE}{os.getpid()}-", dir=target.parent))
     try:
-        new.rename(target)
-    except OSError:
-        aside.rename(target)
-        raise
+        target.rename(aside / _OLD)
+        try:
+            new.rename(target)
+        except OSError:
+            (aside / _OLD).rename(target)
+            raise
     finally:
-        shutil.rmtree(aside.parent, ignore_errors=True)
+        shutil.rmtree(aside, ignore_errors=True)
 
 
 def _exchange(first: Path, second: Path) -> bool:
@@ -152,12 +180,18 @@ def _exchange(first: Path, second: Path) -> bool:
 
 
 def _sweep(target: Path) -> None:
-    """Remove what runs that were killed left beside the target; those of living processes stay."""
-    left = re.compile(re.escape(f".{target.name}{_MARK}") + r"(\d+)-")
+    """Remove what runs that were killed left beside the target; what they had set aside goes back first."""
+    left = re.compile(re.escape(f".{target.name}") + f"(?:{re.escape(_MARK)}|{re.escape(_ASIDE)})" + r"(\d+)-")
     for entry in target.parent.iterdir():
         found = left.match(entry.name)
-        if found and not _alive(int(found[1])):
-            shutil.rmtree(entry, ignore_errors=True)
+        if not found or _alive(int(found[1])):
+            continue
+        if not entry.is_dir():
+            entry.unlink(missing_ok=True)
+            continue
+        if _ASIDE in entry.name and (entry / _OLD).is_dir() and not target.exists():
+            (entry / _OLD).rename(target)
+        shutil.rmtree(entry, ignore_errors=True)
 
 
 def _alive(process: int) -> bool:

@@ -27,15 +27,17 @@ from fitter.models.types import scalar
 from fitter.parameters import Parameter
 from fitter.part import Notice, Part
 from fitter.writers.plain import from_plain, to_plain
+from fitter.writers.tables import SHOWN
 
-__all__ = ["FORMAT", "FORMAT_VERSION", "model_from_text", "model_text"]
+__all__ = ["FORMAT", "FORMAT_VERSION", "LARGEST", "model_from_text", "model_text"]
 
 FORMAT = "fetwright model"
 FORMAT_VERSION = 1
 
 Model = TypeVar("Model", bound=FittedModel)
 
-_LARGEST = 4_000_000
+#: Most characters of a model file.
+LARGEST = 4_000_000
 _NAME = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,31}")
 _FREE = {**DEFINITIONS, ON_STATE_RATIO.name: ON_STATE_RATIO, ACCUMULATION_RATIO.name: ACCUMULATION_RATIO}
 
@@ -133,8 +135,8 @@ def model_from_text(text: str, kind: type[Model]) -> Model:
     ModelFileError
         Where the text is no model file of this format, or anything in it is not what it should be.
     """
-    if len(text) > _LARGEST:
-        raise ModelFileError(f"the model file has {len(text)} characters; at most {_LARGEST} are read")
+    if len(text) > LARGEST:
+        raise ModelFileError(f"the model file has {len(text)} characters; at most {LARGEST} are read")
     try:
         data = json.loads(text)
     except (ValueError, RecursionError) as error:
@@ -149,6 +151,7 @@ def model_from_text(text: str, kind: type[Model]) -> Model:
         raise ModelFileError("model file.part.name: expected a letter, then letters, digits, underscores; at most 32")
     estimate = _estimate(stored.estimate)
     _check_values(stored, estimate)
+    _check_rest(stored)
     return kind(
         part=stored.part,
         parameters=stored.parameters,
@@ -177,6 +180,9 @@ def _estimate(stored: _StoredEstimate) -> Estimate:
     covariance: NDArray[np.float64] = np.array(stored.covariance, dtype=float).reshape(n, n)
     if np.any(np.diag(covariance) < 0.0) or not np.allclose(covariance, covariance.T, rtol=1e-6, atol=0.0):
         raise ModelFileError(f"{where}.covariance: expected a symmetric matrix with no negative variance")
+    sigma = np.sqrt(np.diag(covariance))
+    if np.any(np.abs(covariance) > np.outer(sigma, sigma) * (1.0 + 1e-6)):
+        raise ModelFileError(f"{where}.covariance: a correlation lies beyond -1 to 1")
     space = ParameterSpace(
         free=tuple(_FREE[name] for name in stored.free), fixed=stored.fixed, complete=stored.assumption
     )
@@ -201,3 +207,23 @@ def _check_values(stored: _Stored, estimate: Estimate) -> None:
             raise ModelFileError(f"model file.parameters.{name[:40]}: its name should be {name[:40]!r}")
         if name in values and not math.isclose(parameter.value, scalar(values[name]), rel_tol=1e-6, abs_tol=1e-30):
             raise ModelFileError(f"model file.parameters.{name}: its value is not the one the estimate gives")
+
+
+def _check_rest(stored: _Stored) -> None:
+    """What types alone do not say."""
+    part, known = stored.part, stored.validity
+    if part.v_ds_max <= 0.0 or part.v_gs_max <= 0.0:
+        raise ModelFileError("model file.part: ratings must be above zero")
+    package = (part.package.r_g, part.package.l_g, part.package.l_d, part.package.l_s)
+    if any(x is not None and x < 0.0 for x in package):
+        raise ModelFileError("model file.part.package: a resistance or inductance is negative")
+    for name in ("capacitance_v_ds", "current_v_ds", "v_gs", "i_d", "t_j"):
+        ends = getattr(known, name)
+        if ends is not None and (len(ends) != 2 or ends[0] > ends[1]):
+            raise ModelFileError(f"model file.validity.{name}: expected a lowest and a highest value")
+    for check in stored.checks:
+        if check.quantity not in SHOWN:
+            raise ModelFileError(f"model file.checks: unknown quantity {check.quantity[:40]!r}")
+    for c in stored.correlations:
+        if c.first not in _FREE or c.second not in _FREE or abs(c.coefficient) > 1.0 + 1e-9:
+            raise ModelFileError("model file.correlations: an unknown parameter, or a coefficient beyond -1 to 1")

@@ -16,6 +16,7 @@ T = TypeVar("T")
 
 _LONGEST_TEXT = 4000
 _MOST_ITEMS = 20000
+_LARGEST_WHOLE = 10**300
 
 
 def to_plain(value: Any, leave_out: tuple[str, ...] = ()) -> Any:  # noqa: ANN401
@@ -88,7 +89,9 @@ def _from_plain(kind: Any, data: Any, where: str) -> Any:  # noqa: ANN401
     if is_dataclass(kind):
         return _dataclass(kind, data, where)
     if kind is float:
-        if isinstance(data, bool) or not isinstance(data, int | float) or not math.isfinite(data):
+        # A whole number may be too large for a float, and too large to be tried.
+        whole = isinstance(data, int) and not isinstance(data, bool) and abs(data) < _LARGEST_WHOLE
+        if not whole and not (isinstance(data, float) and math.isfinite(data)):
             raise _wrong(where, data, "a finite number")
         return float(data)
     if kind is int:
@@ -120,5 +123,11 @@ def _dataclass(kind: Any, data: Any, where: str) -> Any:  # noqa: ANN401
     return kind(**{key: _from_plain(hints[key], value, f"{where}.{key}") for key, value in data.items()})
 
 
+def _short(found: object) -> str:
+    """What was found, in a few characters; a huge whole number is not even turned into text."""
+    huge = isinstance(found, int) and abs(found) >= _LARGEST_WHOLE
+    return "a huge number" if huge else repr(str(found)[:40])
+
+
 def _wrong(where: str, found: object, expected: str) -> ModelFileError:
-    return ModelFileError(f"{where}: found {str(found)[:40]!r}, expected {expected}")
+    return ModelFileError(f"{where}: found {_short(found)}, expected {expected}")

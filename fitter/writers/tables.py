@@ -14,7 +14,6 @@ from fitter.comparison import Comparison
 from fitter.gate_charge import GateChargeCurve
 from fitter.leave_out import MEAN, LeftOut
 from fitter.model import FittedModel
-from fitter.part import Quantity
 from fitter.units import si_factor
 
 __all__ = [
@@ -124,10 +123,8 @@ def curves_frame(model: FittedModel) -> pd.DataFrame:
         curve = curves[point.curve]
         x_unit, y_unit = curve.x_column.rpartition("_")[2], curve.y_column.rpartition("_")[2]
         x_factor, y_factor = _file_factor(x_unit, curve.x_unit), _file_factor(y_unit, curve.y_unit)
-        # A body diode's forward voltage and current are printed positive for either channel.
-        forward = curve.quantity is Quantity.BODY_DIODE
-        x_sign = model.sign if curve.x_unit in _SIGNED_UNITS and not forward else 1.0
-        y_sign = model.sign if curve.y_unit in _SIGNED_UNITS and not forward else 1.0
+        x_sign = model.sign if curve.x_unit in _SIGNED_UNITS else 1.0
+        y_sign = model.sign if curve.y_unit in _SIGNED_UNITS else 1.0
         rows.append((
             point.curve, x_sign * point.x / x_factor, x_unit, y_sign * point.y / y_factor, y_unit,
             y_sign * point.fitted / y_factor, point.residual,
@@ -172,7 +169,7 @@ def shown_left_out(model: FittedModel) -> tuple[ShownLeftOut, ...]:
             curve = columns[row.left_out]
             unit = curve.y_column.rpartition("_")[2]
             factor = 1.0 / _file_factor(unit, curve.y_unit)
-            signed = curve.y_unit in _SIGNED_UNITS and curve.quantity is not Quantity.BODY_DIODE
+            signed = curve.y_unit in _SIGNED_UNITS
         factor *= model.sign if signed else 1.0
         ends = [None if x is None else x * factor for x in (row.predicted, row.low, row.high)]
         if factor < 0.0:
@@ -207,6 +204,17 @@ def gate_charge_frame(curve: GateChargeCurve) -> pd.DataFrame:
     return pd.DataFrame(dict(zip(GATE_CHARGE_COLUMNS, columns, strict=True)))
 
 
+def _no_formula(cell: object) -> object:
+    return f"'{cell}" if isinstance(cell, str) and cell.startswith(("=", "+", "-", "@", "\t", "\r")) else cell
+
+
 def csv_text(frame: pd.DataFrame) -> str:
-    """A table as CSV: comma, a header line, ten significant digits, empty cells for what is not known."""
+    """A table as CSV: comma, a header line, ten significant digits, empty cells for what is not known.
+
+    A text that a spreadsheet would take for a formula gets an apostrophe in front.
+    """
+    texts = frame.select_dtypes(exclude="number").columns
+    frame = frame.copy()
+    for name in texts:
+        frame[name] = frame[name].map(_no_formula)
     return str(frame.to_csv(index=False, float_format="%.10g", lineterminator="\n"))

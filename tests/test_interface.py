@@ -1,0 +1,421 @@
+"""The Python interface: what is public, the model's methods, the plots, and the sheet."""
+
+from __future__ import annotations
+
+import struct
+import subprocess
+import sys
+from collections.abc import Mapping
+from dataclasses import FrozenInstanceError, replace
+from pathlib import Path
+
+import matplotlib as mpl
+import matplotlib.pyplot as plt
+import numpy as np
+import pandas as pd
+import pytest
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+import fitter
+from fitter.sheet import draw_sheet, sheet_files
+
+ROOT = Path(__file__).resolve().parents[1]
+PLOTS = ("plot_body_diode", "plot_capacitances", "plot_gate_charge", "plot_output", "plot_residuals", "plot_transfer")
+ERRORS = ("FitError", "ModelFileError", "OperatingPointError", "OutputError", "PartFolderError")
+
+
+@pytest.fixture(autouse=True)
+def closed_figures():
+    """No display is needed, and no figure stays open."""
+    with mpl.rc_context({"backend": "Agg"}):
+        yield
+        plt.close("all")
+
+
+@pytest.fixture
+def model(fitted):
+    return fitted("cargo_80v")
+
+
+@pytest.fixture
+def p_channel(fitted):
+    return fitted("camper_van_p40v")
+
+
+@pytest.fixture
+def loaded(model, tmp_path):
+    model.save(tmp_path / "model.json")
+    return fitter.load_model(tmp_path / "model.json")
+
+
+# What is public
+
+
+def test_the_public_names():
+    assert set(fitter.__all__) == {
+        *("read_part", "inspect", "fit_part", "load_model", "Model", "FitterError", "ExtrapolationWarning"),
+        *ERRORS,
+        *PLOTS,
+    }
+
+
+def test_every_public_name_is_there_and_documented():
+    for name in fitter.__all__:
+        assert getattr(fitter, name).__doc__, name
+
+
+def test_dir_shows_the_public_names():
+    assert set(fitter.__all__) <= set(dir(fitter))
+
+
+def test_a_name_that_is_not_there_is_an_attribute_error():
+    with pytest.raises(AttributeError, match="no_such_name"):
+        _ = fitter.no_such_name
+
+
+@pytest.mark.parametrize("name", ERRORS)
+def test_every_error_is_a_fitter_error(name):
+    assert issubclass(getattr(fitter, name), fitter.FitterError)
+
+
+def test_importing_the_package_imports_nothing_heavy():
+    code = "import sys, fitter; print(sorted({'numpy', 'scipy', 'lmfit', 'pandas', 'matplotlib'} & set(sys.modules)))"
+    done = subprocess.run([sys.executable, "-c", code], cwd=ROOT, capture_output=True, text=True, check=True)
+    assert done.stdout == "[]\n"
+
+
+def test_a_star_import_gives_the_public_names():
+    names = {}
+    exec("from fitter import *", names)
+    assert set(fitter.__all__) <= set(names)
+
+
+# From part to model
+
+
+def test_a_part_is_read_from_a_text_or_a_path():
+    folder = ROOT / "digitized_curves" / "cargo_80v"
+    assert fitter.read_part(str(folder)).digests == fitter.read_part(folder).digests
+
+
+def test_a_folder_that_is_not_there_raises_a_fitter_error(tmp_path):
+    with pytest.raises(fitter.FitterError):
+        fitter.read_part(str(tmp_path / "absent"))
+
+
+def test_inspect_returns_findings_that_can_be_shown():
+    findings = fitter.inspect(fitter.read_part(ROOT / "digitized_curves" / "cargo_80v"))
+    assert all(
+        isinstance(str(finding), str) and finding.severity in ("stop", "doubtful", "note") for finding in findings
+    )
+
+
+def test_a_fit_gives_a_model(model):
+    assert isinstance(model, fitter.Model)
+
+
+def test_a_model_is_saved_and_loaded_by_a_text_or_a_path(model, tmp_path):
+    model.save(str(tmp_path / "model.json"))
+    for path in (tmp_path / "model.json", str(tmp_path / "model.json")):
+        loaded = fitter.load_model(path)
+        assert isinstance(loaded, fitter.Model)
+        assert loaded.subcircuit() == model.subcircuit()
+
+
+def test_a_model_cannot_be_changed(model):
+    with pytest.raises(FrozenInstanceError):
+        model.version = "mine"
+
+
+def test_parameters_are_a_mapping_of_values_in_si(model):
+    assert isinstance(model.parameters, Mapping)
+    k = model.parameters["v_th"]
+    assert (k.unit, k.origin) == ("V", "fitted")
+    assert 2.0 < k.value < 5.0
+    assert 0.0 < k.stderr < 1.0
+
+
+# Curves
+
+
+@pytest.mark.parametrize("name", ["ciss", "coss", "crss"])
+@pytest.mark.parametrize("shape", [(), (1,), (5,), (2, 3)])
+def test_capacitances_have_the_shape_of_their_voltage(model, name, shape):
+    v_ds = np.full(shape, 40.0)
+    found = getattr(model, name)(v_ds)
+    assert isinstance(found, np.ndarray)
+    assert found.shape == shape
+    assert found.dtype == float
+
+
+@pytest.mark.parametrize("name, farad", [("ciss", 4250e-12), ("coss", 632e-12), ("crss", 22e-12)])
+def test_capacitances_are_in_farad(model, name, farad):
+    assert float(getattr(model, name)(40.0)) == pytest.approx(farad, rel=0.1)
+
+
+def test_capacitances_take_lists(model):
+    np.testing.assert_array_equal(model.ciss([1, 10]), model.ciss(np.array([1.0, 10.0])))
+
+
+def test_capacitances_of_a_p_channel_part_take_negative_voltages(p_channel):
+    assert float(p_channel.ciss(-20.0)) == pytest.approx(3100e-12, rel=0.1)
+    assert float(p_channel.crss(-20.0)) == pytest.approx(185e-12, rel=0.1)
+
+
+def test_the_drain_current_broadcasts(model):
+    found = model.drain_current(np.linspace(0.0, 10.0, 4)[:, None], [1.0, 2.0, 3.0])
+    assert found.shape == (4, 3)
+    assert float(found[1, 2]) == float(model.drain_current(10.0 / 3.0, 3.0))
+
+
+def test_the_drain_current_follows_temperature(model):
+    cold, hot = (float(model.drain_current(10.0, 0.2, t_j=t_j)) for t_j in (25.0, 125.0))
+    assert 0.3 * cold < hot < 0.9 * cold
+
+
+def test_the_drain_current_of_a_p_channel_part_is_negative(p_channel):
+    assert float(p_channel.drain_current(-10.0, -1.0)) < -10.0
+    assert abs(float(p_channel.drain_current(0.0, -20.0))) < 1e-3
+
+
+def test_a_temperature_beyond_the_data_warns(model):
+    with pytest.warns(fitter.ExtrapolationWarning, match="300 C"):
+        model.drain_current(10.0, 1.0, t_j=300.0)
+
+
+def test_the_warning_points_at_the_callers_line(model):
+    with pytest.warns(fitter.ExtrapolationWarning) as caught:
+        model.drain_current(10.0, 1.0, t_j=300.0)
+    assert caught[0].filename == __file__
+
+
+@pytest.mark.parametrize("load", ["current", "resistive"])
+def test_a_gate_charge_curve_has_arrays_and_numbers(model, load):
+    curve = model.gate_charge(vdd=40.0, i_d=50.0, v_gs=10.0, load=load, t_j=25.0)
+    assert curve.v_gs.shape == curve.q_g.shape == curve.v_ds.shape == curve.i_d.shape
+    assert curve.q_g.ndim == 1
+    for name in ("total", "q_gs", "q_gd", "v_plateau"):
+        assert isinstance(getattr(curve, name), float)
+    assert curve.total == pytest.approx(68e-9, rel=0.1)
+    assert 0.0 < curve.q_gs < curve.q_gs + curve.q_gd < curve.total
+    assert curve.v_plateau == pytest.approx(4.5, rel=0.1)
+
+
+def test_a_gate_charge_curve_is_of_a_current_load_at_25_c_unless_told(model):
+    assert model.gate_charge(40.0, 50.0, 10.0).total == model.gate_charge(40.0, 50.0, 10.0, "current", 25.0).total
+
+
+def test_gate_charge_of_a_p_channel_part_takes_its_signs_or_magnitudes(p_channel):
+    signed, plain = p_channel.gate_charge(-20.0, -30.0, -10.0), p_channel.gate_charge(20.0, 30.0, 10.0)
+    np.testing.assert_array_equal(signed.v_gs, plain.v_gs)
+    assert signed.total == plain.total > 0.0
+    assert signed.v_plateau < 0.0
+    assert signed.v_gs[-1] == pytest.approx(-10.0)
+    assert signed.v_ds[0] == pytest.approx(-20.0)
+
+
+@pytest.mark.parametrize(
+    "arguments", [(40.0, 50.0, 10.0, "inductive"), (40.0, 1e6, 10.0), (0.0, 50.0, 10.0), (40.0, float("nan"), 10.0)]
+)
+def test_an_operating_point_that_cannot_be_raises_a_fitter_error(model, arguments):
+    with pytest.raises(fitter.OperatingPointError):
+        model.gate_charge(*arguments)
+
+
+def test_intervals_hold_their_value(model):
+    for interval in model.gate_charge_intervals(40.0, 50.0, 10.0).values():
+        assert interval.low < interval.value < interval.high
+
+
+# Frames
+
+
+@pytest.mark.parametrize("name", ["to_frame", "checks_frame", "curves_frame"])
+def test_tables_are_data_frames(model, name):
+    frame = getattr(model, name)()
+    assert isinstance(frame, pd.DataFrame)
+    assert len(frame) > 10
+
+
+def test_the_parameter_frame(model):
+    frame = model.to_frame()
+    assert list(frame.columns) == ["name", "value", "stderr", "unit", "origin"]
+    assert list(frame["name"]) == list(model.parameters)
+    assert frame["value"].dtype == frame["stderr"].dtype == float
+
+
+def test_a_loaded_model_has_the_same_frames_but_no_points(model, loaded):
+    pd.testing.assert_frame_equal(loaded.to_frame(), model.to_frame())
+    pd.testing.assert_frame_equal(loaded.checks_frame(), model.checks_frame())
+    assert loaded.curves_frame().empty
+
+
+# Plots
+
+
+@pytest.mark.parametrize("name", PLOTS)
+def test_a_plot_draws_into_the_axes_it_is_given(model, name):
+    figure, ax = plt.subplots()
+    assert getattr(fitter, name)(model, ax=ax) is ax
+    assert ax.lines
+    assert figure.axes == [ax]
+
+
+@pytest.mark.parametrize("name", PLOTS)
+def test_a_plot_makes_its_own_axes_where_none_are_given(model, name):
+    ax = getattr(fitter, name)(model)
+    assert isinstance(ax, Axes)
+    assert ax.lines
+    assert plt.get_fignums() == []
+
+
+@pytest.mark.parametrize("name", PLOTS)
+def test_a_plot_has_a_title_and_labels(model, name):
+    ax = getattr(fitter, name)(model, None)
+    assert ax.get_title(loc="left")
+    assert ax.get_ylabel()
+    assert ax.get_xlabel() or [label.get_text() for label in ax.get_xticklabels()]
+
+
+@pytest.mark.parametrize("name", PLOTS)
+def test_a_plot_of_a_p_channel_part_can_be_drawn(p_channel, name):
+    ax = getattr(fitter, name)(p_channel)
+    ax.figure.canvas.draw()
+    assert ax.lines
+
+
+@pytest.mark.parametrize("name", PLOTS)
+def test_a_plot_of_a_loaded_model_can_be_drawn(loaded, name):
+    ax = getattr(fitter, name)(loaded)
+    ax.figure.canvas.draw()
+    assert isinstance(ax, Axes)
+
+
+def labels_of(ax):
+    return [line.get_label() for line in ax.lines if not line.get_label().startswith("_")]
+
+
+def test_capacitances_are_drawn_in_picofarad_on_log_axes(model):
+    ax = fitter.plot_capacitances(model)
+    assert (ax.get_xscale(), ax.get_yscale()) == ("log", "log")
+    assert "pF" in ax.get_ylabel()
+    assert labels_of(ax) == ["$C_{iss}$", "$C_{oss}$", "$C_{rss}$"]
+    x, y = next(line for line in ax.lines if line.get_label() == "$C_{iss}$").get_data()
+    np.testing.assert_allclose(y, model.ciss(x) * 1e12)
+
+
+def test_the_transfer_plot_is_linear_unless_told(model):
+    assert fitter.plot_transfer(model).get_yscale() == "linear"
+    assert fitter.plot_transfer(model, scale="log").get_yscale() == "log"
+
+
+def test_the_transfer_plot_has_a_line_for_each_temperature(model):
+    assert sorted(labels_of(fitter.plot_transfer(model))) == [
+        "-40 \N{DEGREE SIGN}C",
+        "150 \N{DEGREE SIGN}C",
+        "25 \N{DEGREE SIGN}C",
+    ]
+
+
+def test_the_gate_charge_plot_shows_predicted_digitized_and_stated(model):
+    assert labels_of(fitter.plot_gate_charge(model)) == ["predicted", "digitized", "stated"]
+
+
+def test_the_gate_charge_plot_says_where_it_was_fitted(fitted):
+    assert labels_of(fitter.plot_gate_charge(fitted("camper_van_p40v", True)))[0] == "fitted"
+
+
+def test_a_gate_charge_that_cannot_be_reached_is_said_in_the_plot(model):
+    stated = replace(model.part.stated, gate_charge=replace(model.part.stated.gate_charge, i_d=2000.0))
+    ax = fitter.plot_gate_charge(replace(model, part=replace(model.part, stated=stated)))
+    assert any("does not carry" in text.get_text() for text in ax.texts)
+
+
+def test_the_body_diode_plot_of_a_model_without_one_is_empty(loaded):
+    assert not fitter.plot_body_diode(loaded).lines
+
+
+def test_plots_show_magnitudes_with_a_minus_sign_for_a_p_channel_part(p_channel):
+    for name in ("plot_capacitances", "plot_transfer", "plot_output"):
+        ax = getattr(fitter, name)(p_channel)
+        assert ax.get_xlabel().startswith("\N{MINUS SIGN}$V")
+        assert min(ax.get_xlim()) > -1.0
+
+
+# Sheet
+
+
+@pytest.fixture(scope="module")
+def sheet(fitted):
+    return sheet_files(fitted("cargo_80v"))
+
+
+def test_the_sheet_is_a_png_and_a_pdf(sheet):
+    assert set(sheet) == {"sheet.png", "sheet.pdf"}
+    assert sheet["sheet.png"].startswith(b"\x89PNG\r\n\x1a\n")
+    assert sheet["sheet.pdf"].startswith(b"%PDF-1.")
+    assert sheet["sheet.pdf"].rstrip().endswith(b"%%EOF")
+
+
+def test_the_png_is_of_the_shape_of_a4(sheet):
+    width, height = struct.unpack(">II", sheet["sheet.png"][16:24])
+    assert height / width == pytest.approx(297.0 / 210.0, rel=0.003)
+    assert width > 1000
+
+
+def test_the_pdf_is_one_page_of_a4(sheet):
+    (box,) = [part.split(b"]")[0] for part in sheet["sheet.pdf"].split(b"/MediaBox")[1:]]
+    _, _, width, height = map(float, box.strip(b" [").split())
+    assert (width / 72 * 25.4, height / 72 * 25.4) == pytest.approx((210.0, 297.0), abs=0.5)
+
+
+def test_the_sheet_has_no_date_and_no_maker(sheet):
+    assert not any(word in sheet["sheet.pdf"] for word in (b"CreationDate", b"ModDate", b"/Producer", b"/Creator"))
+    assert b"tEXt" not in sheet["sheet.png"][:400]
+
+
+def test_the_sheet_is_the_same_again_whatever_the_users_settings(fitted, sheet):
+    with mpl.rc_context({"font.size": 30, "lines.linewidth": 9, "axes.facecolor": "red", "savefig.dpi": 10}):
+        assert sheet_files(fitted("cargo_80v")) == sheet
+
+
+def test_drawing_the_sheet_leaves_the_users_settings(fitted):
+    with mpl.rc_context({"font.size": 30}):
+        draw_sheet(fitted("cargo_80v"))
+        assert mpl.rcParams["font.size"] == 30
+
+
+def texts_of(figure):
+    return " ".join(text.get_text() for text in figure.texts)
+
+
+def test_the_sheet_names_part_parameters_checks_and_cautions(model):
+    figure = draw_sheet(model)
+    assert isinstance(figure, Figure)
+    shown = texts_of(figure)
+    for word in ("CB80N4", model.part.notes, "CAUTION", "Verify on the bench", *model.parameters):
+        assert word in shown
+    for check in model.checks:
+        assert check.quantity in shown
+
+
+def test_the_sheet_has_its_six_plots(model):
+    titles = [ax.get_title(loc="left") for ax in draw_sheet(model).axes]
+    assert len(titles) == 6
+    for word in ("Capacitances", "Gate charge", "Transfer", "Output", "Residuals"):
+        assert any(title.startswith(word) for title in titles)
+
+
+def test_the_sheet_of_a_loaded_model_can_be_drawn(loaded):
+    assert "CB80N4" in texts_of(draw_sheet(loaded))
+
+
+@pytest.mark.parametrize(
+    "notes", ["costs $5, or $6 a piece", "r_{on} ^2 \\alpha % #", "x" * 2000, "\u65e5\u672c\u8a9e"]
+)
+def test_notes_of_any_kind_are_drawn_as_they_are_and_without_a_warning(model, notes):
+    figure = draw_sheet(replace(model, part=replace(model.part, notes=notes)))
+    for ax in figure.axes:
+        ax.remove()
+    figure.draw_without_rendering()
