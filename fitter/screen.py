@@ -33,7 +33,7 @@ __all__ = [
 ]
 
 #: Width where the output is no terminal.
-_WIDTH = 118
+_WIDTH = 130
 
 _SEVERITY = {
     "stop": ("stops the fit", "bold red"),
