@@ -17,7 +17,7 @@ from numpy.typing import ArrayLike, NDArray
 from fitter.comparison import Comparison
 from fitter.errors import ExtrapolationWarning, OperatingPointError
 from fitter.fitting.forms import FormTrial
-from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, Figures, intervals, standard_errors
+from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, Figures, ends, intervals, standard_errors
 from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import Values
 from fitter.gate_charge import GateChargeCurve, OperatingPoint, gate_charge_curve
@@ -391,6 +391,57 @@ class FittedModel:
         middle = logarithm(self.estimate.values)
         off = COVERAGE_FACTOR * standard_errors(logarithm, self.estimate)
         return np.exp(middle - off), np.exp(middle + off)
+
+    def current_band(self, v_gs: ArrayLike, v_ds: float, t_j: float = REFERENCE) -> tuple[Array, Array]:
+        """95 % band of a transfer curve, from the reading errors.
+
+        Parameters
+        ----------
+        v_gs : array_like, shape (n,)
+            [V], negative for a p-channel part.
+        v_ds : float
+            [V], likewise.
+        t_j : float
+            Junction temperature [degC].
+
+        Returns
+        -------
+        low, high : ndarray, shape (n,)
+            Magnitude of the drain current [A].
+        """
+        gate, drain = self.sign * np.asarray(v_gs, dtype=float), self.sign * v_ds
+
+        def logarithm(values: Values) -> NDArray[np.float64]:
+            return np.asarray(np.log(Transistor.from_values(values).at(t_j).i_d(gate, drain)))
+
+        middle = np.real(logarithm(self.estimate.values))
+        off = COVERAGE_FACTOR * standard_errors(logarithm, self.estimate)
+        return np.exp(middle - off), np.exp(middle + off)
+
+    def gate_charge_band(
+        self, vdd: float, i_d: float, v_gs: float, load: Load = "current"
+    ) -> tuple[GateChargeCurve, GateChargeCurve]:
+        """Gate-charge curves at the two ends of QG's 95 % interval, in n-channel polarity.
+
+        Parameters
+        ----------
+        vdd, i_d, v_gs, load
+            As for `gate_charge`.
+
+        Returns
+        -------
+        low, high : GateChargeCurve
+        """
+        point = operating_point(vdd, i_d, v_gs, load)
+
+        def total(values: Values) -> NDArray[np.float64]:
+            return np.asarray(gate_charge_curve(Transistor.from_values(values), point).reading.total)[..., None]
+
+        low, high = (
+            gate_charge_curve(Transistor.from_values({n: scalar(x) for n, x in values.items()}), point)
+            for values in ends(total, self.estimate)
+        )
+        return low, high
 
 
 def operating_point(vdd: float, i_d: float, v_gs: float, load: str) -> OperatingPoint:

@@ -30,6 +30,9 @@ __all__ = [
     "plot_transfer",
 ]
 
+#: Characters of a curve's name below the residuals.
+_LONGEST_LABEL = 18
+
 Array = NDArray[np.float64]
 
 #: Colours that colour-blind readers can tell apart (M. Okabe and K. Ito, 2008), darkest first.
@@ -93,7 +96,7 @@ def plot_capacitances(model: FittedModel, ax: Axes | None = None) -> Axes:
     """
     ax = _axes(ax)
     known = model.validity.capacitance_v_ds
-    low = max(known[0] if known else 0.1, 1e-3 * model.part.v_ds_max)
+    low = max(known[0] if known else 0.1, 1e-5 * model.part.v_ds_max)
     v = np.geomspace(low, model.part.v_ds_max, 120)
     for (name, label), colour, marker, style in zip(_CAPACITANCES, COLOURS, _MARKERS, _STYLES, strict=False):
         fitted = {"ciss": model.ciss, "coss": model.coss, "crss": model.crss}[name](model.sign * v)
@@ -142,6 +145,8 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
     ):
         i = np.asarray(model.transistor(t_j).i_d(v, v_ds))
         shown = (i < 1.15 * top) & (i > (1e-6 * top if scale == "log" else -1.0))
+        low, high = model.current_band(model.sign * v[shown], model.sign * v_ds, t_j)
+        ax.fill_between(v[shown], low, high, color=colour, alpha=0.18, linewidth=0.0)
         ax.plot(v[shown], i[shown], color=colour, linestyle=style, linewidth=1.1, label=f"{t_j:g} \N{DEGREE SIGN}C")
         for curve in curves:
             if (REFERENCE if curve.t_j is None else curve.t_j) == t_j:
@@ -192,13 +197,13 @@ def plot_output(model: FittedModel, ax: Axes | None = None) -> Axes:
         _draw_points(ax, _points(model, curve.name), colour, marker)
     if curves:
         ax.set_ylim(0.0, 1.05 * max(float(np.max(c.y)) for c in curves))
-        ax.legend(loc="upper right", frameon=False, title="$V_{GS}$")
+        ax.legend(loc="upper right", framealpha=0.85, edgecolor="none", title="$V_{GS}$")
     minus = _minus(model)
     return _finish(ax, "Output, 25 \N{DEGREE SIGN}C", f"{minus}$V_{{DS}}$ / V", f"{minus}$I_D$ / A")
 
 
 def plot_gate_charge(model: FittedModel, ax: Axes | None = None) -> Axes:
-    """The gate-charge curve at the stated condition, the digitized one, and what the table states.
+    """The gate-charge curve at the stated condition with its 95 % band, the digitized one, and what the table states.
 
     Parameters
     ----------
@@ -217,6 +222,9 @@ def plot_gate_charge(model: FittedModel, ax: Axes | None = None) -> Axes:
     try:
         curve = gate_charge_curve(model.transistor(), point)
         origin = "fitted" if model.used_gate_charge else "predicted"
+        low, high = model.gate_charge_band(point.v_dd, point.i_d, point.v_gs, point.load)
+        outline = np.concatenate([low.q_g, high.q_g[::-1]]) * 1e9, np.concatenate([low.v_gs, high.v_gs[::-1]])
+        ax.fill(*outline, color=COLOURS[0], alpha=0.18, linewidth=0.0, label="95 % of QG")
         ax.plot(curve.q_g * 1e9, curve.v_gs, color=COLOURS[0], linewidth=1.3, label=origin)
     except OperatingPointError as error:
         ax.text(0.5, 0.5, str(error), transform=ax.transAxes, ha="center", va="center", wrap=True, fontsize="small")
@@ -339,7 +347,8 @@ def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:
         ax.axhline(level, color="0.5", linewidth=0.6, linestyle=style)
     ax.set_xlim(0.0, max(len(names), 1))
     ax.set_ylim(-edge - 0.6, edge + 0.6)
-    ax.set_xticks([k + 0.5 for k in range(len(names))], names, rotation=35, ha="right", rotation_mode="anchor")
+    labels = [name if len(name) <= _LONGEST_LABEL else f"{name[: _LONGEST_LABEL - 2]} ..." for name in names]
+    ax.set_xticks([k + 0.5 for k in range(len(names))], labels, rotation=35, ha="right", rotation_mode="anchor")
     ax.tick_params(axis="x", length=0)
     ax.set_title("Residuals", loc="left")
     ax.set_ylabel("std. deviations")

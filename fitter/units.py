@@ -54,6 +54,10 @@ def si_factor(unit: str, base: str) -> float:
     raise UnitError(f"unit '{unit}' is not {spelled or f'{base!r} with one of the prefixes p n u m k M'}")
 
 
+#: Magnitudes that have a prefix.
+_LEAST_PREFIX, _MOST_PREFIX = 1e-15, 1e12
+
+
 def engineering(value: float, unit: str, digits: int = 3) -> str:
     """A figure with an SI prefix, for people.
 
@@ -81,6 +85,8 @@ def engineering(value: float, unit: str, digits: int = 3) -> str:
     if not unit or value == 0.0:
         return f"{value:.{digits}g} {unit}".strip()
     rounded = float(f"{value:.{digits}g}")
+    if not _LEAST_PREFIX <= abs(rounded) < _MOST_PREFIX:
+        return f"{value:.{digits}g} {unit}"
     exponent = min(max(3 * math.floor(math.log10(abs(rounded)) / 3), -15), 9)
     figure = f"{rounded / 10.0**exponent:.{digits}g}"
     if "e" in figure and 1.0 <= abs(rounded) / 10.0**exponent < 1000.0:

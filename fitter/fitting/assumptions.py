@@ -32,14 +32,16 @@ _RATIO, _RATIO_LOW, _RATIO_HIGH = 1.5, 1.0, 2.3
 _SIGMA_RATIO = math.log(_RATIO_HIGH / _RATIO_LOW) / (2.0 * 1.96)
 #: 1-sigma of ln(Cacc/Cgd(lowest VDS)): a factor of 1.5 either way at 95 % (a judgement, no source).
 _SIGMA_ACCUMULATION = math.log(1.5) / 1.96
+#: Cch tends to 0 over this share of Ciss.
+_BEND = 0.1
 
 
 @dataclass(frozen=True, kw_only=True)
 class GateAssumption:
     """What Cacc and Cch are assumed to be; called with values by name, it adds the two.
 
-    Cacc = accumulation_ratio Cgd(v_low), and Cch such that Cgs + Cch + Cacc = on_state_ratio Ciss(v_dd), but not
-    below 0.
+    Cacc = accumulation_ratio Cgd(v_low), and Cch such that Cgs + Cch + Cacc = on_state_ratio Ciss(v_dd), bent so that
+    it stays above 0.
 
     Parameters
     ----------
@@ -68,7 +70,9 @@ class GateAssumption:
         c_acc = np.asarray(values.get(ACCUMULATION_RATIO.name, 1.0)) * bare.c_gd(self.v_low)
         on_state = np.asarray(values.get(ON_STATE_RATIO.name, _RATIO)) * bare.c_iss(self.v_dd)
         c_ch = on_state - values["c_gs"] - c_acc
-        return {**values, "c_acc": c_acc, "c_ch": np.where(c_ch.real > 0.0, c_ch, 0.0)}
+        # Towards 0 along a hyperbola: a sharp end there would leave the ratio's spread out of every interval.
+        bend = _BEND * bare.c_iss(self.v_dd)
+        return {**values, "c_acc": c_acc, "c_ch": 0.5 * (c_ch + np.sqrt(c_ch * c_ch + bend * bend))}
 
     def start(self, values: Values) -> dict[str, Value]:
         """Start values for a fit of Cacc and Cch: as assumed, Cch off its bound of 0."""

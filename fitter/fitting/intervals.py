@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from fitter.fitting.space import ParameterSpace, Values, derivatives
 from fitter.models.types import Numbers
 
-__all__ = ["COVERAGE_FACTOR", "Estimate", "Figures", "intervals", "standard_errors"]
+__all__ = ["COVERAGE_FACTOR", "Estimate", "Figures", "ends", "intervals", "standard_errors"]
 
 Array = NDArray[np.float64]
 #: A function of the parameters that returns figures along its last axis.
@@ -71,6 +71,29 @@ def standard_errors(figures: Figures, estimate: Estimate) -> Array:
         In the figures' units.
     """
     return _gradient(figures, estimate)[1]
+
+
+def ends(figure: Figures, estimate: Estimate) -> tuple[Values, Values]:
+    """Parameters at the two ends of one figure's 95 % interval.
+
+    Parameters
+    ----------
+    figure : callable
+        Returns one figure.
+    estimate : Estimate
+        The fitted parameters.
+
+    Returns
+    -------
+    low, high : mapping of str to value
+        Moved along the direction in which the figure varies most for its probability.
+    """
+    moved, sigma = _gradient(figure, estimate)
+    step = COVERAGE_FACTOR * moved[:, 0] / max(float(sigma[0]), 1e-300)
+    lower, upper = estimate.space.bounds()
+    points = (np.clip(estimate.coordinates + sign * step, lower, upper) for sign in (-1.0, 1.0))
+    low, high = (estimate.space.values(point) for point in points)
+    return low, high
 
 
 def intervals(figures: Figures, estimate: Estimate) -> tuple[Array, Array, Array]:
