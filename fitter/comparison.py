@@ -312,11 +312,11 @@ def explain_gate_charge(checks: Sequence[Comparison]) -> tuple[Notice, ...]:
     Returns
     -------
     tuple of Notice
-        Empty where QG agrees or nothing is stated.
+        Empty where QG is within 5 % or nothing is stated.
     """
     by_name = {c.quantity: c for c in checks if c.fitted is not None and c.stated.typ is not None}
     total = by_name.get("qg")
-    if total is None or total.verdict == "agrees":
+    if total is None or abs(total.deviation or 0.0) <= _NEAR:
         return ()
     legs: list[tuple[str, float, str]] = []
     stated = {name: c.stated.typ or 0.0 for name, c in by_name.items()}
