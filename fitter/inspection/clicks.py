@@ -8,8 +8,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.inspection.finding import Finding
-from fitter.inspection.reading import coordinates
-from fitter.part import Axis, Curve, Part, Quantity
+from fitter.inspection.reading import CAPACITANCES, coordinates
+from fitter.part import Curve, Part, Quantity
 
 __all__ = ["inspect"]
 
@@ -17,8 +17,10 @@ Array = NDArray[np.float64]
 
 #: Fewer points than this make a poor curve.
 _FEW = {Quantity.CISS: 8, Quantity.COSS: 8, Quantity.CRSS: 8, Quantity.TRANSFER: 5}
-#: Points may lie outside a printed axis by this share of it: reading errors of four standard deviations and more.
-_OUTSIDE = 0.02
+#: Between two points a curve whose integral counts crosses less than this share of its y axis (common practice, no
+#: source).
+_GAP = 0.25
+_INTEGRALS = (*CAPACITANCES, Quantity.GATE_CHARGE)
 #: A point this many standard deviations off the line through its neighbours is a mis-click.
 _FAR = 8.0
 
@@ -26,34 +28,9 @@ _FAR = 8.0
 def inspect(part: Part) -> Iterator[Finding]:
     """Findings on each curve's points and axes."""
     for curve in part.curves:
-        yield from _axis(curve, curve.x, curve.x_axis, "x")
-        yield from _axis(curve, curve.y, curve.y_axis, "y")
         yield from _spread(curve)
+        yield from _gaps(curve)
         yield from _misclicks(curve)
-
-
-def _axis(curve: Curve, values: Array, axis: Axis, name: str) -> Iterator[Finding]:
-    if not axis.printed:
-        return
-    place = coordinates(values, axis)
-    start = np.log(axis.start) if axis.scale == "log" else axis.start
-    share = (place - start) / axis.length
-    outside = np.flatnonzero((share < -_OUTSIDE) | (share > 1.0 + _OUTSIDE))
-    if outside.size == 0:
-        return
-    worst = int(outside[np.argmax(np.abs(share[outside] - 0.5))])
-    many = outside.size > 0.2 * values.size
-    yield Finding(
-        rule="outside axis",
-        severity="doubtful",
-        topic=curve.name,
-        file=curve.file,
-        line=int(curve.lines[worst]),
-        found=f"{outside.size} of {values.size} points lie outside the {name} axis of {axis.start:g} to "
-        f"{axis.end:g} (SI), "
-        f"this one at {values[worst]:g}",
-        remedy="look at the axis' from, to and scale, and at the column's unit" if many else "look at the point again",
-    )
 
 
 def _spread(curve: Curve) -> Iterator[Finding]:
@@ -67,17 +44,27 @@ def _spread(curve: Curve) -> Iterator[Finding]:
             found=f"only {curve.x.size} points",
             remedy=f"click {few} at the least, more where the curve is steep",
         )
-    x = coordinates(curve.x, curve.x_axis)
-    x = x[np.isfinite(x)]
-    whole = curve.quantity not in (Quantity.OUTPUT, Quantity.BODY_DIODE)  # these begin steeply and may end early
-    if whole and curve.x_axis.printed and x.size >= 2 and float(np.ptp(x)) < 0.2 * curve.x_axis.length:
+
+
+def _gaps(curve: Curve) -> Iterator[Finding]:
+    """A gap where the curve is steep: there interpolation says least, and charges are integrals."""
+    x, y = coordinates(curve.x, curve.x_axis), coordinates(curve.y, curve.y_axis)
+    good = np.isfinite(x) & np.isfinite(y)
+    if curve.quantity not in _INTEGRALS or np.count_nonzero(good) < 3:
+        return
+    across = np.diff(x[good]) / curve.x_axis.length
+    up = np.abs(np.diff(y[good])) / curve.y_axis.length
+    widest = int(np.argmax(np.hypot(across, up) * (up > 0.0)))
+    if up[widest] > _GAP and np.hypot(across[widest], up[widest]) > 3.0 * float(np.median(np.hypot(across, up))):
         yield Finding(
-            rule="one corner",
+            rule="gap",
             severity="doubtful",
             topic=curve.name,
             file=curve.file,
-            found="all points lie within a fifth of the x axis",
-            remedy="click the whole curve, or look at the axis' from, to and scale",
+            line=int(curve.lines[good][widest]),
+            found=f"between {curve.x[good][widest]:.3g} and {curve.x[good][widest + 1]:.3g} (SI) the curve crosses "
+            f"{100.0 * up[widest]:.0f} % of its y axis without a point",
+            remedy="click more points there",
         )
 
 

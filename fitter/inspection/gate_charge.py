@@ -6,133 +6,192 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from fitter.gate_charge import read_gate_charge
-from fitter.inspection.finding import Finding, Severity
-from fitter.inspection.reading import first_curve, read_at, typical
+from fitter.inspection.finding import Comparison, ratio
+from fitter.inspection.reading import first_curve, is_cold, read_at, typical
+from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part, Quantity
 
-__all__ = ["inspect"]
+__all__ = ["end", "first_leg", "plateau", "rising", "start", "total", "transfer"]
 
-#: Share of the charge over which slopes of a digitized curve are taken.
-_WINDOW = 0.12
-
-
-def inspect(part: Part) -> Iterator[Finding]:
-    """Findings on the gate-charge curves."""
-    for curve in part.curves_of(Quantity.GATE_CHARGE):
-        yield from _shape(curve)
-        yield from _against_table(part, curve)
-        yield from _against_transfer(part, curve)
+#: QG max over typ is 1.2 to 1.5 (common practice, no source); typical curve and typical value differ by less.
+_LEAST_TOTAL, _MOST_TOTAL = 0.75, 1.35
+#: QG(th) over Ciss VTH: mean 0.986, standard deviation 0.081 over 16 datasheets, range 0.84 to 1.13; four of these
+#: standard deviations about the mean.
+_LEAST_LEG, _MOST_LEG = 0.66, 1.31
+#: The plateau is printed to two digits, and read off the figure's line.
+_PLATEAU = 1.2
 
 
-def _say(rule: str, severity: Severity, curve: Curve, at: int, found: str, remedy: str) -> Finding:
-    line = int(curve.lines[at])
-    return Finding(
-        rule=rule, severity=severity, topic=curve.name, file=curve.file, line=line, found=found, remedy=remedy
+def rising(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """VGS only rises."""
+    fall = np.maximum.accumulate(curve.y) - curve.y
+    worst = int(np.argmax(fall))
+    yield Comparison(
+        rule="monotone",
+        curve=curve,
+        at=worst,
+        off=float(fall[worst]) / ((8.0 * curve.point_error + 0.01) * curve.y_axis.length),
+        says=f"VGS falls by {fall[worst]:.2g} V; it only rises",
+        remedy="look at the point again",
     )
 
 
-def _shape(curve: Curve) -> Iterator[Finding]:
-    fall = np.maximum.accumulate(curve.y) - curve.y
-    worst = int(np.argmax(fall))
-    if fall[worst] > (8.0 * curve.point_error + 0.01) * curve.y_axis.length:
-        yield _say(
-            "monotone",
-            "doubtful",
-            curve,
-            worst,
-            f"VGS falls by {fall[worst]:.2f} V; it only rises",
-            "look at the point again",
-        )
-    if curve.x.size < 4:
-        return
-    # The first leg, carried on to VGS = 0, must begin at no charge.
+def start(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """The first leg, carried on to VGS = 0, begins at no charge."""
     first = curve.y < 0.35 * float(np.max(curve.y))
-    if np.count_nonzero(first) >= 3 and float(np.ptp(curve.y[first])) > 0.0:
-        start = float(np.polyval(np.polyfit(curve.y[first], curve.x[first], 1), 0.0))
-        if abs(start) > 0.12 * float(np.max(curve.x)):
-            yield _say(
-                "start",
-                "doubtful",
-                curve,
-                0,
-                f"the first leg meets VGS = 0 at {start * 1e9:.3g} nC, not near 0",
-                "look at the charge axis' from and to",
-            )
-
-
-def _against_table(part: Part, curve: Curve) -> Iterator[Finding]:
-    table = part.stated.gate_charge
-    if table is None:
+    slope = _regression(curve, first)
+    if slope is None:
         return
-    stated = typical(table.q_g)
-    same = curve.v_dd is None or abs(curve.v_dd / table.v_dd - 1.0) < 0.3
-    if stated and same and float(curve.y[-1]) > 0.6 * table.v_gs:
-        x = _charge_at(curve, table.v_gs)
-        factor = x / stated
-        if not 0.75 <= factor <= 1.35:
-            remedy = "one of the two is wrong: look at the charge axis and at the table's row"
-            severity: Severity = "doubtful"
-            for power in (-3, -2, -1, 1, 2, 3):
-                if 0.75 <= factor / 10.0**power <= 1.35:
-                    severity = "stop"
-                    then = f"then it is {factor / 10.0**power:.3g} times"
-                    remedy = f"divide the curve by {10.0**power:g} (unit or decade slip); {then}"
-            yield _say(
-                "end",
-                severity,
-                curve,
-                curve.x.size - 1,
-                f"QG at {table.v_gs:g} V is {factor:.3g} times the stated {stated * 1e9:.3g} nC",
-                remedy,
-            )
+    begins = float(np.mean(curve.x[first])) - slope * float(np.mean(curve.y[first]))
+    share = begins / float(np.max(curve.x))
+    yield Comparison(
+        rule="start",
+        curve=curve,
+        off=abs(share) / 0.12,
+        says=f"the first leg meets VGS = 0 at {begins * 1e9:.3g} nC, not near 0",
+        remedy="look at the charge axis' from and to",
+    )
+
+
+def _regression(curve: Curve, chosen: np.ndarray[tuple[int, ...], np.dtype[np.bool_]]) -> float | None:
+    """Charge per volt [F] over the chosen points."""
+    x, y = curve.x[chosen], curve.y[chosen]
+    spread = float(np.sum((y - y.mean()) ** 2)) if y.size >= 3 else 0.0
+    return float(np.sum((x - x.mean()) * (y - y.mean()))) / spread if spread > 0.0 else None
+
+
+def total(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """The charge at the stated VGS is QG."""
+    group = part.stated.gate_charge
+    stated = None if group is None else typical(group.q_g)
+    if group is None or not stated:
+        return
+    same = curve.v_dd is None or abs(curve.v_dd / group.v_dd - 1.0) < 0.3
+    if not same or float(np.max(curve.y)) < 0.6 * group.v_gs:
+        return
+    factor = _charge_at(curve, group.v_gs) / stated
+    yield Comparison(
+        rule="total",
+        curve=curve,
+        at=curve.x.size - 1,
+        off=ratio(factor, _LEAST_TOTAL, _MOST_TOTAL),
+        says=f"QG at {group.v_gs:g} V is {factor:.3g} times the stated {stated * 1e9:.3g} nC",
+        remedy="one of the two is wrong: look at the charge axis and at the table's row",
+        stated="gate_charge.q_g",
+    )
 
 
 def _charge_at(curve: Curve, v_gs: float) -> float:
     """Charge at a VGS, carried on along the last leg where the curve ends before."""
-    last = slice(-max(3, curve.x.size // 5), None)
-    if v_gs <= float(np.max(curve.y)):
-        order = np.maximum.accumulate(curve.y)
-        return float(np.interp(v_gs, order, curve.x))
-    return float(np.polyval(np.polyfit(curve.y[last], curve.x[last], 1), v_gs))
+    rising_y = np.maximum.accumulate(curve.y)
+    if v_gs <= rising_y[-1]:
+        return float(np.interp(v_gs, rising_y, curve.x))
+    last = np.arange(curve.x.size) >= curve.x.size - max(3, curve.x.size // 5)
+    slope = _regression(curve, last)
+    return float(curve.x[-1]) + (slope or 0.0) * (v_gs - float(rising_y[-1]))
 
 
-def _against_transfer(part: Part, curve: Curve) -> Iterator[Finding]:
+def end(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """The curve ends near the VGS that QG is stated at, and within the rating."""
+    group, top = part.stated.gate_charge, float(np.max(curve.y))
+    aim = part.v_gs_max if group is None else group.v_gs
+    yield Comparison(
+        rule="end",
+        curve=curve,
+        at=curve.x.size - 1,
+        off=max(ratio(top / aim, 0.4, 2.5), ratio(top / part.v_gs_max, 0.0, 1.2)),
+        says=f"the curve runs to {top:.3g} V, QG is stated at {aim:g} V and VGS rated {part.v_gs_max:g} V",
+        remedy="look at the VGS axis and at vgs_V and vgs_max_V",
+    )
+
+
+def _flattest(curve: Curve) -> float | None:
+    """VGS of the flattest stretch of an eighth of the points [V]."""
+    reach = max(3, curve.x.size // 8)
+    if curve.x.size < 2 * reach:
+        return None
+    step = np.maximum(curve.x[reach:] - curve.x[:-reach], 1e-12 * abs(float(curve.x[-1])) + 1e-300)
+    at = int(np.argmin((curve.y[reach:] - curve.y[:-reach]) / step))
+    return float(np.mean(curve.y[at : at + reach + 1]))
+
+
+def plateau(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """The flattest stretch lies at the stated plateau voltage."""
+    group, flattest = part.stated.gate_charge, _flattest(curve)
+    stated = None if group is None else typical(group.v_plateau)
+    if not stated or flattest is None:
+        return
+    slack = 4.0 * curve.axis_error * curve.y_axis.length / stated
+    yield Comparison(
+        rule="plateau",
+        curve=curve,
+        at=curve.x.size // 2,
+        off=ratio(flattest / stated, 1.0 / _PLATEAU, _PLATEAU, slack=slack),
+        says=f"the plateau lies at {flattest:.3g} V, stated is {stated:g} V",
+        remedy="look at the VGS axis and at v_plateau_V",
+        stated="gate_charge.v_plateau",
+    )
+
+
+def _pair(part: Part, charge: Curve, transfer_curve: Curve) -> Iterator[Comparison]:
+    current = charge.i_d if charge.i_d is not None else largest_current(part)
+    flattest = _flattest(charge)
+    if current is None or flattest is None or not is_cold(transfer_curve) or charge.load == "resistive":
+        return
+    if not float(np.min(transfer_curve.y)) < current < float(np.max(transfer_curve.y)):
+        return
+    expected = float(np.interp(current, np.maximum.accumulate(transfer_curve.y), transfer_curve.x))
+    slack = 0.12 * abs(expected) + 0.3 + 0.02 * (transfer_curve.x_axis.length + charge.y_axis.length)
+    yield Comparison(
+        rule="plateau and transfer",
+        curve=charge,
+        other=transfer_curve,
+        at=charge.x.size // 2,
+        off=abs(flattest - expected) / slack,
+        says=f"the plateau lies at {flattest:.3g} V; {transfer_curve.name} carries {current:g} A at {expected:.3g} V",
+        remedy="look at the test's id_A and at the VGS axes of both curves",
+    )
+
+
+def transfer(part: Part, curve: Curve) -> Iterator[Comparison]:
     """The plateau lies where the transfer curve carries the load's current."""
-    transfer = first_curve(part, Quantity.TRANSFER)
-    if transfer is None or curve.i_d is None or curve.x.size < 8:
+    pairs = (
+        [(curve, t) for t in part.curves_of(Quantity.TRANSFER)]
+        if curve.quantity is Quantity.GATE_CHARGE
+        else [(g, curve) for g in part.curves_of(Quantity.GATE_CHARGE)]
+    )
+    for charge, transfer_curve in pairs:
+        yield from _pair(part, charge, transfer_curve)
+
+
+def _leg(part: Part, charge: Curve, c_iss_curve: Curve) -> Iterator[Comparison]:
+    group = part.stated.threshold
+    v_th = None if group is None else typical(group.v_gs_th)
+    if charge.v_dd is None or v_th is None:
         return
-    if not float(np.min(transfer.y)) < curve.i_d < float(np.max(transfer.y)):
+    slope, c_iss = _regression(charge, charge.y < v_th), read_at(c_iss_curve, charge.v_dd)
+    if not c_iss or slope is None or float(np.ptp(charge.y[charge.y < v_th])) < 0.2:
         return
-    table = part.stated.threshold
-    v_th = (None if table is None else typical(table.v_gs_th)) or 0.3 * float(np.max(curve.y))
-    with np.errstate(all="ignore"):
-        plateau = float(np.real(read_gate_charge(curve.x, curve.y, v_th, window=_WINDOW).v_plateau))
-    expected = float(np.interp(curve.i_d, np.maximum.accumulate(transfer.y), transfer.x))
-    slack = 0.12 * expected + 0.3 + 0.02 * (transfer.x_axis.length + curve.y_axis.length)
-    if np.isfinite(plateau) and abs(plateau - expected) > slack:
-        yield _say(
-            "plateau",
-            "doubtful",
-            curve,
-            int(curve.x.size // 2),
-            f"the plateau lies at {plateau:.2f} V; the transfer curve carries {curve.i_d:g} A at {expected:.2f} V",
-            "look at the test's id_A and at the VGS axes of both curves",
-        )
-    crss, v_dd = first_curve(part, Quantity.CISS), curve.v_dd
-    if crss is None or v_dd is None:
-        return
-    c_iss = read_at(crss, v_dd)
-    low = curve.y < min(v_th, 0.5 * plateau if np.isfinite(plateau) else v_th)
-    if c_iss and np.count_nonzero(low) >= 3 and float(np.ptp(curve.y[low])) > 0.2:
-        slope = float(np.polyfit(curve.y[low], curve.x[low], 1)[0])
-        if not 0.6 <= slope / c_iss <= 1.6:
-            yield _say(
-                "first leg",
-                "doubtful",
-                curve,
-                0,
-                f"the first leg has {slope * 1e12:.3g} pF, Ciss at {v_dd:g} V is {c_iss * 1e12:.3g} pF; they "
-                f"should be alike",
-                "look at the units and axes of both curves",
-            )
+    error = 4.0 * charge.point_error * (charge.x_axis.length / (c_iss * v_th) + charge.y_axis.length / v_th)
+    if error > 0.5:
+        return  # of a leg so short, clicks say nothing
+    yield Comparison(
+        rule="first leg",
+        curve=charge,
+        other=c_iss_curve,
+        off=ratio(slope / c_iss, _LEAST_LEG, _MOST_LEG, slack=error),
+        says=f"the first leg of {charge.name} has {slope * 1e12:.3g} pF, {slope / c_iss:.3g} times Ciss at "
+        f"{charge.v_dd:g} V",
+        remedy="they should be alike: look at the units and axes of both curves",
+    )
+
+
+def first_leg(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """Up to the threshold the gate is Ciss(VDD)."""
+    if curve.quantity is Quantity.GATE_CHARGE:
+        c_iss = first_curve(part, Quantity.CISS)
+        pairs = [] if c_iss is None else [(curve, c_iss)]
+    else:
+        pairs = [(g, curve) for g in part.curves_of(Quantity.GATE_CHARGE)] if curve.quantity is Quantity.CISS else []
+    for charge, c_iss_curve in pairs:
+        yield from _leg(part, charge, c_iss_curve)

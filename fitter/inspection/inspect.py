@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-from fitter.inspection import capacitances, channel, clicks, gate_charge, table
+from fitter.inspection import capacitances, clicks, mending, table
 from fitter.inspection.finding import SEVERITIES, Finding
 from fitter.part import Part
 
 __all__ = ["inspect"]
-
-_SUBJECTS = (table.inspect, clicks.inspect, capacitances.inspect, channel.inspect, gate_charge.inspect)
 
 
 def inspect(part: Part) -> tuple[Finding, ...]:
@@ -24,5 +22,6 @@ def inspect(part: Part) -> tuple[Finding, ...]:
     tuple of Finding
         Worst first, then by file and line; nothing is changed.
     """
-    findings = [finding for subject in _SUBJECTS for finding in subject(part)]
+    explained, contradictions = mending.mend(part)
+    findings = [*table.inspect(part), *clicks.inspect(part), *capacitances.notes(part), *explained, *contradictions]
     return tuple(sorted(findings, key=lambda f: (SEVERITIES.index(f.severity), f.file, f.line or 0, f.rule)))

@@ -6,17 +6,44 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.part import Axis, Curve, Part, Quantity, Stated
+from fitter.units import si_factor
 
-__all__ = ["PART_FILE", "coordinates", "first_curve", "log_error", "read_at", "typical"]
+__all__ = [
+    "CAPACITANCES",
+    "PART_FILE",
+    "column_factors",
+    "coordinates",
+    "error_at",
+    "first_curve",
+    "is_cold",
+    "log_error",
+    "read_at",
+    "sisters",
+    "square_root_line",
+    "typical",
+    "x_where",
+]
 
 Array = NDArray[np.float64]
 
 PART_FILE = "part.toml"
+CAPACITANCES = (Quantity.CISS, Quantity.COSS, Quantity.CRSS)
+
+
+def is_cold(curve: Curve) -> bool:
+    """Whether the curve is one at 25 degC, the temperature of the table values."""
+    return curve.t_j is None or curve.t_j == 25.0
 
 
 def first_curve(part: Part, quantity: Quantity) -> Curve | None:
     """The first curve of a quantity at 25 degC; None where there is none."""
-    return next((c for c in part.curves_of(quantity) if c.t_j in (None, 25.0)), None)
+    return next((c for c in part.curves_of(quantity) if is_cold(c)), None)
+
+
+def sisters(part: Part, curve: Curve) -> tuple[Curve, ...]:
+    """The other curves that a datasheet prints into the same figure."""
+    same = CAPACITANCES if curve.quantity in CAPACITANCES else (curve.quantity,)
+    return tuple(c for c in part.curves if c.quantity in same and c.name != curve.name)
 
 
 def typical(stated: Stated | None) -> float | None:
@@ -28,6 +55,13 @@ def typical(stated: Stated | None) -> float | None:
     if stated.min is not None and stated.max is not None:
         return 0.5 * (stated.min + stated.max)
     return None
+
+
+def column_factors(curve: Curve) -> tuple[float, float]:
+    """Factors from the units of the two columns to SI."""
+    units = ((curve.x_column, curve.x_unit), (curve.y_column, curve.y_unit))
+    fx, fy = (si_factor(column.rpartition("_")[2], base) if base else 1.0 for column, base in units)
+    return fx, fy
 
 
 def coordinates(values: Array, axis: Axis) -> Array:
@@ -57,6 +91,16 @@ def read_at(curve: Curve, x: float) -> float | None:
     return float(np.exp(y)) if positive else y
 
 
+def x_where(curve: Curve, y: float) -> float | None:
+    """Where a rising curve first reaches y; None outside its points."""
+    rising = np.maximum.accumulate(curve.y)
+    if not rising[0] <= y <= rising[-1]:
+        return None
+    if curve.y_axis.scale == "log" and rising[0] > 0.0:
+        return float(np.interp(np.log(y), np.log(rising), curve.x))
+    return float(np.interp(y, rising, curve.x))
+
+
 def log_error(curve: Curve) -> Array:
     """Standard deviation of ln y at every point from all reading errors, those along x by the curve's local slope."""
     share = np.hypot(curve.point_error, curve.axis_error)
@@ -74,3 +118,20 @@ def log_error(curve: Curve) -> Array:
         step = np.maximum(xs[high] - xs[low], 1e-3 * curve.x_axis.length)
         slope[good] = (ys[high] - ys[low]) / step
     return np.asarray(np.hypot(along_y, slope * share * curve.x_axis.length))
+
+
+def error_at(curve: Curve, x: float) -> float:
+    """Standard deviation of ln y where the curve is read at x."""
+    return float(np.interp(x, curve.x, log_error(curve)))
+
+
+def square_root_line(curve: Curve) -> tuple[float, float] | None:
+    """Threshold [V] and gain K [A/V^2] of the straight line of sqrt(2 ID) over VGS; None where there is none."""
+    top = float(np.max(curve.y))
+    middle = (curve.y > 0.05 * top) & (curve.y < 0.6 * top)
+    x, y = curve.x[middle], np.sqrt(2.0 * curve.y[middle])
+    spread = float(np.sum((x - x.mean()) ** 2)) if x.size >= 2 else 0.0
+    if spread <= 0.0:
+        return None
+    slope = float(np.sum((x - x.mean()) * (y - y.mean()))) / spread
+    return (float(x.mean()) - float(y.mean()) / slope, slope**2) if slope > 0.0 else None

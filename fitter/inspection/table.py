@@ -79,6 +79,16 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             f"the plateau, {plateau:g} V, is not below VGS = {table.v_gs:g} V",
             "one of the two is from another row",
         )
+    threshold = part.stated.threshold
+    v_th = None if threshold is None else typical(threshold.v_gs_th)
+    if plateau and v_th and plateau <= v_th:
+        yield _finding(
+            "plateau above threshold",
+            "doubtful",
+            "v_plateau",
+            f"the plateau, {plateau:g} V, is not above VGS(th) = {v_th:g} V",
+            "the plateau lies above the threshold by what the load current needs: look at both",
+        )
     capacitance = part.stated.capacitance
     if capacitance is None:
         return
@@ -127,6 +137,17 @@ def _output_charge(part: Part) -> Iterator[Finding]:
             "coss_er, coss_tr",
             f"Co(er) = {er * 1e12:.3g} pF is above Co(tr) = {tr * 1e12:.3g} pF; where Coss falls it cannot be",
             "exchange coss_er_pF and coss_tr_pF: datasheets have printed their footnotes exchanged",
+        )
+    capacitance = part.stated.capacitance
+    c_oss = None if capacitance is None or capacitance.v_ds != o.v_ds else typical(capacitance.c_oss)
+    if er and c_oss and er < c_oss / (1.0 + _ROUNDING):
+        yield _finding(
+            "co order",
+            "doubtful",
+            "coss_er, coss",
+            f"Co(er) = {er * 1e12:.3g} pF is below Coss = {c_oss * 1e12:.3g} pF at {o.v_ds:g} V; where Coss falls with "
+            "VDS it cannot be",
+            "one of the two is from another row or in another unit",
         )
     for what, unit, stated, implied in (
         ("qoss", 1e9, q, None if tr is None else tr * o.v_ds),
