@@ -27,9 +27,7 @@ _FIELDS = {
 def exact(values):
     """An estimate without any uncertainty."""
     values = {name: scalar(value) for name, value in values.items()}
-    return Estimate(
-        space=ParameterSpace(free=(), fixed=values), coordinates=np.zeros(0), covariance=np.zeros((0, 0))
-    )
+    return Estimate(space=ParameterSpace(free=(), fixed=values), coordinates=np.zeros(0), covariance=np.zeros((0, 0)))
 
 
 def inside(values):
@@ -77,5 +75,3 @@ def redigitize(part, values, seed):
         table = replace(getattr(stated, group), **{name: Stated(typ=typ)})
         stated = replace(stated, **{group: table})
     return replace(part, curves=tuple(curves), stated=stated)
-
-
