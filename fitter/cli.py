@@ -35,6 +35,13 @@ app = typer.Typer(
 )
 
 
+class Form(StrEnum):
+    """Form of a subcircuit."""
+
+    EXPRESSIONS = "expressions"
+    ELEMENTS = "elements"
+
+
 class LoadKind(StrEnum):
     """Load of a gate-charge test."""
 
@@ -137,6 +144,9 @@ def netlist(
         Optional[Path],  # noqa: UP045
         typer.Option("--out", metavar="FILE", help="File to write; the screen by default."),
     ] = None,
+    form: Annotated[
+        Form, typer.Option("--form", help="With expressions, or of plain elements only, for any simulator.")
+    ] = Form.EXPRESSIONS,
     tj: Junction = 25.0,
 ) -> None:
     """Write the subcircuit again from a finished model, at another junction temperature if wanted."""
@@ -145,7 +155,7 @@ def netlist(
 
     loaded = load_model(model)
     with _told(loaded.extrapolation(tj)):
-        text = loaded.subcircuit(t_j=tj)
+        text = loaded.subcircuit(t_j=tj, form=form.value)
     if out is None:
         typer.echo(text, nl=False)
     else:

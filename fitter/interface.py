@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import os
 from pathlib import Path
+from typing import Literal
 
 import pandas as pd
 
 from fitter.errors import ModelFileError
 from fitter.model import FittedModel
 from fitter.models.temperature import REFERENCE
-from fitter.writers import model_file, netlist, tables
+from fitter.writers import elements, model_file, netlist, tables
 from fitter.writers.folder import write_file
 
 __all__ = ["Model", "load_model"]
@@ -19,20 +20,24 @@ __all__ = ["Model", "load_model"]
 class Model(FittedModel):
     """A model fitted to a part, with what it can write; see `FittedModel` for what it can compute."""
 
-    def subcircuit(self, t_j: float = REFERENCE) -> str:
+    def subcircuit(self, t_j: float = REFERENCE, form: Literal["expressions", "elements"] = "expressions") -> str:
         """The SPICE subcircuit, nodes in the order drain, gate, source.
 
         Parameters
         ----------
         t_j : float
             Junction temperature [degC].
+        form : {"expressions", "elements"}
+            With expressions in controlled sources, or with plain elements only, which any SPICE-compatible simulator
+            takes; its channel has a sharp threshold.
 
         Raises
         ------
         OperatingPointError
             Where the model knows nothing of that temperature.
         """
-        return netlist.subcircuit(self, t_j=t_j)
+        write = elements.element_subcircuit if form == "elements" else netlist.subcircuit
+        return write(self, t_j=t_j)
 
     def save(self, path: str | os.PathLike[str]) -> None:
         """Write the model file.

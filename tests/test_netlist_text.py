@@ -333,6 +333,9 @@ def test_a_value_that_is_not_finite_is_refused(fitted):
 def test_the_body_diode_points_from_source_to_drain(model, text):
     (line,) = [line for line in statements(text) if line.startswith("D")]
     anode, cathode = line.split()[1:3]
+    # A saturation current too small for simulators is shifted by a voltage source in front of the anode.
+    shift = [line.split() for line in statements(text) if line.startswith("VBODY")]
+    anode = shift[0][1] if shift else anode
     ends = ("source", "drain") if model.part.channel == "n" else ("drain", "source")
     assert (anode.partition("_")[0], cathode.partition("_")[0]) == ends
 

@@ -27,8 +27,6 @@ _BODY_BIAS = 20.0
 #: Resistance beside the channel [ohm], far above that of any leakage. Without it nothing but the milliohms of the leads
 #: holds the inner drain while the channel blocks, and solvers stumble over their own rounding.
 _LEAKAGE = 1e10
-#: Simulators take no saturation current [A] of a diode below some limit, or find no solution with it.
-_LEAST_CURRENT = 1e-14
 
 
 def element_subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | None = None) -> str:
@@ -75,7 +73,7 @@ def element_subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | N
         *gate_source_charge("GS", nodes.gate_source, t),
         comment("Drain-source charge"),
         *junction_charge("DS", junction.drain_source, t.drain_source, scalar(t.c_ds(0.0))),
-        *body_diode(model, around, t_j, _LEAST_CURRENT),
+        *body_diode(model, around, t_j),
         f".ENDS {around.name}",
     ]
     return "\n".join(lines) + "\n"

@@ -18,15 +18,22 @@ __all__ = ["DELAY", "NOMINAL", "Frame", "Lead", "Nodes", "body_diode", "frame"]
 
 #: Time by which a charge's current lags behind it [s]: far below any switching time, yet enough to damp the numerical
 #: oscillation of the trapezoidal rule at a capacitor that a voltage source drives. As a resistance in series with a
-#: capacitance of 1 nF it is 20 milliohms.
-DELAY = 20e-12
+#: capacitance of 1 nF it is 50 milliohms.
+DELAY = 50e-12
 #: Resistances below this [ohm] are left out: a conductance this large drowns all others in rounding noise.
 _LEAST_RESISTANCE = 1e-7
 #: Inductances below this [H] are left out: with the smallest capacitances they ring beyond every time step.
 _LEAST_INDUCTANCE = 1e-15
 
+#: Inductance over the resistance beside it [s]. A lead of a power package is no inductance above some hundred
+#: megahertz; as one it rings there with the transistor's capacitances, with hardly a loss, and time steps collapse.
+_RINGING = 5e-10
+
 #: Nominal temperature of circuit simulators [degC].
 NOMINAL = 27.0
+#: Least saturation current of a diode's card [A]: simulators raise a smaller one to a floor of their own. It is written
+#: as this, behind a voltage source that shifts the exponential back: IS exp(V/(N kT/q)) = IS' exp((V - V0)/(N kT/q)).
+_LEAST_CURRENT = 1e-14
 #: Differs from every element's name, also without regard to case.
 _DIODE_MODEL = "bodyjunction"
 
@@ -69,10 +76,12 @@ class Lead:
         return before[-1] if before else self.terminal
 
     def elements(self) -> list[str]:
-        """One line for each element."""
+        """One line for each element; a resistor beside an inductance damps what rings at gigahertz."""
         lines, node = [], self.terminal
         for name, end, value in self._parts:
             lines.append(f"{name} {node} {end} {number(value)}")
+            if name.startswith("L"):
+                lines.append(f"R{name} {node} {end} {number(value / _RINGING)}")
             node = end
         return lines
 
@@ -221,7 +230,7 @@ def _share_of_diode(t: Transistor, t_j: float) -> float:
     return min(1.0, scalar(series_resistance(t_j, t.diode)) / series)
 
 
-def body_diode(model: FittedModel, frame: Frame, t_j: float, least_current: float = 0.0) -> list[str]:
+def body_diode(model: FittedModel, frame: Frame, t_j: float) -> list[str]:
     """The body diode; its depletion charge is Cds, its own model stores only TT I.
 
     Parameters
@@ -232,9 +241,6 @@ def body_diode(model: FittedModel, frame: Frame, t_j: float, least_current: floa
         The subcircuit's frame.
     t_j : float
         Junction temperature [degC].
-    least_current : float
-        Least saturation current [A] of the model card. A smaller one is written as this, behind a voltage source that
-        shifts the exponential to where it was: IS exp(V/(N kT/q)) = IS' exp((V - V0)/(N kT/q)).
 
     Returns
     -------
@@ -253,9 +259,9 @@ def body_diode(model: FittedModel, frame: Frame, t_j: float, least_current: floa
     r_s = beyond if beyond >= _LEAST_RESISTANCE else 0.0
     transit_time = scalar(model.estimate.values.get(TRANSIT_TIME.name, 0.0))
     shift = []
-    if 0.0 < i_s < least_current:
-        v_0 = n * float(thermal_voltage(NOMINAL)) * float(np.log(least_current / i_s))
-        shift, anode, i_s = [f"VBODY {anode} body {number(v_0)}"], "body", least_current
+    if 0.0 < i_s < _LEAST_CURRENT:
+        v_0 = n * float(thermal_voltage(NOMINAL)) * float(np.log(_LEAST_CURRENT / i_s))
+        shift, anode, i_s = [f"VBODY {anode} body {number(v_0)}"], "body", _LEAST_CURRENT
     card = f".MODEL {_DIODE_MODEL} D(IS={number(i_s)} N={number(n)} RS={number(r_s)} TT={number(transit_time)} CJO=0)"
     return [
         comment(f"Body diode at {t_j:g} C; leave the simulator's temperature at {NOMINAL:g} C"),
