@@ -5,6 +5,7 @@ Whatever takes long to import is imported inside the commands, so that help text
 
 from __future__ import annotations
 
+import gc
 import io
 import os
 import sys
@@ -228,6 +229,8 @@ def main() -> None:
     """Run the command; the one place where an error becomes a message and an exit status."""
     # The matrices are small: threads that wait for each other cost more than they save, on a busy machine twentyfold.
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    # A command runs for seconds: looking for cycles of garbage costs more than it frees.
+    gc.disable()
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="replace")  # a screen that lacks a character gets a question mark

@@ -11,6 +11,7 @@ from typing import Literal
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.ticker import FuncFormatter, NullFormatter
 from numpy.typing import NDArray
 
 from fitter.errors import OperatingPointError
@@ -40,7 +41,7 @@ COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#E69F00", "#56B4E9", "#0
 _MARKERS = ("o", "s", "^", "D", "v", "P", "X")
 _STYLES = ("-", "--", "-.", ":", (0, (5, 1)), (0, (3, 1, 1, 1)), "-")
 _CAPACITANCES: tuple[tuple[Literal["ciss", "coss", "crss"], str], ...] = (
-    ("ciss", "$C_{iss}$"), ("coss", "$C_{oss}$"), ("crss", "$C_{rss}$"),
+    ("ciss", "Ciss"), ("coss", "Coss"), ("crss", "Crss"),
 )  # fmt: skip
 
 
@@ -70,7 +71,16 @@ def _draw_points(
             )  # fmt: skip
 
 
+def _plain_number(value: float, _: int) -> str:
+    """A decade's label as an ordinary number up to 10000, without the font that powers of ten need."""
+    return f"{value:g}" if 1e-4 < abs(value) < 1e5 else f"{value:.0e}".replace("e-0", "e-").replace("e+0", "e")
+
+
 def _finish(ax: Axes, title: str, x: str, y: str) -> Axes:
+    for axis in (ax.xaxis, ax.yaxis):
+        if axis.get_scale() == "log":
+            axis.set_major_formatter(FuncFormatter(_plain_number))
+            axis.set_minor_formatter(NullFormatter())
     ax.set_title(title, loc="left")
     ax.set_xlabel(x)
     ax.set_ylabel(y)
@@ -107,7 +117,7 @@ def plot_capacitances(model: FittedModel, ax: Axes | None = None) -> Axes:
     ax.set_xscale("log")
     ax.set_yscale("log")
     ax.legend(loc="lower left", frameon=False)
-    return _finish(ax, "Capacitances", f"{_minus(model)}$V_{{DS}}$ / V", "C / pF")
+    return _finish(ax, "Capacitances", f"{_minus(model)}VDS / V", "C / pF")
 
 
 def _temperatures(curves: Sequence[Curve]) -> list[float]:
@@ -165,9 +175,9 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
             ha="right", fontsize="small",
         )  # fmt: skip
     ax.legend(loc="upper left" if scale == "linear" else "lower right", frameon=False)
-    title = f"Transfer, {_minus(model)}$V_{{DS}}$ = {v_ds:g} V"
+    title = f"Transfer, {_minus(model)}VDS = {v_ds:g} V"
     minus = _minus(model)
-    return _finish(ax, title, f"{minus}$V_{{GS}}$ / V", f"{minus}$I_D$ / A")
+    return _finish(ax, title, f"{minus}VGS / V", f"{minus}ID / A")
 
 
 def plot_output(model: FittedModel, ax: Axes | None = None) -> Axes:
@@ -197,9 +207,9 @@ def plot_output(model: FittedModel, ax: Axes | None = None) -> Axes:
         _draw_points(ax, _points(model, curve.name), colour, marker)
     if curves:
         ax.set_ylim(0.0, 1.05 * max(float(np.max(c.y)) for c in curves))
-        ax.legend(loc="upper right", framealpha=0.85, edgecolor="none", title="$V_{GS}$")
+        ax.legend(loc="upper right", framealpha=0.85, edgecolor="none", title="VGS")
     minus = _minus(model)
-    return _finish(ax, "Output, 25 \N{DEGREE SIGN}C", f"{minus}$V_{{DS}}$ / V", f"{minus}$I_D$ / A")
+    return _finish(ax, "Output, 25 \N{DEGREE SIGN}C", f"{minus}VDS / V", f"{minus}ID / A")
 
 
 def plot_gate_charge(model: FittedModel, ax: Axes | None = None) -> Axes:
@@ -240,7 +250,7 @@ def plot_gate_charge(model: FittedModel, ax: Axes | None = None) -> Axes:
     load = ", resistive load" if point.load == "resistive" else ""
     minus = "\N{MINUS SIGN}" if model.sign < 0.0 else ""
     title = f"Gate charge at {minus}{point.v_dd:g} V, {minus}{point.i_d:g} A{load}"
-    return _finish(ax, title, "$Q_G$ / nC", f"{minus}$V_{{GS}}$ / V")
+    return _finish(ax, title, "QG / nC", f"{minus}VGS / V")
 
 
 def _draw_stated_charge(ax: Axes, model: FittedModel) -> None:
@@ -302,7 +312,7 @@ def plot_body_diode(model: FittedModel, ax: Axes | None = None) -> Axes:
                     _draw_points(ax, _points(model, curve.name), colour, marker)
         ax.set_yscale("log")
         ax.legend(loc="upper left", frameon=False)
-    return _finish(ax, "Body diode", "$V_{SD}$ / V", "$I_S$ / A")
+    return _finish(ax, "Body diode", "VSD / V", "IS / A")
 
 
 def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:

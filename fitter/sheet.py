@@ -38,7 +38,7 @@ _SETTINGS = {
     "font.family": "DejaVu Sans", "font.size": 6.5, "axes.titlesize": 7.5, "axes.titleweight": "bold",
     "axes.labelsize": 6.5, "xtick.labelsize": 6.0, "ytick.labelsize": 6.0, "legend.fontsize": 6.0,
     "legend.title_fontsize": 6.0, "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
-    "xtick.minor.width": 0.3, "ytick.minor.width": 0.3, "lines.solid_capstyle": "round", "pdf.fonttype": 42,
+    "xtick.minor.width": 0.3, "ytick.minor.width": 0.3, "lines.solid_capstyle": "round", "pdf.fonttype": 3,
     "svg.hashsalt": "fetwright", "text.usetex": False, "mathtext.fontset": "dejavusans",
 }  # fmt: skip
 

@@ -8,19 +8,17 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from fitter.errors import FitError
-from fitter.fitting import observations
 from fitter.fitting.assumptions import GateAssumption, assumed_space
 from fitter.fitting.blocks import Block, model_space
 from fitter.fitting.forms import FormTrial, fit_capacitances
 from fitter.fitting.intervals import Estimate
 from fitter.fitting.misfit import BlockStatistics, block_statistics
-from fitter.fitting.outliers import Outlier, set_aside
+from fitter.fitting.outliers import Outlier
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace, Values
-from fitter.fitting.stages import Stage, fit_body_diode, fit_channel, fit_temperature
+from fitter.fitting.stages import Stage, fit_body_diode, fit_channel, fit_gate_charge, fit_temperature
 from fitter.models.types import scalar
-from fitter.part import Part, Quantity
+from fitter.part import Part
 
 __all__ = ["FitResult", "fit"]
 
@@ -87,30 +85,17 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
     fixed = {name: value for stage in done for name, value in stage.fixed.items()}
     outliers = [outlier for stage in done for outlier in stage.outliers]
     if use_gate_charge:
-        charge_blocks = observations.gate_charge_blocks(part)
-        if not charge_blocks:
-            raise FitError(
-                "there are no gate-charge data to fit: digitize a gate_charge curve or state qg, qgs and qgd, or fit "
-                "without --use-gate-charge"
-            )
-        start = GateAssumption.of(part).start({**fixed, **start})
-        free += ["c_ch", "c_acc"]
-        if part.curves_of(Quantity.GATE_CHARGE) and "lambda" in fixed:
-            # The slope of the plateau determines it.
-            fixed.pop("lambda")
-            free.append("lambda")
-        every = [*blocks, *charge_blocks]
-        rough = solve(every, model_space(free, fixed, every), start, robust=True, rough=True)
-        marked, found = set_aside(rough)
-        by_name = {block.name: block for block in marked}
-        blocks += [by_name[block.name] for block in charge_blocks]
-        outliers += [o for o in found if o.curve in {block.name for block in charge_blocks}]
-        start = rough.values
+        charge = fit_gate_charge(part, {**fixed, **start}, ["lambda"] if "lambda" in fixed else [])
+        start = {**start, **_found(charge)}
+        blocks += charge.blocks
+        free += charge.free
+        fixed = {name: value for name, value in fixed.items() if name not in charge.free}
+        outliers += charge.outliers
     else:
         # They stand in no residual; what is assumed of them is added after the fit.
         fixed |= {"c_ch": 0.0, "c_acc": 1e-12}
     space = model_space(free, fixed, blocks)
-    solution, statistics = _widened(blocks, space, start)
+    solution, statistics = _widened(blocks, space, start, [stage.solution for stage in done])
     result = _result(solution, free, fixed)
     if not use_gate_charge:
         result = assumed_space(GateAssumption.of(part), *result)
@@ -128,15 +113,16 @@ def _found(stage: Stage) -> dict[str, float]:
 
 
 def _widened(
-    blocks: Sequence[Block], space: ParameterSpace, start: Values
+    blocks: Sequence[Block], space: ParameterSpace, start: Values, before: Sequence[Solution]
 ) -> tuple[Solution, tuple[BlockStatistics, ...]]:
-    """Least squares, and twice more with standard deviations widened where a misfit exceeds the reading errors."""
-    solution = solve(blocks, space, start, rough=True)
+    """Least squares with standard deviations widened by the misfit that earlier fits left, and again by its own."""
+    statistics = tuple(s for solution in before for s in block_statistics(solution))
     for last in (False, True):
-        widths = {s.name: s.inflation for s in block_statistics(solution)}
-        widened = [replace(b, inflation=widths[b.name]) for b in blocks]
-        solution = solve(widened, space, solution.values, rough=not last)
-    return solution, block_statistics(solution)
+        widths = {s.name: s.inflation for s in statistics}
+        widened = [b if b.held else replace(b, inflation=widths.get(b.name, 1.0)) for b in blocks]
+        solution = solve(widened, space, start, rough=not last)
+        start, statistics = solution.values, block_statistics(solution)
+    return solution, statistics
 
 
 def _result(solution: Solution, free: Sequence[str], fixed: Mapping[str, float]) -> tuple[ParameterSpace, Array, Array]:

@@ -6,14 +6,14 @@ C. M. Hurvich and C.-L. Tsai, Biometrika 76 (1989) 297.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fitter.errors import FitError
 from fitter.fitting import observations
-from fitter.fitting.blocks import Block, model_space
+from fitter.fitting.blocks import Block, PointsBlock, model_space
 from fitter.fitting.outliers import set_aside
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace
@@ -37,7 +37,7 @@ __all__ = ["CapacitanceFit", "FormTrial", "corrected_akaike", "fit_capacitances"
 Array = NDArray[np.float64]
 
 #: Evaluations that sort the starts, before the better ones are followed to their end.
-_FIRST_LOOK = 15
+_FIRST_LOOK = 10
 _FOLLOWED = 2
 
 _TOO_FEW = "too few capacitance data: digitize ciss, coss and crss, or two of them and state the third's table value"
@@ -249,6 +249,7 @@ def _choose(
 def _best(blocks: Sequence[Block], starts: Sequence[Mapping[str, float]], space: ParameterSpace) -> Solution:
     """The lowest of the minima that the better starts lead to."""
     if len(starts) > _FOLLOWED:
-        looks = [solve(blocks, space, start, robust=True, rough=True, evaluations=_FIRST_LOOK) for start in starts]
+        quick = [replace(b, looks=0) if isinstance(b, PointsBlock) else b for b in blocks]
+        looks = [solve(quick, space, start, robust=True, rough=True, evaluations=_FIRST_LOOK) for start in starts]
         starts = [look.values for look in sorted(looks, key=lambda look: look.cost)[:_FOLLOWED]]  # type: ignore[misc]
-    return min((solve(blocks, space, start, robust=True) for start in starts), key=lambda end: end.cost)
+    return min((solve(blocks, space, start, robust=True, rough=True) for start in starts), key=lambda end: end.cost)

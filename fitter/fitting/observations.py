@@ -69,7 +69,7 @@ _CAPACITANCES = (Quantity.CISS, Quantity.COSS, Quantity.CRSS)
 #: Curves that begin at 0 along x.
 _FROM_ZERO = (*_CAPACITANCES, Quantity.BODY_DIODE)
 #: On a linear VDS axis the first volts, where capacitances fall steeply, are within a few reading errors of each other.
-_LOOKS = 2
+_LOOKS = 1
 
 #: Groups of curves away from 25 degC.
 HOT_TRANSFER, HOT_OUTPUT, HOT_DIODE = "transfer hot", "output hot", "body_diode hot"

@@ -26,7 +26,7 @@ _LEAST_INFORMATION = 1e-12
 #: Residuals up to about this many standard deviations count by their square in a robust pass, too.
 _ROBUST_SCALE = 3.0
 #: Relative change of cost and coordinates that ends a fit; a look that only prepares the next fit takes the second.
-_TOLERANCE, _ROUGH_TOLERANCE = 1e-8, 1e-4
+_TOLERANCE, _ROUGH_TOLERANCE = 1e-7, 1e-4
 
 
 @dataclass(frozen=True, kw_only=True)

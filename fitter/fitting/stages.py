@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
+from fitter.errors import FitError
 from fitter.fitting import observations, start_values
+from fitter.fitting.assumptions import GateAssumption
 from fitter.fitting.blocks import Block, model_space
 from fitter.fitting.misfit import widening
 from fitter.fitting.outliers import Outlier, set_aside
@@ -14,10 +16,11 @@ from fitter.fitting.space import Values
 from fitter.models.channel import CHANNEL
 from fitter.models.diode import BODY_DIODE, TRANSIT_TIME, transit_time_from_charge, transit_time_from_time
 from fitter.models.temperature import TEMPERATURE
+from fitter.models.transistor import DEFINITIONS
 from fitter.models.types import scalar
 from fitter.part import Part, Quantity
 
-__all__ = ["Stage", "fit_body_diode", "fit_channel", "fit_temperature", "recovery_transit_time"]
+__all__ = ["Stage", "fit_body_diode", "fit_channel", "fit_gate_charge", "fit_temperature", "recovery_transit_time"]
 
 #: How much farther from its points the transfer curve may come to lie for the sake of output curves.
 _WORSE = 1.25
@@ -139,6 +142,41 @@ def fit_temperature(part: Part, channel: Stage) -> Stage | None:
     widths = {block.group: widening(solution, block.group) for block in marked}
     marked = tuple(replace(b, inflation=widths[b.group], held=True) for b in marked)
     return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
+
+
+def fit_gate_charge(part: Part, found: Values, untold: Sequence[str]) -> Stage:
+    """What only the gate charge shows, Cacc and Cch, with all that the other stages found held.
+
+    Parameters
+    ----------
+    part : Part
+        The data.
+    found : mapping of str to float
+        Every other parameter of the model.
+    untold : sequence of str
+        Parameters that the other data leave fixed and the slope of a digitized plateau shows: lambda.
+
+    Returns
+    -------
+    Stage
+
+    Raises
+    ------
+    FitError
+        Where there are no gate-charge data, or the channel found cannot carry the test's current.
+    """
+    blocks = observations.gate_charge_blocks(part)
+    if not blocks:
+        raise FitError(
+            "there are no gate-charge data to fit: digitize a gate_charge curve or state qg, qgs and qgd, or fit "
+            "without --use-gate-charge"
+        )
+    free = ("c_ch", "c_acc", *(untold if part.curves_of(Quantity.GATE_CHARGE) else ()))
+    start = GateAssumption.of(part).start(found)
+    held = {name: scalar(value) for name, value in start.items() if name in DEFINITIONS and name not in free}
+    rough = solve(blocks, model_space(free, held, blocks), start, robust=True, rough=True)
+    marked, outliers = set_aside(rough)
+    return Stage(blocks=marked, free=free, fixed={}, outliers=outliers, solution=rough)
 
 
 def recovery_transit_time(part: Part) -> dict[str, float]:

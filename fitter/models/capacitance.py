@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fitter.models.smooth import log1p, logistic, softplus
+from fitter.models.smooth import log1p, softplus, softplus_and_slope
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
@@ -236,8 +236,9 @@ def capacitance(v: ArrayLike, j: Junction) -> Numbers:
     v = np.asarray(v)
     total, rest = np.asarray(j.c_f) + np.zeros(v.shape), np.ones(())
     for shield in j.shields:
-        held = depletion_capacitance(_shielded_voltage(v, shield), j.c_0, j.phi, j.m)
-        total = total + rest * shield.s * held * logistic(np.asarray(shield.v) - v, shield.width)
+        beyond, slope = softplus_and_slope(v - np.asarray(shield.v), shield.width)
+        u = v - beyond + softplus(-np.asarray(shield.v), shield.width)
+        total = total + rest * shield.s * depletion_capacitance(u, j.c_0, j.phi, j.m) * (1.0 - slope)
         rest = rest * (1.0 - np.asarray(shield.s))
     return total + rest * depletion_capacitance(v, j.c_0, j.phi, j.m)
 

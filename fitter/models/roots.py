@@ -12,13 +12,13 @@ from fitter.models.types import Numbers
 __all__ = ["carries_derivatives", "increasing_root", "lifted_root"]
 
 _MOST_STEPS = 200
+#: A step this small relative to the root is the last one: the error behind a Newton step is about its square.
+_NEWTON, _BISECTION = 1e-8, 1e-13
 
 Function = Callable[[Numbers], tuple[Numbers, Numbers]]
 
 
-def increasing_root(
-    function: Function, start: Numbers, lower: Numbers, upper: Numbers, tolerance: float = 1e-13
-) -> NDArray[np.float64]:
+def increasing_root(function: Function, start: Numbers, lower: Numbers, upper: Numbers) -> NDArray[np.float64]:
     """Root of each of many increasing functions, by Newton's method kept inside a shrinking bracket.
 
     Parameters
@@ -27,13 +27,11 @@ def increasing_root(
         Takes the array of arguments, returns values and slopes, element by element.
     start, lower, upper : array_like of float
         First guess and bracket; they broadcast to the shape of the result.
-    tolerance : float
-        A step this small relative to the root ends the search for an element.
 
     Returns
     -------
     ndarray of float
-        Where the function crosses zero; the bracket's end where it does not cross inside.
+        Where the function crosses zero, to about 1e-13 of itself; the bracket's end where it does not cross inside.
     """
     x, low, high = (np.array(a, dtype=float) for a in np.broadcast_arrays(start, lower, upper))
     for _ in range(_MOST_STEPS):
@@ -42,9 +40,10 @@ def increasing_root(
         high = np.where(value > 0.0, x, high)
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             new = x - value / slope
-        new = np.where((new >= low) & (new <= high), new, 0.5 * (low + high))
+        inside = (new >= low) & (new <= high)
+        new = np.where(inside, new, 0.5 * (low + high))
         new = np.where(value == 0.0, x, new)
-        done = np.abs(new - x) <= tolerance * np.abs(new) + 1e-300
+        done = np.abs(new - x) <= np.where(inside, _NEWTON, _BISECTION) * np.abs(new) + 1e-300
         x = new
         if done.all():
             break

@@ -25,9 +25,13 @@ def log1p(z: Numbers) -> Numbers:
     >>> complex(log1p(np.asarray(1e-20 + 1e-30j)))
     (1e-20+1e-30j)
     """
-    if not np.iscomplexobj(z):
+    z = np.asarray(z)
+    if z.dtype.kind != "c":
         return np.asarray(np.log1p(z))
-    return np.asarray(np.log1p(z.real) + 1j * (z.imag / (1.0 + z.real)))
+    result = np.empty(z.shape, dtype=complex)
+    result.real = np.log1p(z.real)
+    result.imag = z.imag / (1.0 + z.real)
+    return result
 
 
 def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
