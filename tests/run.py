@@ -1,7 +1,8 @@
 """Set up what is missing and run every check: style, types, layers, tests.
 
 ``python3 tests/run.py`` is all a newcomer needs; it makes ``.venv`` with everything in it and, as root on a machine
-with Debian's packages, installs the simulators. Arguments go to pytest. With CI=true a missing simulator is a failure.
+with Debian's packages, installs the simulators. Arguments go to pytest; without any it runs all fast tests, two at a
+time. With CI=true a missing simulator is a failure.
 """
 
 import os
@@ -70,7 +71,7 @@ def main():
     run(BIN / "ruff", "format", "--check", ".")
     run(BIN / "mypy")
     run(BIN / "lint-imports")
-    run(BIN / "python", "-m", "pytest", *sys.argv[1:])
+    run(BIN / "python", "-m", "pytest", *(sys.argv[1:] or ["-n", "2", "--dist", "loadfile"]))
 
 
 if __name__ == "__main__":

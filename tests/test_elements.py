@@ -17,7 +17,7 @@ pytestmark = pytest.mark.simulator
 
 OPTIONS = ".options ABSTOL=1e-9\n"
 #: Nearly ideal: it clamps at a few millivolts above its supply.
-CLAMP = ".model clamp D(IS=1e-9 N=0.1)\n"
+CLAMP = ".model clamp D(IS=1e-9 N=0.5)\n"
 FREE_WHEEL = ".model wheel D(IS=1e-12 RS=2m CJO=200p)\n"
 SUFFIXES = {"": 1.0, "Meg": 1e6, "G": 1e9, "T": 1e12, "K": 1e3, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12, "f": 1e-15}
 FIGURE = re.compile(r"(?P<digits>[-+.0-9]+(?:E[-+]?\d+)?)(?P<suffix>[A-Za-z]*)")

@@ -212,7 +212,7 @@ def _gate_charge(bench: _Bench) -> Deck:
     start, end = 0.02 * duration, 1.1 * duration
     if p.load == "current":
         load = [
-            f"IL {bench.pair('vdd', 'd')} {number(p.i_d)}", ".MODEL clampdiode D(IS=1e-9 N=0.1)",
+            f"IL {bench.pair('vdd', 'd')} {number(p.i_d)}", ".MODEL clampdiode D(IS=1e-9 N=0.5)",
             f"DCLAMP {bench.pair('d', 'vdd')} clampdiode",
         ]  # fmt: skip
     else:

@@ -18,8 +18,8 @@ __all__ = ["DELAY", "NOMINAL", "Frame", "Lead", "Nodes", "body_diode", "frame"]
 
 #: Time by which a charge's current lags behind it [s]: far below any switching time, yet enough to damp the numerical
 #: oscillation of the trapezoidal rule at a capacitor that a voltage source drives. As a resistance in series with a
-#: capacitance of 1 nF it is 50 milliohms.
-DELAY = 50e-12
+#: capacitance of 1 nF it is 100 milliohms.
+DELAY = 100e-12
 #: Resistances below this [ohm] are left out: a conductance this large drowns all others in rounding noise.
 _LEAST_RESISTANCE = 1e-7
 #: Inductances below this [H] are left out: with the smallest capacitances they ring beyond every time step.
