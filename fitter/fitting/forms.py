@@ -242,8 +242,25 @@ def _choose(
         least = len(junction_names(definitions, 0))
         raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {least} parameters")
     trial, values = min(ends, key=lambda end: end[0].aicc)
+    if trial.shields > 1:
+        values = _ordered(definitions, values)
     trials = tuple(FormTrial(**{**vars(t), "chosen": t is trial}) for t, _ in ends)
     return _Chosen(values=values, free=junction_names(definitions, trial.shields), trials=trials)
+
+
+def _ordered(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, float]) -> dict[str, float]:
+    """The same two shields with the one at the higher voltage first: either order says the same."""
+    name = {field: d.name for field, d in definitions.items()}
+    result = dict(values)
+    if values[name["v_1"]] >= values[name["v_2"]]:
+        return result
+    # Shares of all cells: the second shield's is of what the first one left.
+    low, high = values[name["s_1"]], (1.0 - values[name["s_1"]]) * values[name["s_2"]]
+    result[name["s_1"]], result[name["s_2"]] = high, low / max(1.0 - high, 1e-12)
+    for letter in "vw":
+        first, second = name[f"{letter}_1"], name[f"{letter}_2"]
+        result[first], result[second] = values[second], values[first]
+    return result
 
 
 def _best(blocks: Sequence[Block], starts: Sequence[Mapping[str, float]], space: ParameterSpace) -> Solution:
