@@ -109,6 +109,10 @@ def fit(
         bool,
         typer.Option("--leave-out", help="Predict each curve and table value from all the others, too."),
     ] = False,
+    limits: Annotated[
+        bool,
+        typer.Option("--limits", help="Add a weak and a strong variant, at the stated min and max, to the subcircuit."),
+    ] = False,
     strict: Annotated[
         bool,
         typer.Option("--strict", help="Exit with status 1 where the fitted model violates a stated limit."),
@@ -117,11 +121,14 @@ def fit(
     """Fit the model: read, check, fit, predict the gate charge, compare it with what is stated, write everything."""
     from fitter import screen
     from fitter.pipeline import fit_folder, output_target, write_outputs
+    from fitter.variants import variants
 
     target = output_target(folder, out)
     model = fit_folder(folder, use_gate_charge=use_gate_charge, leave_out=leave_out)
-    files = write_outputs(model, target)
+    corners = variants(model) if limits else ()
+    files = write_outputs(model, target, corners)
     screen.show_model(model)
+    screen.show_limits(model, corners)
     screen.show_left_out(model)
     screen.show_files(target, files)
     if strict and any(c.verdict == "outside limit" for c in model.checks):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -16,8 +17,10 @@ from fitter.part import Notice, Part, Quantity
 from fitter.prospects import Prospects, prospects
 from fitter.reader import read_part
 from fitter.sheet import sheet_files
+from fitter.variants import Variant
 from fitter.writers import model_file, tables
 from fitter.writers.folder import replace_folder
+from fitter.writers.netlist import variant_subcircuit
 
 __all__ = [
     "OUTPUT_FOLDER",
@@ -32,7 +35,15 @@ __all__ = [
 #: Name of the output folder inside the part folder, unless told otherwise.
 OUTPUT_FOLDER = "model"
 
-_TEXT_FILES = ("model.json", "parameters.csv", "checks.csv", "curves.csv", "gate_charge.csv", "left_out.csv")
+_TEXT_FILES = (
+    "model.json",
+    "parameters.csv",
+    "checks.csv",
+    "curves.csv",
+    "gate_charge.csv",
+    "left_out.csv",
+    "limits.csv",
+)
 _SHEET_FILES = ("sheet.png", "sheet.pdf")
 
 
@@ -122,13 +133,15 @@ def next_to_digitize(folder: Path) -> tuple[Model, Prospects]:
     return model, prospects(part, result, model.test_point())
 
 
-def output_files(model: Model) -> dict[str, bytes]:
+def output_files(model: Model, limits: Sequence[Variant[Model]] = ()) -> dict[str, bytes]:
     """Everything that ``fetwright fit`` writes, by file name.
 
     Parameters
     ----------
     model : Model
         As from `fit_part`.
+    limits : sequence of Variant
+        Its weak and strong variants, if they are wanted: further subcircuits in the same file, and a table.
 
     Returns
     -------
@@ -141,8 +154,10 @@ def output_files(model: Model) -> dict[str, bytes]:
         "checks.csv": tables.csv_text(model.checks_frame()),
         "curves.csv": tables.csv_text(model.curves_frame()),
         "gate_charge.csv": _gate_charge_text(model),
-        f"{model.part.name}.lib": model.subcircuit(),
+        f"{model.part.name}.lib": "\n".join([model.subcircuit(), *(variant_subcircuit(v) for v in limits)]),
     }
+    if limits:
+        texts["limits.csv"] = tables.csv_text(tables.limits_frame(model, limits))
     if model.left_out:
         texts["left_out.csv"] = tables.csv_text(tables.left_out_frame(model))
     return {**{name: text.encode() for name, text in texts.items()}, **sheet_files(model)}
@@ -184,13 +199,15 @@ def output_target(folder: Path, out: Path | None) -> Path:
     return out
 
 
-def write_outputs(model: Model, target: Path) -> tuple[str, ...]:
+def write_outputs(model: Model, target: Path, limits: Sequence[Variant[Model]] = ()) -> tuple[str, ...]:
     """Write everything into a folder, all or nothing.
 
     Parameters
     ----------
     model : Model
         As from `fit_part`.
+    limits : sequence of Variant
+        As for `output_files`.
     target : Path
         The folder. Files in it that the tool did not write are left alone.
 
@@ -204,7 +221,7 @@ def write_outputs(model: Model, target: Path) -> tuple[str, ...]:
     OutputError
         Where the folder cannot be written; then nothing has changed.
     """
-    files = output_files(model)
+    files = output_files(model, limits)
     taken = [name for name in files if (target / name).exists()]
     if taken and not (target / "model.json").exists():
         raise OutputError(

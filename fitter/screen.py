@@ -6,7 +6,7 @@ import math
 import sys
 from collections.abc import Mapping, Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from rich import box
 from rich.console import Console
@@ -21,12 +21,14 @@ if TYPE_CHECKING:
     from fitter.model import Interval
     from fitter.part import Part
     from fitter.prospects import Prospects
+    from fitter.variants import Variant
 
 __all__ = [
     "show_files",
     "show_findings",
     "show_gate_charge",
     "show_left_out",
+    "show_limits",
     "show_model",
     "show_prospects",
     "show_reading",
@@ -123,6 +125,25 @@ def show_model(model: Model) -> None:
     console.print(table)
     for notice in model.notices:
         console.print(f"[dim]note[/dim] {escape(notice.text)}", soft_wrap=True)
+
+
+def show_limits(model: Model, corners: Sequence[Variant[Any]]) -> None:
+    """The weak and strong variants against the stated limits; nothing where they were not asked for."""
+    import pandas as pd
+
+    from fitter.writers.tables import limits_frame
+
+    if not corners:
+        return
+    table = _table("variant", "quantity", "stated", "value", "at a limit", "limits", right=("stated", "value"))
+    for row in limits_frame(model, corners).to_dict("records"):
+        ends = [f"{end} {row[f'stated_{end}']:.4g}" for end in ("min", "typ", "max") if pd.notna(row[f"stated_{end}"])]
+        value = f"{row['value']:.4g} {row['unit']}" if pd.notna(row["value"]) else "not determined"
+        style = "bold red" if row["limits"] == "not met" else ""
+        said = f"[{style}]{row['limits']}[/{style}]" if style else row["limits"]
+        set_by = "yes" if row["set_by_limit"] == "yes" else ""
+        table.add_row(row["variant"], row["quantity"], ", ".join(ends), value, set_by, said)
+    _console().print(table)
 
 
 def show_left_out(model: Model) -> None:

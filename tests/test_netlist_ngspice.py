@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from simulators import ngspice
 
+from fitter.models.diode import forward_voltage
 from fitter.part import Package
 
 pytestmark = pytest.mark.simulator
@@ -113,3 +114,50 @@ def test_clamped_inductive_double_pulse(model, tmp_path, r_gate):
     assert np.interp(t_on + 0.9 * gap, time, v_d) > 0.9 * p.v_dd  # off, the free-wheel diode carries the current
     assert np.interp(t_on + gap + 0.9 * second, time, v_d) < 0.25 * p.v_dd + 2.0  # on again
     assert np.interp(end, time, v_d) > 0.9 * p.v_dd
+
+
+def test_charges_return_their_energy_over_a_cycle(model, tmp_path):
+    """From off to off again, at the same voltages: what the three charges took up they have given back."""
+    s, p = model.sign, model.test_point()
+    t_switch = 40 * (5.0 + (model.part.package.r_g or 0.0)) * float(model.ciss(s * p.v_dd))
+    period = 12 * t_switch
+    deck = (
+        write(bare(model), tmp_path)
+        + f"Vdd vdd 0 {s * p.v_dd}\nRload vdd d {p.v_dd / p.i_d}\nRgate in g 5\nX1 d g 0 {model.part.name}\n"
+        + f"Vdrive in 0 PULSE(0 {s * p.v_gs} {period / 4} 1n 1n {period / 4} {period})\n"
+        + f".tran {t_switch / 200} {period} 0 {t_switch / 200}\n"
+    )  # fmt: skip
+    inner = "v(x1.drain_core)", "v(x1.drain_in)", "v(x1.source_core)", "v(x1.source_in)"
+    given = [name for name in inner if name.split(".")[1][:-1] in (tmp_path / "part.lib").read_text().split()]
+    currents = ["i(v.x1.vqgd)", "i(v.x1.vqgs)", "i(v.x1.vqds)"]
+    rows = ngspice(deck, tmp_path, columns=["v(d)", "v(g)", "i(vdd)", *currents, *given])
+    time, v_d, v_g, i_dd, i_gd, i_gs, i_ds = rows[:, :7].T
+    at = dict(zip(given, rows[:, 7:].T, strict=True))
+    drain_core = at.get("v(x1.drain_core)", v_d)
+    drain_in = at.get("v(x1.drain_in)", drain_core)
+    source_core = at.get("v(x1.source_core)", 0.0 * v_d)
+    source_in = at.get("v(x1.source_in)", source_core)
+    # The currents are in n-channel polarity, as the voltages that drive them.
+    power = s * ((drain_in - v_g) * i_gd + (v_g - source_in) * i_gs + (drain_core - source_core) * i_ds)
+    supplied = np.trapezoid(-s * p.v_dd * i_dd, time)
+    assert supplied > 0.0
+    stored = np.max(np.abs(np.cumsum(power[1:] * np.diff(time))))
+    assert stored > 1e-3 * supplied / 100
+    assert abs(np.trapezoid(power, time)) < 0.005 * supplied
+
+
+def test_reverse_conduction_with_the_channel_on_and_off(model, tmp_path):
+    s, p = model.sign, model.test_point()
+    current = 0.5 * p.i_d
+    drops = []
+    for v_gs in (0.0, p.v_gs):
+        deck = (
+            write(bare(model), tmp_path)
+            + f"Vg g 0 {s * v_gs}\nIr {swapped(model, 'd', '0')} {current}\nX1 d g 0 {model.part.name}\n.op\n"
+        )  # fmt: skip
+        drops.append(-s * ngspice(deck, tmp_path, columns=["v(d)"])[0, -1])
+    diode = model.transistor().diode
+    assert drops[0] == pytest.approx(float(forward_voltage(current, diode)), rel=0.02)
+    on = current / -float(s * model.drain_current(s * p.v_gs, -s * 1e-3)) * 1e-3
+    assert drops[1] == pytest.approx(on, rel=0.1)
+    assert drops[1] < drops[0]

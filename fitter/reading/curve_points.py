@@ -272,16 +272,17 @@ def describe(axis: Axis, unit: str) -> str:
 
 def _looks_log_x(quantity: Quantity, x: Array) -> bool:
     """Whether points of a capacitance curve lie as one clicks them along a logarithmic axis."""
-    if quantity not in _CAPACITANCES or x[0] <= 0.0 or math.log10(x[-1] / x[0]) <= _LOG_DECADES_X:
+    first, middle, last = float(x[0]), float(np.median(x)), float(x[-1])
+    # Differences of logarithms, since a first value next to nothing would make the ratio infinite.
+    if quantity not in _CAPACITANCES or first <= 0.0 or math.log10(last) - math.log10(first) <= _LOG_DECADES_X:
         return False
-    middle = float(np.median(x))
-    linear = (middle - x[0]) / (x[-1] - x[0])
-    log = math.log(middle / x[0]) / math.log(x[-1] / x[0])
-    return bool(abs(log - 0.5) < abs(linear - 0.5))
+    linear = (middle - first) / (last - first)
+    log = (math.log(middle) - math.log(first)) / (math.log(last) - math.log(first))
+    return abs(log - 0.5) < abs(linear - 0.5)
 
 
 def _looks_log_y(quantity: Quantity, y: Array) -> bool:
     if quantity in _CAPACITANCES:
         return True
     lowest, highest = float(y.min()), float(y.max())
-    return quantity in _Y_OFTEN_LOG and lowest > 0.0 and math.log10(highest / lowest) > _LOG_DECADES_Y
+    return quantity in _Y_OFTEN_LOG and lowest > 0.0 and math.log10(highest) - math.log10(lowest) > _LOG_DECADES_Y

@@ -69,17 +69,18 @@ class Problems:
     """The problems found so far, by file."""
 
     def __init__(self) -> None:
-        self._by_file: dict[str, list[Problem]] = {}
+        # By file, in the order in which they were found; dictionaries, since a file can have very many.
+        self._by_file: dict[str, dict[Problem, None]] = {}
         self._more: Counter[str] = Counter()
 
     def add(self, file: str, found: str, expected: str, *, line: int | None = None, place: str = "") -> None:
         """Note one problem; the arguments are those of `Problem`. The same one twice is noted once."""
         problem = Problem(file=file, line=line, place=place, found=found, expected=expected)
-        problems = self._by_file.setdefault(file, [])
+        problems = self._by_file.setdefault(file, {})
         if problem in problems:
             return
         if len(problems) < MAX_PROBLEMS_PER_FILE:
-            problems.append(problem)
+            problems[problem] = None
         else:
             self._more[file] += 1
 

@@ -7,9 +7,12 @@ real nodes.
 
 from __future__ import annotations
 
+from typing import Any
+
 from fitter.model import FittedModel
 from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import Transistor
+from fitter.variants import Variant
 from fitter.writers.expressions import (
     channel_current,
     drain_source_charge,
@@ -20,10 +23,12 @@ from fitter.writers.netlist_frame import DELAY, Nodes, body_diode, frame
 from fitter.writers.netlist_header import header
 from fitter.writers.netlist_text import comment, number, statement
 
-__all__ = ["subcircuit"]
+__all__ = ["subcircuit", "variant_subcircuit"]
 
 #: Capacitance over which a charge becomes a voltage [F]: over it the charges of power transistors are some volts.
 _UNIT = 1e-9
+#: As much of a part's name as leaves room for that of a variant.
+_LONGEST_STEM = 25
 
 
 def subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | None = None) -> str:
@@ -86,3 +91,28 @@ def _charge(name: str, pair: tuple[str, str], expression: str) -> list[str]:
         f"VQ{name} {sensed} 0 0",
         f"FQ{name} {plus} {minus} VQ{name} 1",
     ]
+
+
+def variant_subcircuit(variant: Variant[Any]) -> str:
+    """The subcircuit of a weak or strong variant, under the part's name and the kind.
+
+    Parameters
+    ----------
+    variant : Variant
+        As from `fitter.variants.variants`.
+
+    Returns
+    -------
+    str
+    """
+    moved = [row.quantity for row in variant.rows if row.moved]
+    rest = [row.quantity for row in variant.rows if not row.moved and row.met is None]
+    speed = "slow" if variant.kind == "weak" else "fast"
+    name = f"{variant.model.part.name[:_LONGEST_STEM]}_{variant.kind}"
+    lines = [
+        comment(f"{variant.kind} variant of {variant.model.part.name}, a {speed} corner of the stated limits"),
+        comment(f"- at a stated limit: {', '.join(moved) or 'nothing'}", indent="  "),
+        comment(f"- without a stated limit, as it follows from the rest: {', '.join(rest) or 'nothing'}", indent="  "),
+        comment(),
+    ]
+    return "\n".join(lines) + "\n" + subcircuit(variant.model, name=name)

@@ -6,7 +6,9 @@ are positive.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import pandas as pd
 
@@ -15,6 +17,7 @@ from fitter.gate_charge import GateChargeCurve
 from fitter.leave_out import MEAN, LeftOut
 from fitter.model import FittedModel
 from fitter.units import si_factor
+from fitter.variants import Variant
 
 __all__ = [
     "GATE_CHARGE_COLUMNS",
@@ -25,6 +28,7 @@ __all__ = [
     "curves_frame",
     "gate_charge_frame",
     "left_out_frame",
+    "limits_frame",
     "parameters_frame",
     "ShownLeftOut",
     "shown_checks",
@@ -194,6 +198,26 @@ def left_out_frame(model: FittedModel) -> pd.DataFrame:
     columns = [
         "left_out", "quantity", "unit", "condition", "given", "predicted", "predicted_low", "predicted_high",
         "deviation_percent", "sigmas",
+    ]  # fmt: skip
+    return pd.DataFrame(rows, columns=columns)
+
+
+def limits_frame(model: FittedModel, variants: Sequence[Variant[Any]]) -> pd.DataFrame:
+    """The variants against the stated limits, in the units of the datasheet: a row for each variant and quantity."""
+    rows = []
+    for variant in variants:
+        for row in variant.rows:
+            unit, factor, signed = SHOWN[row.quantity]
+            factor *= model.sign if signed else 1.0
+            stated, value = row.stated, row.value
+            figures = [None if x is None else x * factor for x in (stated.min, stated.typ, stated.max, value)]
+            rows.append((
+                variant.kind, row.quantity, unit, row.condition, *figures, "yes" if row.moved else "no",
+                "no limit stated" if row.met is None else "met" if row.met else "not met",
+            ))  # fmt: skip
+    columns = [
+        "variant", "quantity", "unit", "condition", "stated_min", "stated_typ", "stated_max", "value", "set_by_limit",
+        "limits",
     ]  # fmt: skip
     return pd.DataFrame(rows, columns=columns)
 
