@@ -128,9 +128,8 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     return table
 
 
-_FIXED_AS: dict[str, Origin] = {"lambda": "fixed", "tt_d": "fitted"}
+_FIXED_AS: dict[str, Origin] = {"lambda": "fixed"}
 _WHY_FIXED = {
-    "tt_d": "solved for the stated recovery",
     "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
     "r_d": "is taken as 0: the stated RDS(on), or an output curve at low VDS, would tell",
 }

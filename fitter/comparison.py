@@ -9,11 +9,11 @@ from typing import Literal
 import numpy as np
 
 from fitter.errors import OperatingPointError
-from fitter.fitting.intervals import Estimate, intervals
+from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, intervals, standard_errors
 from fitter.fitting.space import Values
 from fitter.gate_charge import GateChargeReading, OperatingPoint, gate_charge_curve, read_gate_charge
 from fitter.models.channel import on_resistance, threshold_voltage, transconductance
-from fitter.models.diode import forward_voltage, recovery
+from fitter.models.diode import TRANSIT_TIME, forward_voltage, recovery
 from fitter.models.transistor import Transistor
 from fitter.models.types import Numbers, scalar
 from fitter.part import Curve, Notice, Part, Stated, StatedBodyDiode
@@ -197,23 +197,33 @@ def compare(
             return () if t.diode is None else (forward_voltage(i_s, t.diode),)
 
         add([row("vsd", "V", forward, d.v_sd, "vsd (table)")], forward_figures if known else None)
-        result.extend(_recovery_rows(d, recovery, scalar(estimate.values.get("tt_d", 0.0))))
+        result.extend(_recovery_rows(d, recovery, estimate))
     return tuple(result)
 
 
-def _recovery_rows(d: StatedBodyDiode, condition: str, transit_time: float) -> list[Comparison]:
+def _recovery_rows(d: StatedBodyDiode, condition: str, estimate: Estimate) -> list[Comparison]:
     """QRR and tRR of the exported diode; it was solved for one of them, QRR where that is stated."""
-    found: tuple[float | None, float | None] = (None, None)
+    nothing: tuple[float | None, float | None] = (None, None)
+    found = low = high = nothing
+    transit_time = scalar(estimate.values.get(TRANSIT_TIME.name, 0.0))
     if transit_time > 0.0 and d.i_f is not None and d.di_dt is not None:
-        found = recovery(transit_time, d.i_f, d.di_dt)
+        off = 0.0
+        if TRANSIT_TIME.name in estimate.space.names:
+            off = COVERAGE_FACTOR * float(
+                standard_errors(lambda v: np.reshape(v[TRANSIT_TIME.name], (-1, 1)), estimate)[0]
+            )
+        low, found, high = (
+            recovery(max(t, 1e-3 * transit_time), d.i_f, d.di_dt)
+            for t in (transit_time - off, transit_time, transit_time + off)
+        )
     solved_for = "qrr" if d.q_rr is not None and d.q_rr.typ else "trr"
     return [
         Comparison(
-            quantity=quantity, unit=unit, condition=condition, stated=stated, fitted=value, low=value, high=value,
-            used_in_fit=value is not None and quantity == solved_for,
-            verdict=_verdict(stated, value, value, value),
+            quantity=quantity, unit=unit, condition=condition, stated=stated, fitted=found[k], low=low[k], high=high[k],
+            used_in_fit=found[k] is not None and quantity == solved_for,
+            verdict=_verdict(stated, found[k], low[k], high[k]),
         )
-        for quantity, unit, stated, value in (("qrr", "C", d.q_rr, found[0]), ("trr", "s", d.t_rr, found[1]))
+        for k, (quantity, unit, stated) in enumerate((("qrr", "C", d.q_rr), ("trr", "s", d.t_rr)))
         if stated is not None
     ]  # fmt: skip
 

@@ -250,7 +250,6 @@ NUMBERS = [
     ["parameters", "k", "stderr"],
     ["estimate", "coordinates", 0],
     ["estimate", "covariance", 0, 0],
-    ["estimate", "fixed", "tt_d"],
     ["estimate", "assumption", "v_dd"],
     ["correlations", 0, "coefficient"],
     ["statistics", 0, "misfit"],

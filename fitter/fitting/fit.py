@@ -16,7 +16,15 @@ from fitter.fitting.misfit import BlockStatistics, block_statistics
 from fitter.fitting.outliers import Outlier
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace, Values
-from fitter.fitting.stages import Stage, fit_body_diode, fit_channel, fit_gate_charge, fit_temperature
+from fitter.fitting.stages import (
+    Stage,
+    fit_body_diode,
+    fit_channel,
+    fit_gate_charge,
+    fit_temperature,
+    recovery_transit_time,
+)
+from fitter.models.diode import TRANSIT_TIME
 from fitter.models.types import scalar
 from fitter.part import Part
 
@@ -97,6 +105,9 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
     space = model_space(free, fixed, blocks)
     solution, statistics = _widened(blocks, space, start, [stage.solution for stage in done])
     result = _result(solution, free, fixed)
+    recovery = recovery_transit_time(part)
+    if recovery is not None and "is_d" in free:
+        result = _with_transit_time(result, *recovery)
     if not use_gate_charge:
         result = assumed_space(GateAssumption.of(part), *result)
     return FitResult(
@@ -123,6 +134,19 @@ def _widened(
         solution = solve(widened, space, start, rough=not last)
         start, statistics = solution.values, block_statistics(solution)
     return solution, statistics
+
+
+def _with_transit_time(
+    result: tuple[ParameterSpace, Array, Array], value: float, standard_error: float
+) -> tuple[ParameterSpace, Array, Array]:
+    """Add the body diode's transit time, which nothing else depends on."""
+    space, coordinates, covariance = result
+    n = coordinates.size
+    wider = np.zeros((n + 1, n + 1))
+    wider[:n, :n] = covariance
+    wider[n, n] = (standard_error / TRANSIT_TIME.typical) ** 2
+    space = replace(space, free=(*space.free, TRANSIT_TIME))
+    return space, np.append(coordinates, value / TRANSIT_TIME.typical), wider
 
 
 def _result(solution: Solution, free: Sequence[str], fixed: Mapping[str, float]) -> tuple[ParameterSpace, Array, Array]:

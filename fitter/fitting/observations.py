@@ -48,6 +48,7 @@ TABLE_ERROR = {
     "q_gd": 0.04,
     "v_plateau": 0.02,
     "v_sd": 0.02,
+    "recovery": 0.05,
 }
 
 #: Built-in potential of a junction, and how far the fitted one may be expected from it, as a natural logarithm:

@@ -14,7 +14,7 @@ from fitter.fitting.outliers import Outlier, set_aside
 from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import Values
 from fitter.models.channel import CHANNEL
-from fitter.models.diode import BODY_DIODE, TRANSIT_TIME, transit_time_from_charge, transit_time_from_time
+from fitter.models.diode import BODY_DIODE, transit_time_from_charge, transit_time_from_time
 from fitter.models.temperature import TEMPERATURE
 from fitter.models.transistor import DEFINITIONS
 from fitter.models.types import scalar
@@ -179,8 +179,8 @@ def fit_gate_charge(part: Part, found: Values, untold: Sequence[str]) -> Stage:
     return Stage(blocks=marked, free=free, fixed={}, outliers=outliers, solution=rough)
 
 
-def recovery_transit_time(part: Part) -> dict[str, float]:
-    """The body diode's transit time from the stated QRR or, without it, tRR; empty where neither is stated.
+def recovery_transit_time(part: Part) -> tuple[float, float] | None:
+    """The body diode's transit time from the stated QRR or, without it, tRR, with its standard error.
 
     Parameters
     ----------
@@ -189,17 +189,20 @@ def recovery_transit_time(part: Part) -> dict[str, float]:
 
     Returns
     -------
-    dict of str to float
-        tt_d [s].
+    value, standard_error : float
+        [s]; None where neither is stated.
     """
     table = part.stated.body_diode
     if table is None or table.i_f is None or table.di_dt is None:
-        return {}
-    if table.q_rr is not None and table.q_rr.typ:
-        return {TRANSIT_TIME.name: transit_time_from_charge(table.q_rr.typ, table.i_f, table.di_dt)}
-    if table.t_rr is not None and table.t_rr.typ:
-        return {TRANSIT_TIME.name: transit_time_from_time(table.t_rr.typ, table.i_f, table.di_dt)}
-    return {}
+        return None
+    for stated, solve_for in ((table.q_rr, transit_time_from_charge), (table.t_rr, transit_time_from_time)):
+        if stated is not None and stated.typ:
+            error = observations.TABLE_ERROR["recovery"]
+            low, value, high = (
+                solve_for(stated.typ * factor, table.i_f, table.di_dt) for factor in (1.0 - error, 1.0, 1.0 + error)
+            )
+            return value, 0.5 * (high - low)
+    return None
 
 
 def fit_body_diode(part: Part) -> Stage | None:
@@ -229,5 +232,4 @@ def fit_body_diode(part: Part) -> Stage | None:
     rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
     solution = solve(marked, model_space(free, fixed, marked), rough.values, rough=True)
-    fixed |= recovery_transit_time(part)
     return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
