@@ -18,7 +18,7 @@ from typing import Annotated, Optional
 
 import typer
 
-from fitter.errors import ExtrapolationWarning, FitterError
+from fitter.errors import ExtrapolationWarning, FitterError, OutputError
 
 __all__ = ["app", "main"]
 
@@ -167,7 +167,7 @@ def netlist(
     if out is None:
         typer.echo(text, nl=False)
     else:
-        write_file(out, text.encode())
+        write_file(out, text.encode(), mark=b"* Fitted by fetwright")
         typer.echo(out)
 
 
@@ -185,6 +185,9 @@ def decks(
     loaded = load_model(model)
     with _told(loaded.extrapolation(tj)):
         files = {name: text.encode() for name, text in deck_files(loaded, tj).items()}
+    foreign = [name for name in files if (out / name).exists() and b"fetwright" not in (out / name).read_bytes()[:4000]]
+    if foreign:
+        raise OutputError(f"{out / foreign[0]}: there is a file that this command did not write; choose another --out")
     replace_folder(out, files, files)
     for name in files:
         typer.echo(out / name)
@@ -216,8 +219,11 @@ def charge(
         found = loaded.gate_charge_intervals(vdd, i_d, vgs, load.value, tj)
         curve = loaded.gate_charge(vdd, i_d, vgs, load.value, tj)
     if out is not None:
-        write_file(out, tables.csv_text(tables.gate_charge_frame(curve)).encode())
-    screen.show_gate_charge(found)
+        frame = tables.gate_charge_frame(curve)
+        write_file(out, tables.csv_text(frame).encode(), mark=",".join(tables.GATE_CHARGE_COLUMNS).encode())
+    s = loaded.sign
+    where = f"VDD {s * abs(vdd):g} V, ID {s * abs(i_d):g} A, VGS {s * abs(vgs):g} V, {load.value} load, Tj {tj:g} C"
+    screen.show_gate_charge(loaded, found, where)
     if out is not None:
         typer.echo(out)
 

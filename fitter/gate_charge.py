@@ -248,7 +248,7 @@ def _joined(first: Numbers, second: Numbers) -> Numbers:
 def read_gate_charge(q_g: ArrayLike, v_gs: ArrayLike, v_th: ArrayLike, window: float = 0.0) -> GateChargeReading:
     """Read QGS, QGD and the plateau off a gate-charge curve, fitted or digitized, by the rule of JESD24-2.
 
-    The plateau voltage is VGS where dVGS/dQ first has its minimum. Line 1 is the regression of VGS on Q below
+    The plateau voltage is VGS where dVGS/dQ has its minimum. Line 1 is the regression of VGS on Q below
     VGS(th) and the plateau, line 2 that over the on-state: the upper half of the way from the plateau to the end.
     QGS is the charge where line 1 reaches the plateau voltage, QGD the charge where line 2 does, less QGS.
     (The rule as quoted in public documents; the standard itself was not at hand.)
@@ -306,7 +306,7 @@ def _charge_at(q_g: Numbers, v_gs: Numbers, weights: Numbers, voltage: Numbers) 
 
 
 def _flattest(q_g: Numbers, v_gs: Numbers, window: float) -> Numbers:
-    """VGS where its slope over charge first has its minimum."""
+    """VGS where its slope over charge has its minimum."""
     if window > 0.0:
         return _flattest_smoothed(q_g.real, v_gs.real, window)
     with np.errstate(divide="ignore", invalid="ignore"):

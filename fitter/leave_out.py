@@ -103,8 +103,8 @@ def leave_out(part: Part, result: FitResult) -> tuple[LeftOut, ...]:
         elif isinstance(block, PointsBlock):
             rows.append(_curve_row(next(c for c in part.curves if c.name == block.name), block, estimate))
     rows += _gate_charge_rows(part, _without(part, result, charge) if charge else result.estimate)
-    seen = {row.quantity for row in rows}
-    names = [name for name in _quantities(part, result.estimate) if name not in (*seen, *_GATE_CHARGE)]
+    told = {row.quantity for row in rows if row.condition != MEAN}
+    names = [name for name in _quantities(part, result.estimate) if name not in (*told, *_GATE_CHARGE)]
     for name in names:
         rows += _table_rows(part, result.estimate, f"{name} (table)", (name,))
     return tuple(rows)
@@ -143,6 +143,9 @@ def _without(part: Part, result: FitResult, gone: Collection[Block]) -> Estimate
     held = {**fixed, **{name: scalar(before[name]) for name in unseen}}
     space = model_space(fitted, held, blocks)
     solution = solve(blocks, space, {name: scalar(before[name]) for name in space.names if name in before}, rough=True)
+    # What only this fit drove onto a bound is not known for that.
+    bounded = {n for n, at in zip(result.solution.space.names, result.solution.on_bound, strict=True) if at}
+    solution = replace(solution, on_bound=solution.on_bound & np.array([name in bounded for name in space.names]))
     keep = [i for i, name in enumerate(space.names) if name in fitted]
     covariance = solution.covariance[np.ix_(keep, keep)]
     return _with_unseen(
@@ -194,7 +197,10 @@ def _table_rows(part: Part, estimate: Estimate, left_out: str, names: Sequence[s
 
 def _row(left_out: str, c: Comparison, given: float, relative_error: float) -> LeftOut:
     error = abs(given) * relative_error
-    return _judged(left_out, c.quantity, c.condition, c.unit, given, error, c.fitted, c.low, c.high)
+    row = _judged(left_out, c.quantity, c.condition, c.unit, given, error, c.fitted, c.low, c.high)
+    if row.predicted is None or row.low is None or row.high is None:
+        return row
+    return _unpredicted(row) if _nothing(row.predicted, row.low, row.high) else row
 
 
 def _judged(
@@ -209,7 +215,7 @@ def _judged(
     high: float | None,
 ) -> LeftOut:
     sigmas = None
-    if predicted is None or low is None or high is None or _nothing(predicted, low, high):
+    if predicted is None or low is None or high is None or not np.isfinite([predicted, low, high]).all():
         predicted = low = high = None
     else:
         # Towards the given value the interval has a width of its own.
@@ -222,10 +228,8 @@ def _judged(
 
 
 def _nothing(predicted: float, low: float, high: float) -> bool:
-    if not np.isfinite([predicted, low, high]).all():
-        return True
-    size = max(abs(predicted), 1e-300)
-    return high - predicted > (_PREDICTS_NOTHING - 1.0) * size or predicted - low > (_PREDICTS_NOTHING - 1.0) * size
+    small, middle, large = sorted((abs(low), abs(predicted), abs(high)))
+    return large > _PREDICTS_NOTHING * middle or middle > _PREDICTS_NOTHING * small
 
 
 def _curve_row(curve: Curve, block: PointsBlock, estimate: Estimate) -> LeftOut:
@@ -244,14 +248,16 @@ def _curve_row(curve: Curve, block: PointsBlock, estimate: Estimate) -> LeftOut:
     )
     value, low, high = (float(x[0]) for x in intervals(mean, estimate))
     given = float(np.mean(block.y[used]))
-    logarithmic = curve.y_axis.scale == "log"
-    if logarithmic and max(high - value, value - low) > math.log(_PREDICTS_NOTHING):
-        return _judged(curve.name, str(curve.quantity), MEAN, curve.y_unit, math.exp(given), 1.0, None, None, None)
     row = _judged(curve.name, str(curve.quantity), MEAN, curve.y_unit, given, error, value, low, high)
-    if not logarithmic:
-        return row
+    if curve.y_axis.scale == "linear":
+        return _unpredicted(row) if row.predicted is None or _nothing(value, low, high) else row
     ends = [None if x is None else math.exp(x) for x in (row.predicted, row.low, row.high)]
-    return replace(row, given=math.exp(given), predicted=ends[0], low=ends[1], high=ends[2])
+    row = replace(row, given=math.exp(given), predicted=ends[0], low=ends[1], high=ends[2])
+    return _unpredicted(row) if _nothing(math.exp(value), math.exp(low), math.exp(high)) else row
+
+
+def _unpredicted(row: LeftOut) -> LeftOut:
+    return replace(row, predicted=None, low=None, high=None, sigmas=None)
 
 
 def _gate_charge_rows(part: Part, estimate: Estimate) -> list[LeftOut]:

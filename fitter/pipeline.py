@@ -23,6 +23,7 @@ from fitter.writers.folder import replace_folder
 from fitter.writers.netlist import variant_subcircuit
 
 __all__ = [
+    "DOUBTFUL",
     "OUTPUT_FOLDER",
     "fit_folder",
     "fit_part",
@@ -34,6 +35,8 @@ __all__ = [
 
 #: Name of the output folder inside the part folder, unless told otherwise.
 OUTPUT_FOLDER = "model"
+#: Begins the notices of what the inspection found doubtful.
+DOUBTFUL = "doubtful: "
 
 _TEXT_FILES = (
     "model.json",
@@ -104,7 +107,7 @@ def _judged(folder: Path) -> Part:
     stops = [str(finding) for finding in findings if finding.severity == "stop"]
     if stops:
         raise FitError("\n".join(["these data would make a meaningless model:", *stops]))
-    doubts = tuple(Notice(topic=f.topic, text=str(f)) for f in findings if f.severity == "doubtful")
+    doubts = tuple(Notice(topic=f.topic, text=f"{DOUBTFUL}{f}") for f in findings if f.severity == "doubtful")
     return replace(part, notices=part.notices + doubts)
 
 

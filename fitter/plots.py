@@ -175,7 +175,7 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
             ha="right", fontsize="small",
         )  # fmt: skip
     ax.legend(loc="upper left" if scale == "linear" else "lower right", frameon=False)
-    title = f"Transfer, {_minus(model)}VDS = {v_ds:g} V"
+    title = f"Transfer, {_minus(model)}VDS = {v_ds:g} V" + (", log" if scale == "log" else "")
     minus = _minus(model)
     return _finish(ax, title, f"{minus}VGS / V", f"{minus}ID / A")
 

@@ -91,11 +91,15 @@ def show_findings(findings: Sequence[Finding]) -> None:
 
 
 def show_model(model: Model) -> None:
-    """The parameters with their errors, the comparison, the notices."""
+    """What is doubtful about the data, the parameters with their errors, the comparison, the notices."""
+    from fitter.pipeline import DOUBTFUL
     from fitter.writers.tables import shown_checks
 
     console = _console()
     console.print(f"[bold]{model.part.name}[/bold]")
+    doubts = [n for n in model.notices if n.text.startswith(DOUBTFUL)]
+    for notice in doubts:
+        console.print(f"[yellow]{escape(notice.text)}[/yellow]", soft_wrap=True)
     table = _table("parameter", "value", "std. error", "origin", "meaning", right=("value", "std. error"))
     for p in model.parameters.values():
         error = "" if p.stderr is None else engineering(p.stderr, p.unit, 2)
@@ -124,6 +128,8 @@ def show_model(model: Model) -> None:
         )  # fmt: skip
     console.print(table)
     for notice in model.notices:
+        if notice in doubts:
+            continue
         console.print(f"[dim]note[/dim] {escape(notice.text)}", soft_wrap=True)
 
 
@@ -178,7 +184,8 @@ def show_prospects(model: Model, found: Prospects) -> None:
     sign = model.sign
     console = _console()
     console.print(
-        f"[bold]{model.part.name}[/bold]: half of the 95 % interval, relative to the figure, "
+        f"[bold]{model.part.name}[/bold]: half of the 95 % interval, relative to the figure, with "
+        f"the gate charge {'fitted' if model.used_gate_charge else 'not fitted'}, "
         f"at VDD {sign * p.v_dd:g} V, ID {sign * p.i_d:g} A, VGS {sign * p.v_gs:g} V",
         soft_wrap=True,
     )
@@ -203,8 +210,12 @@ def show_files(folder: Path, files: Sequence[str]) -> None:
     _console().print(f"{escape(str(folder))}: {', '.join(files)}", soft_wrap=True)
 
 
-def show_gate_charge(found: Mapping[str, Interval]) -> None:
-    """Gate-charge figures with their intervals."""
+def show_gate_charge(model: Model, found: Mapping[str, Interval], where: str) -> None:
+    """Gate-charge figures with their intervals, at an operating point in words."""
+    console = _console()
+    console.print(f"[bold]{model.part.name}[/bold]: gate charge at {where}", soft_wrap=True)
+    if not model.used_gate_charge:
+        console.print("[dim]note[/dim] c_acc and c_ch are assumed: the model was not fitted to gate-charge data")
     table = _table("figure", "value", "95 % interval", right=("value", "95 % interval"))
     for name, label, unit in (
         ("qg", "QG", "C"),
@@ -214,4 +225,4 @@ def show_gate_charge(found: Mapping[str, Interval]) -> None:
     ):
         x = found[name]
         table.add_row(label, engineering(x.value, unit), f"{engineering(x.low, unit)} to {engineering(x.high, unit)}")
-    _console().print(table)
+    console.print(table)

@@ -66,7 +66,7 @@ def engineering(value: float, unit: str, digits: int = 3) -> str:
     value : float
         In SI [unit].
     unit : str
-        SI unit; empty for a pure number, which gets no prefix.
+        SI unit; a pure number, and a unit such as 1/V, get no prefix.
     digits : int
         Significant digits.
 
@@ -82,7 +82,7 @@ def engineering(value: float, unit: str, digits: int = 3) -> str:
     """
     if not math.isfinite(value):
         return f"{value} {unit}".strip()
-    if not unit or value == 0.0:
+    if not unit or unit.startswith("1") or value == 0.0:
         return f"{value:.{digits}g} {unit}".strip()
     rounded = float(f"{value:.{digits}g}")
     if not _LEAST_PREFIX <= abs(rounded) < _MOST_PREFIX:

@@ -167,7 +167,7 @@ def solve(
             "the fit cannot begin: at its start values the channel does not carry the gate-charge test's current"
         )
     tolerance = _ROUGH_TOLERANCE if rough else _TOLERANCE
-    with np.errstate(invalid="ignore"):  # lmfit's own covariance, which is not used, may not be positive
+    with np.errstate(invalid="ignore", divide="ignore"):  # of lmfit's own covariance, which is not used
         result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations).minimize(
             method="least_squares", jac=jacobian, x_scale="jac", ftol=tolerance, xtol=tolerance, gtol=tolerance,
             loss="soft_l1" if robust else "linear", f_scale=_ROBUST_SCALE,

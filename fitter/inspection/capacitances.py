@@ -10,7 +10,7 @@ from fitter.inspection.finding import Comparison, Finding, ratio
 from fitter.inspection.reading import error_at, first_curve, log_error, read_at, typical
 from fitter.part import Curve, Part, Quantity, Stated
 
-__all__ = ["definitions", "notes", "rating", "rising", "stated_charge", "table", "table_reach"]
+__all__ = ["definitions", "notes", "rating", "readable", "rising", "stated_charge", "table", "table_reach"]
 
 #: A typical curve and a typical table value differ by less than this factor: max over typ of Ciss is 1.2 to 1.3
 #: (common practice, no source).
@@ -19,6 +19,8 @@ _FACTOR = 1.5
 _BEYOND_RATING = 2.0
 #: A curve reaches at least half the voltage that its table value is stated at.
 _REACH = 0.5
+#: Reading errors from zero that a point read on a linear axis lies off it.
+_READABLE = 1.5
 #: Integrals of hand-digitized curves are good to 5-10 % (common practice, no source); what lies below the first point,
 #: and the rounding of stated charges, come on top.
 _CHARGE = 1.5
@@ -86,6 +88,22 @@ def rating(part: Part, curve: Curve) -> Iterator[Comparison]:
         off=ratio(factor, 0.0, _BEYOND_RATING),
         says=f"the curve runs to {factor:.3g} times the rated {part.v_ds_max:g} V",
         remedy="look at the VDS axis and at vds_max_V",
+    )
+
+
+def readable(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """On a linear axis nothing can be read that is small against a click's error."""
+    if curve.y_axis.scale != "linear" or not curve.y_axis.printed:
+        return
+    lowest = int(np.argmin(curve.y))
+    clicks = float(curve.y[lowest]) / (curve.point_error * curve.y_axis.length)
+    yield Comparison(
+        rule="unreadable",
+        curve=curve,
+        at=lowest,
+        off=_READABLE / max(clicks, 1e-3),
+        says=f"the lowest point is {clicks:.2g} times the error of a click on its linear axis",
+        remedy='if the axis is printed logarithmic, write scale = "log"',
     )
 
 

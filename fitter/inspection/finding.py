@@ -16,6 +16,10 @@ Severity = Literal["stop", "doubtful", "note"]
 SEVERITIES: tuple[Severity, ...] = ("stop", "doubtful", "note")
 
 
+#: A curve this many times its limit off a table value makes a meaningless model, whatever the reason.
+_HOPELESS = 4.0
+
+
 @dataclass(frozen=True, kw_only=True)
 class Finding:
     """One thing that an inspection found.
@@ -99,11 +103,12 @@ class Comparison:
         return self.rule, frozenset(names)
 
     def finding(self) -> Finding:
-        """The contradiction as a finding."""
+        """The contradiction as a finding; one far from a table value stops the fit, explained or not."""
+        hopeless = self.severity == "doubtful" and bool(self.stated) and self.off > _HOPELESS
         names = [self.curve.name] + ([self.other.name] if self.other is not None else [])
         return Finding(
             rule=self.rule,
-            severity=self.severity,
+            severity="stop" if hopeless else self.severity,
             topic=", ".join(names),
             file=self.curve.file,
             line=int(self.curve.lines[self.at]),

@@ -11,7 +11,7 @@ from fitter.inspection.reading import first_curve, is_cold, read_at, typical
 from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part, Quantity
 
-__all__ = ["end", "first_leg", "plateau", "rising", "start", "total", "transfer"]
+__all__ = ["end", "first_leg", "from_zero", "plateau", "rising", "start", "total", "transfer"]
 
 #: QG max over typ is 1.2 to 1.5 (common practice, no source); typical curve and typical value differ by less.
 _LEAST_TOTAL, _MOST_TOTAL = 0.75, 1.35
@@ -20,6 +20,8 @@ _LEAST_TOTAL, _MOST_TOTAL = 0.75, 1.35
 _LEAST_LEG, _MOST_LEG = 0.66, 1.31
 #: The plateau is printed to two digits, and read off the figure's line.
 _PLATEAU = 1.2
+#: Farthest below 0 that a click may lie, as a share of the largest VGS.
+_BELOW_ZERO = 0.08
 
 
 def rising(part: Part, curve: Curve) -> Iterator[Comparison]:
@@ -50,6 +52,20 @@ def start(part: Part, curve: Curve) -> Iterator[Comparison]:
         off=abs(share) / 0.12,
         says=f"the first leg meets VGS = 0 at {begins * 1e9:.3g} nC, not near 0",
         remedy="look at the charge axis' from and to",
+    )
+
+
+def from_zero(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """The test begins at VGS = 0; a figure that begins below it wants shifting first."""
+    lowest = int(np.argmin(curve.y))
+    share = -float(curve.y[lowest]) / max(float(np.max(np.abs(curve.y))), 1e-300)
+    yield Comparison(
+        rule="below zero",
+        curve=curve,
+        at=lowest,
+        off=share / _BELOW_ZERO,
+        says=f"the curve begins at VGS = {curve.y[lowest]:.3g} V, and all charges here count from VGS = 0",
+        remedy="leave out the points below VGS = 0, and subtract the charge at VGS = 0 from all others",
     )
 
 

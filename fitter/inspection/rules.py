@@ -22,6 +22,7 @@ _CAPACITANCE: tuple[_Rule, ...] = (
     capacitances.rating,
     capacitances.definitions,
     capacitances.rising,
+    capacitances.readable,
 )
 _RULES: dict[Quantity, tuple[_Rule, ...]] = {
     Quantity.CISS: (*_CAPACITANCE, gate_charge.first_leg),
@@ -51,6 +52,7 @@ _RULES: dict[Quantity, tuple[_Rule, ...]] = {
     Quantity.GATE_CHARGE: (
         gate_charge.rising,
         gate_charge.start,
+        gate_charge.from_zero,
         gate_charge.total,
         gate_charge.end,
         gate_charge.plateau,

@@ -8,12 +8,16 @@ from itertools import pairwise
 
 from fitter.inspection.finding import Finding, Severity
 from fitter.inspection.reading import PART_FILE, typical
-from fitter.part import Part, Stated
+from fitter.part import Part, Quantity, Stated
 
 __all__ = ["inspect"]
 
 #: Rounding of table values to two or three digits (common practice, no source).
 _ROUNDING = 0.03
+#: A real diode's reverse current decays, so its charge is less than the triangle's; how much less is a judgement.
+_LEAST_TRIANGLE, _MOST_TRIANGLE = 0.1, 1.5
+#: Thresholds are read at one current throughout a datasheet (common practice, no source).
+_LIKE = 30.0
 
 
 def inspect(part: Part) -> Iterator[Finding]:
@@ -21,6 +25,8 @@ def inspect(part: Part) -> Iterator[Finding]:
     yield from _order(part)
     yield from _gate_charge(part)
     yield from _output_charge(part)
+    yield from _recovery(part)
+    yield from _threshold_current(part)
     yield from _conditions(part)
 
 
@@ -122,7 +128,7 @@ def _power_of_ten(factor: float, what: str) -> str:
     for power in (-3, -2, -1, 1, 2, 3):
         if 0.7 <= factor / 10.0**power <= 1.4:
             return f"a factor of about {10.0**power:g}: look at the unit of {what}"
-    return f"look at {what} and the plateau again"
+    return f"look at {what} again"
 
 
 def _output_charge(part: Part) -> Iterator[Finding]:
@@ -163,6 +169,40 @@ def _output_charge(part: Part) -> Iterator[Finding]:
                 f"{o.v_ds:g} V",
                 "one of them is from another row or in another unit",
             )
+
+
+def _recovery(part: Part) -> Iterator[Finding]:
+    """QRR is at most the triangle that tRR and dI/dt span, and not a small part of it."""
+    d = part.stated.body_diode
+    if d is None or d.di_dt is None:
+        return
+    q_rr, t_rr = typical(d.q_rr), typical(d.t_rr)
+    if not q_rr or not t_rr:
+        return
+    share = q_rr / (0.5 * d.di_dt * t_rr**2)
+    if not _LEAST_TRIANGLE <= share <= _MOST_TRIANGLE:
+        yield _finding(
+            "recovery",
+            "doubtful",
+            "qrr, trr",
+            f"QRR is {share:.3g} times dI/dt tRR^2/2, the largest charge that fits into tRR",
+            _power_of_ten(share, "qrr, trr or di_dt"),
+        )
+
+
+def _threshold_current(part: Part) -> Iterator[Finding]:
+    """The table's threshold and its temperature curve are read at like currents."""
+    table = part.stated.threshold
+    for curve in part.curves_of(Quantity.VGS_TH_TEMPERATURE):
+        if table is None or not curve.i_d or 1.0 / _LIKE <= table.i_d / curve.i_d <= _LIKE:
+            continue
+        yield _finding(
+            "threshold current",
+            "doubtful",
+            "stated.threshold, " + curve.name,
+            f"VGS(th) is stated at {table.i_d:g} A, its temperature curve at {curve.i_d:g} A",
+            "look at both currents: id_mA against id_A",
+        )
 
 
 def _conditions(part: Part) -> Iterator[Finding]:

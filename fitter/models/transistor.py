@@ -130,8 +130,8 @@ class Transistor:
     def c_gd(self, v_dg: ArrayLike) -> Numbers:
         """Gate-drain capacitance [F] at VDG [V]: Cgd for VDG >= 0, Cacc below."""
         v_dg = np.asarray(v_dg)
-        depleted = cap.capacitance(np.where(v_dg.real > 0.0, v_dg, 0.0), self.gate_drain)
-        return np.where(v_dg.real >= 0.0, depleted, self.c_acc)
+        depleted = cap.capacitance(np.where(v_dg.real < 0.0, 0.0, v_dg), self.gate_drain)
+        return np.where(v_dg.real < 0.0, self.c_acc, depleted)
 
     def q_gd(self, v_dg: ArrayLike) -> Numbers:
         """Charge [C] of the gate-drain capacitance at VDG [V], zero at 0 V."""

@@ -13,8 +13,9 @@ from fitter.model import FittedModel
 from fitter.models.diode import TRANSIT_TIME, forward_voltage, recovery
 from fitter.models.temperature import REFERENCE
 from fitter.models.types import scalar
+from fitter.version import VERSION
 from fitter.writers.netlist import subcircuit
-from fitter.writers.netlist_text import comment, number
+from fitter.writers.netlist_text import comment, number, statement
 
 __all__ = ["Deck", "deck_files", "decks"]
 
@@ -79,7 +80,8 @@ def decks(model: FittedModel, t_j: float = REFERENCE) -> tuple[Deck, ...]:
     Returns
     -------
     tuple of Deck
-        Without the recovery where the model has no body diode that stores charge.
+        Without the recovery where the model has no body diode that stores charge, and without what the stated
+        gate-charge test cannot be run with.
 
     Raises
     ------
@@ -91,7 +93,13 @@ def decks(model: FittedModel, t_j: float = REFERENCE) -> tuple[Deck, ...]:
         _capacitance, _transfer, _output, _gate_charge, _recovery, _double_pulse
     )  # fmt: skip
     bench = _Bench(model=model, t_j=t_j)
-    return tuple(deck for make in makers if (deck := make(bench)) is not None)
+    found = []
+    for make in makers:
+        try:
+            found.append(make(bench))
+        except OperatingPointError:
+            continue  # what the stated test cannot be run with, the others still can
+    return tuple(deck for deck in found if deck is not None)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -119,7 +127,8 @@ class _Bench:
     ) -> Deck:  # fmt: skip
         """Put a circuit together; each measurement is its name, its statement, the value to expect, and its unit."""
         lines = [
-            comment(f"{self.device}: {title}"), comment(f"Tj {self.t_j:g} C. {_CAUTION}"), comment(),
+            comment(f"{self.device}: {title}"),
+            comment(f"Written by fetwright {VERSION}. Tj {self.t_j:g} C. {_CAUTION}"), comment(),
             comment(look), comment(), comment("Expected"),
             *(comment(f"  {n} = {value:.4g} {unit}".rstrip()) for n, _, value, unit in measurements),
             f".INCLUDE {self.device}.lib",
@@ -161,7 +170,7 @@ def _transfer(bench: _Bench) -> Deck:
     v_ds = bench.volts(curves[0].v_ds if curves and curves[0].v_ds else 10.0)
     point = m.test_point()
     top = bench.volts(point.v_gs)
-    plateau = _gate_voltage(m, point.i_d, abs(v_ds), bench.t_j)
+    plateau = min(_gate_voltage(m, point.i_d, abs(v_ds), bench.t_j), 0.9 * point.v_gs)
     levels = [bench.volts(round(x, 2)) for x in (plateau, 0.5 * (plateau + scalar(_threshold(m, bench.t_j))))]
     measurements = [
         (f"id_{i}", f"DC id_{i} FIND i(VD) AT={number(v)}", -float(m.drain_current(v, v_ds, bench.t_j)),
@@ -260,7 +269,7 @@ def _recovery(bench: _Bench) -> Deck | None:
     step = [(0.0, -drop), (begin, -drop), (begin + 1e-9, supply)]
     circuit = [
         comment("The supply first holds the forward current, then steps up and drives it down"),
-        "VDD vdd 0 PWL(" + " ".join(f"{number(at)} {number(s * v)}" for at, v in step) + ")",
+        statement("VDD vdd 0 PWL(" + " ".join(f"{number(at)} {number(s * v)}" for at, v in step) + ")"),
         f"L1 vdd d {number(inductance)} IC={number(-s * i_f)}", "VG g 0 0", f"X1 d g 0 {bench.device}",
     ]  # fmt: skip
     most = "MAX" if s > 0.0 else "MIN"
@@ -269,7 +278,8 @@ def _recovery(bench: _Bench) -> Deck | None:
     return bench.deck(
         "diode_recovery", f"body-diode recovery from {i_f:g} A at {di_dt * 1e-6:g} A/us",
         "i(L1) falls through zero and beyond while the stored charge flows out. It peaks where v(d) has risen to the "
-        "supply; the ringing after that is of L1 with Coss.",
+        "supply; the ringing after that is of L1 with Coss. The charge up to the peak is the diode's and that of Coss: "
+        "where a stated QRR holds both, it is too large.",
         circuit, [f".TRAN {grain} {number(end)} 0 {grain} UIC"], measurements,
     )  # fmt: skip
 
@@ -291,10 +301,7 @@ def _double_pulse(bench: _Bench) -> Deck | None:
         ".MODEL wheeldiode D(IS=1e-12 RS=2m CJO=200p)", f"DWHEEL {bench.pair('d', 'vdd')} wheeldiode",
         "VDRIVE in 0 PWL(0 0", *steps, "+ )", f"RGATE in g {number(_GATE_RESISTOR)}", f"X1 d g 0 {bench.device}",
     ]  # fmt: skip
-    try:
-        on = abs(float(m.drain_current(bench.volts(p.v_gs), bench.volts(1e-3), bench.t_j)) / 1e-3)
-    except OperatingPointError:
-        return None
+    on = abs(float(m.drain_current(bench.volts(p.v_gs), bench.volts(1e-3), bench.t_j)) / 1e-3)
     at = delay + t_on - 2 * edge
     # The on-state drop takes a little of the supply from the inductance.
     tau = inductance * on

@@ -44,7 +44,7 @@ def _junction_charge(v: str, j: Junction, unit: float) -> str:
         voltages.append((share * scalar(shield.s), _shielded_voltage(v, shield)))
         share *= 1.0 - scalar(shield.s)
     voltages.append((share, v))
-    terms = [f"{number(scalar(j.c_f) / unit)} * {v}"]
+    terms = [f"{number(scalar(j.c_f) / unit)} * {v}"] if scalar(j.c_f) > 0.0 else []
     for part, u in voltages:
         if part > 0.0:
             power = f"exp({number(rest_of_m)} * log(1 + ({u}) / {number(phi)}))"

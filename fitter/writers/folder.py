@@ -20,6 +20,8 @@ __all__ = ["replace_folder", "write_file"]
 #: Begin the names of what a run has beside its target: what is new, and what is set aside.
 _MARK, _ASIDE = ".fetwright-", ".fetwright-aside-"
 _OLD = "old"
+#: Bytes of a file in which its mark stands.
+_BEGINNING = 4000
 _AT_FDCWD = -100
 _RENAME_EXCHANGE = 2
 
@@ -68,7 +70,7 @@ def replace_folder(target: Path, files: Mapping[str, bytes], own: Collection[str
                 shutil.rmtree(new, ignore_errors=True)
 
 
-def write_file(target: Path, content: bytes) -> None:
+def write_file(target: Path, content: bytes, mark: bytes = b"") -> None:
     """Write one file so that it is either the old one or the new one, whenever it is looked at.
 
     What is no ordinary file, such as a device or a pipe, is written to as it is.
@@ -79,17 +81,21 @@ def write_file(target: Path, content: bytes) -> None:
         The file.
     content : bytes
         All of it.
+    mark : bytes
+        What an earlier file of this kind holds near its beginning: one without it is someone else's.
 
     Raises
     ------
     OutputError
-        Where it cannot be written; then nothing has changed.
+        Where it cannot be written, or would replace someone else's file; then nothing has changed.
     """
     new: Path | None = None
     with _said(target):
         if target.exists() and not target.is_file() and not target.is_dir():
             target.write_bytes(content)
             return
+        if mark and target.is_file() and not _holds(target, mark):
+            raise OutputError(f"{target}: there is a file that this command did not write; choose another --out")
         try:
             _sweep(target)
             mode = stat.S_IMODE(target.stat().st_mode) if target.exists() else 0o666 & ~_umask()
@@ -102,6 +108,13 @@ def write_file(target: Path, content: bytes) -> None:
         finally:
             if new is not None:
                 new.unlink(missing_ok=True)
+
+
+def _holds(path: Path, mark: bytes) -> bool:
+    """Whether a file's beginning holds a mark; an empty file belongs to nobody."""
+    with path.open("rb") as f:
+        beginning = f.read(_BEGINNING)
+    return not beginning or mark in beginning
 
 
 @contextmanager

@@ -8,7 +8,7 @@ from __future__ import annotations
 import json
 import math
 import re
-from dataclasses import dataclass
+from dataclasses import MISSING, dataclass, fields
 from typing import TypeVar
 
 import numpy as np
@@ -22,6 +22,9 @@ from fitter.fitting.intervals import Estimate
 from fitter.fitting.misfit import BlockStatistics
 from fitter.fitting.space import ParameterSpace
 from fitter.model import FittedModel, Validity
+from fitter.models.channel import CHANNEL, Channel
+from fitter.models.diode import BODY_DIODE, BodyDiode
+from fitter.models.temperature import TEMPERATURE, TemperatureLaws
 from fitter.models.transistor import DEFINITIONS, Transistor
 from fitter.models.types import scalar
 from fitter.parameters import Parameter
@@ -172,6 +175,13 @@ def _estimate(stored: _StoredEstimate) -> Estimate:
     unknown = [name for name in (*stored.free, *stored.fixed) if name not in _FREE]
     if unknown:
         raise ModelFileError(f"{where}: unknown parameter {unknown[0][:40]!r}")
+    given = {*stored.free, *stored.fixed}
+    for kind, group in ((Channel, CHANNEL), (TemperatureLaws, TEMPERATURE), (BodyDiode, BODY_DIODE)):
+        needed = [group[f.name].name for f in fields(kind) if f.default is MISSING]
+        missing = [name for name in needed if name not in given]
+        # There is always a channel; temperature laws and body diode need not be there, but not a part of them only.
+        if missing and (kind is Channel or any(d.name in given for d in group.values())):
+            raise ModelFileError(f"{where}: parameter {missing[0]!r} is missing")
     n = len(stored.free)
     if len(set(stored.free)) != n or len(stored.coordinates) != n:
         raise ModelFileError(f"{where}: {n} free parameters need as many coordinates, each name once")

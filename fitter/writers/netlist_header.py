@@ -17,6 +17,11 @@ _ABSTOL = (
     "milliohm resistors at tens of volts exceeds the tolerance, and the time step collapses, with any transistor model."
 )
 
+_DAMPED = (
+    "Beside each lead inductance lies a resistor of L/0.5 ns: above some 300 MHz the leads damp rather than ring. That "
+    "is for the simulator's sake; real leads may damp less."
+)
+
 _CAUTIONS = (
     "The model follows typical curves. Typical values are no limits: parts scatter around them, and ratings are "
     "in the datasheet.",
@@ -49,10 +54,15 @@ def header(model: FittedModel, t_j: float, name: str) -> str:
         _fitted_to(model),
         _validity(model, t_j),
         _parameters(model),
-        [comment("Simulator"), _item(_ABSTOL)],
+        [comment("Simulator"), _item(_ABSTOL), *([_item(_DAMPED)] if _has_leads(model) else [])],
         [comment("Cautions"), *(_item(text) for text in _CAUTIONS)],
     )
     return f"\n{comment()}\n".join("\n".join(lines) for lines in sections)
+
+
+def _has_leads(model: FittedModel) -> bool:
+    package = model.part.package
+    return any(x for x in (package.l_g, package.l_d, package.l_s))
 
 
 def _item(text: str) -> str:
