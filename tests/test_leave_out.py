@@ -214,9 +214,8 @@ def test_a_curve_that_is_right_does_not_stand_out(cold_rows, name):
     assert abs(row_of(cold_rows, name).sigmas) < 3.0
 
 
-@pytest.mark.parametrize(("name", "factor"), [("ciss", 1.3), ("transfer 25 C", 2.0)])
-def test_a_curve_that_is_too_high_stands_out(cold, name, factor):
-    assert row_of(predicted(scaled(cold, name, factor)), name).sigmas > 3.0
+def test_a_curve_that_is_a_third_too_high_stands_out(cold):
+    assert row_of(predicted(scaled(cold, "ciss", 1.3)), "ciss").sigmas > 3.0
 
 
 def test_a_table_value_that_is_a_third_too_low_stands_out_to_the_other_side(cold):

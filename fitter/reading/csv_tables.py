@@ -26,6 +26,8 @@ MAX_ROWS = 20_000
 MAX_COLUMNS = 50
 MAX_CSV_LINE = 4000
 MAX_CELL = 40
+#: A smaller number is as good as none, and its square or its inverse may be none that a computer can hold.
+_NOTHING = 1e-30
 
 _SEPARATORS = {"\t": "tabs", ";": "semicolons", ",": "commas"}
 _LINE_END = re.compile(r"\r\n|\n|\r")
@@ -257,7 +259,7 @@ class _Rows:
         if math.isinf(value):
             self._not_a_number(line, column, cell)
             return math.nan
-        return value
+        return 0.0 if abs(value) < _NOTHING else value
 
     def _not_a_number(self, line: int, column: str, cell: str) -> None:
         expected = "expected a number such as 12.5 or 3.9e3"

@@ -114,6 +114,16 @@ def curve_points(table: CsvTable, quantity: Quantity, file: str, problems: Probl
             place=x_column.header,
         )
         return None
+    # A current may be none throughout, with the channel off.
+    if schema.y.sign != "not negative" and not np.any(y):
+        problems.add(
+            file,
+            "all points are zero",
+            f"expected the {schema.y.meaning} along the curve; were the axes calibrated?",
+            line=table.header_line,
+            place=y_column.header,
+        )
+        return None
     order = np.argsort(x, kind="stable")
     x, y, rows = x[order], y[order], rows[order]
     lines = table.lines[rows]
