@@ -294,9 +294,9 @@ def test_toml_of_too_many_keys(tmp_path):
 
 def test_long_dotted_keys_are_not_slow(tmp_path):
     text = "".join(".".join([f"k{n}"] + ["a"] * 1900) + " = 1\n" for n in range(30))
-    start = time.perf_counter()
+    start = time.process_time()
     messages(make_folder(tmp_path, files={"part.toml": text}))
-    assert time.perf_counter() - start < 5.0
+    assert time.process_time() - start < 5.0
 
 
 def test_all_problems_of_all_files_are_listed_at_once(tmp_path):
