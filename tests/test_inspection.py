@@ -303,3 +303,21 @@ def test_names_of_the_rules_under_test_are_all_there_are():
         spoken |= {rule for rule, _ in contradictions(wrong(demo_part(name)))}
     tested = {rule for rule, *_ in COMPARED}
     assert {rule.replace(" x ", " y ") for rule in spoken} == {rule.replace(" x ", " y ") for rule in tested}
+
+
+def test_temperatures_in_kelvin_stop_the_fit(fitted):
+    part = fitted("cargo_80v").part
+    hot = tuple(replace(c, x=c.x + 273.15) if c.name == "rds_on(Tj)" else c for c in part.curves)
+    found = [f for f in inspect(replace(part, curves=hot)) if f.severity == "stop"]
+    assert [f.topic for f in found] == ["rds_on(Tj)"]
+    assert "subtract 273.15" in found[0].remedy
+
+
+def test_ratio_in_a_column_of_ohms_stops_the_fit(fitted):
+    part = fitted("cargo_80v").part
+    curve = next(c for c in part.curves if c.name == "rds_on(Tj)")
+    assert not curve.y_unit
+    renamed = replace(curve, y=curve.y * 1e-3, y_unit="ohm", y_column="rds_on_mohm")
+    curves = tuple(renamed if c is curve else c for c in part.curves)
+    found = [f for f in inspect(replace(part, curves=curves)) if f.severity == "stop"]
+    assert any("rds_on_ratio" in f.remedy for f in found)

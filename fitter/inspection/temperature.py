@@ -8,7 +8,9 @@ import numpy as np
 
 from fitter.inspection.finding import Comparison, ratio
 from fitter.inspection.reading import read_at, typical
+from fitter.models.temperature import KELVIN
 from fitter.part import Curve, Part
+from fitter.units import si_factor
 
 __all__ = ["range_of", "resistance_at_25", "resistance_rise", "threshold_at_25", "threshold_drift"]
 
@@ -28,13 +30,17 @@ def range_of(part: Part, curve: Curve) -> Iterator[Comparison]:
     low, high = float(curve.x[0]), float(curve.x[-1])
     narrow = 60.0 / max(high - low, 1e-9)
     lacks = 0.0 if low <= 25.0 + 10.0 and high >= 25.0 - 10.0 else 1.5
+    kelvin = _COLDEST + KELVIN < low < 25.0 + KELVIN and 25.0 + KELVIN < high < _HOTTEST + KELVIN
     yield Comparison(
         rule="temperatures",
         curve=curve,
         at=0 if -low > high else curve.x.size - 1,
         off=max(low / _COLDEST, high / _HOTTEST, min(narrow, 4.0) if narrow > 1.0 else 0.0, lacks, 0.0),
         says=f"temperatures run from {low:.3g} to {high:.3g} C",
-        remedy="look at the temperature axis, and at the columns' order",
+        remedy=f"subtract {KELVIN:g} from all temperatures: they are in kelvin"
+        if kelvin
+        else "look at the temperature axis, and at the columns' order",
+        severity="stop" if kelvin else "doubtful",
     )
 
 
@@ -59,10 +65,29 @@ def resistance_at_25(part: Part, curve: Curve) -> Iterator[Comparison]:
         return
     group = part.stated.on_resistance
     stated = None if group is None else typical(group.r_ds_on)
-    if stated:
-        yield from _at_25(
-            curve, stated, _RESISTANCE, f"the stated RDS(on) of {stated * 1e3:.4g} mohm", "on_resistance.r_ds_on"
+    if not stated:
+        return
+    read, unit = read_at(curve, 25.0), curve.y_column.rpartition("_")[2]
+    figure = 0.0 if read is None else read / si_factor(unit, curve.y_unit)
+    if (
+        read is not None
+        and 1.0 / _RATIO < figure < _RATIO
+        and ratio(read / stated, 1.0 / _RESISTANCE, _RESISTANCE) > 1.0
+    ):
+        yield Comparison(
+            rule="at 25 C",
+            curve=curve,
+            off=2.0,
+            says=f"at 25 C the curve is {figure:.3g} {unit}, as a ratio to 25 C would be, and RDS(on) is stated as "
+            f"{stated * 1e3:.4g} mohm",
+            remedy=f"name the column rds_on_ratio instead of {curve.y_column}",
+            severity="stop",
+            stated="on_resistance.r_ds_on",
         )
+        return
+    yield from _at_25(
+        curve, stated, _RESISTANCE, f"the stated RDS(on) of {stated * 1e3:.4g} mohm", "on_resistance.r_ds_on"
+    )
 
 
 def threshold_at_25(part: Part, curve: Curve) -> Iterator[Comparison]:
