@@ -33,6 +33,10 @@ __all__ = ["FitResult", "fit"]
 Array = NDArray[np.float64]
 
 
+#: Evaluations of the two joint fits.
+_FIRST_LOOK, _LAST_LOOK = 200, 60
+
+
 @dataclass(frozen=True, kw_only=True)
 class FitResult:
     """A finished fit.
@@ -131,7 +135,10 @@ def _widened(
     for last in (False, True):
         widths = {s.name: s.inflation for s in statistics}
         widened = [b if b.held else replace(b, inflation=widths.get(b.name, 1.0)) for b in blocks]
-        solution = solve(widened, space, start, rough=not last)
+        solution = solve(widened, space, start, rough=not last, evaluations=_LAST_LOOK if last else _FIRST_LOOK)
+        if last and not solution.converged:
+            # Along a flat valley with a bound in it steps stay small; the looser tolerance is met there all the same.
+            solution = solve(widened, space, solution.values, rough=True)
         start, statistics = solution.values, block_statistics(solution)
     return solution, statistics
 
