@@ -13,7 +13,7 @@ from numpy.typing import ArrayLike
 
 from fitter.errors import OperatingPointError
 from fitter.models.channel import Channel, channel_current, conductances, gate_voltage
-from fitter.models.roots import carries_derivatives, increasing_root, lifted_root
+from fitter.models.roots import carries_derivatives, increasing_root, lifted_root, without_derivatives
 from fitter.models.transistor import Transistor
 from fitter.models.types import Numbers
 from fitter.part import Load
@@ -229,9 +229,9 @@ def _voltage_left(inner_v_gs: Numbers, point: OperatingPoint, channel: Channel, 
         carried, _, g_ds = conductances(v_gs, inner_v_ds, c)
         return inner_v_ds + resistance * carried - point.v_dd, 1.0 + resistance * g_ds
 
-    real, resistance = channel.real(), np.real(load.resistance)
+    real, resistance = channel.real(), without_derivatives(load.resistance)
     root = increasing_root(
-        lambda v: excess(v, inner_v_gs.real, real, resistance),
+        lambda v: excess(v, without_derivatives(inner_v_gs), real, resistance),
         np.asarray(point.v_dd), np.zeros(()), np.asarray(point.v_dd),
     )  # fmt: skip
     if carries_derivatives(inner_v_gs, load.resistance):

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fitter.models.smooth import log1p, softplus, softplus_and_slope
+from fitter.models.smooth import exp, log1p, softplus, softplus_and_slope
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
@@ -182,7 +182,7 @@ def depletion_capacitance(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: Array
     >>> round(float(depletion_capacitance(99.0, 1e-9, 1.0, 0.5)) * 1e9, 9)
     0.1
     """
-    return np.asarray(np.asarray(c_0) * np.exp(-np.asarray(m) * log1p(np.asarray(v) / np.asarray(phi))))
+    return np.asarray(np.asarray(c_0) * exp(-np.asarray(m) * log1p(np.asarray(v) / np.asarray(phi))))
 
 
 def depletion_charge(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike) -> Numbers:
@@ -209,10 +209,14 @@ def depletion_charge(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike)
     return np.asarray(np.asarray(c_0) * phi / rest * np.expm1(rest * log1p(np.asarray(v) / phi)))
 
 
-def _shielded_voltage(v: Numbers, shield: Shield) -> Numbers:
-    """Voltage over a shielded share, U(V) = V - sp(V-Vs; ws) + sp(-Vs; ws), zero at V = 0."""
-    v_s = np.asarray(shield.v)
-    return v - softplus(v - v_s, shield.width) + softplus(-v_s, shield.width)
+def _shielded_voltage(v: Numbers, shield: Shield) -> tuple[Numbers, Numbers]:
+    """Voltage over a shielded share, and its slope.
+
+    U(V) = V - sp(V-Vs; ws) + sp(-Vs; ws), zero at V = 0; since sp(x) - sp(-x) = x, that is sp(Vs) - sp(Vs-V).
+    """
+    v_s, width = np.asarray(shield.v), shield.width
+    left, slope = softplus_and_slope(v_s - v, width)
+    return softplus(v_s, width) - left, slope
 
 
 def capacitance(v: ArrayLike, j: Junction) -> Numbers:
@@ -236,9 +240,8 @@ def capacitance(v: ArrayLike, j: Junction) -> Numbers:
     v = np.asarray(v)
     total, rest = np.asarray(j.c_f) + np.zeros(v.shape), np.ones(())
     for shield in j.shields:
-        beyond, slope = softplus_and_slope(v - np.asarray(shield.v), shield.width)
-        u = v - beyond + softplus(-np.asarray(shield.v), shield.width)
-        total = total + rest * shield.s * depletion_capacitance(u, j.c_0, j.phi, j.m) * (1.0 - slope)
+        u, slope = _shielded_voltage(v, shield)
+        total = total + rest * shield.s * depletion_capacitance(u, j.c_0, j.phi, j.m) * slope
         rest = rest * (1.0 - np.asarray(shield.s))
     return total + rest * depletion_capacitance(v, j.c_0, j.phi, j.m)
 
@@ -263,7 +266,7 @@ def charge(v: ArrayLike, j: Junction) -> Numbers:
     v = np.asarray(v)
     total, rest = np.asarray(j.c_f) * v, np.ones(())
     for shield in j.shields:
-        held = depletion_charge(_shielded_voltage(v, shield), j.c_0, j.phi, j.m)
+        held = depletion_charge(_shielded_voltage(v, shield)[0], j.c_0, j.phi, j.m)
         total = total + rest * shield.s * held
         rest = rest * (1.0 - np.asarray(shield.s))
     return np.asarray(total + rest * depletion_charge(v, j.c_0, j.phi, j.m))

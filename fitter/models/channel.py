@@ -11,7 +11,7 @@ from dataclasses import dataclass, fields
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fitter.models.roots import carries_derivatives, increasing_root, lifted_root
+from fitter.models.roots import carries_derivatives, increasing_root, lifted_root, without_derivatives
 from fitter.models.smooth import inverse_softplus, softplus, softplus_and_slope
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
@@ -84,7 +84,7 @@ class Channel:
 
     def real(self) -> Channel:
         """The same channel without derivatives."""
-        return Channel(**{f.name: np.real(getattr(self, f.name)) for f in fields(self)})
+        return Channel(**{f.name: without_derivatives(getattr(self, f.name)) for f in fields(self)})
 
 
 def channel_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
@@ -168,7 +168,7 @@ def terminal_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     """
     v_gs, v_ds = np.asarray(v_gs), np.asarray(v_ds)
     if c.carries_derivatives or carries_derivatives(v_gs, v_ds):
-        root = terminal_current(v_gs.real, v_ds.real, c.real())
+        root = terminal_current(without_derivatives(v_gs), without_derivatives(v_ds), c.real())
         return lifted_root(lambda i: _excess_current(i, v_gs, v_ds, c), root)
     # Resistances only lower the current; the slack keeps rounding from pushing the root out of the bracket.
     most = channel_current(v_gs, v_ds, c) * (1.0 + 1e-9)
@@ -206,7 +206,7 @@ def gate_voltage(i_d: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     """
     i_d, v_ds = np.asarray(i_d), np.asarray(v_ds)
     if c.carries_derivatives or carries_derivatives(i_d, v_ds):
-        root = gate_voltage(i_d.real, v_ds.real, c.real())
+        root = gate_voltage(without_derivatives(i_d), without_derivatives(v_ds), c.real())
         return lifted_root(lambda v: _excess_over(v, i_d, v_ds, c), root)
     # Lower end: with the drain side off. Upper end: both sides on, with the softplus at its straight line.
     square = 2.0 * i_d / (np.asarray(c.k) * (1.0 + np.asarray(c.lam) * v_ds))
@@ -279,7 +279,7 @@ def drain_voltage(i_d: ArrayLike, v_gs: ArrayLike, c: Channel) -> Numbers:
     inner_v_gs = np.asarray(v_gs) - i_d * c.r_s
     resistance = np.asarray(c.r_s) + c.r_d
     if c.carries_derivatives:
-        root = drain_voltage(i_d, v_gs, c.real()) - np.real(i_d * resistance)
+        root = drain_voltage(i_d, v_gs, c.real()) - without_derivatives(i_d * resistance)
         return lifted_root(lambda v: _excess_at(v, i_d, inner_v_gs, c), root) + i_d * resistance
     over = np.maximum(inner_v_gs - c.v_th, 1e-3)
     guess = i_d / (np.asarray(c.k) * over)

@@ -11,7 +11,7 @@ from dataclasses import dataclass, fields
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fitter.models.roots import carries_derivatives, increasing_root, lifted_root
+from fitter.models.roots import carries_derivatives, increasing_root, lifted_root, without_derivatives
 from fitter.models.smooth import log1p
 from fitter.models.temperature import KELVIN, REFERENCE
 from fitter.models.types import Numbers, Value
@@ -91,7 +91,7 @@ class BodyDiode:
 
     def real(self) -> BodyDiode:
         """The same diode without derivatives."""
-        return BodyDiode(**{f.name: np.real(getattr(self, f.name)) for f in fields(self)})
+        return BodyDiode(**{f.name: without_derivatives(getattr(self, f.name)) for f in fields(self)})
 
 
 def thermal_voltage(t_j: ArrayLike) -> Numbers:
@@ -181,8 +181,7 @@ def forward_current(v: ArrayLike, d: BodyDiode, t_j: ArrayLike = REFERENCE) -> N
         return width * x + r * i_s * np.expm1(x) - v, width + r * i_s * np.exp(x)
 
     if d.carries_derivatives or carries_derivatives(v):
-        plain = d.real()
-        root = _junction_voltages(v.real, plain, t_j)
+        root = _junction_voltages(without_derivatives(v), d.real(), t_j)
         return np.asarray(i_s * np.expm1(lifted_root(excess, root)))
     return np.asarray(i_s * np.expm1(_junction_voltages(v, d, t_j)))
 

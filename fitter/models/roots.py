@@ -7,9 +7,9 @@ from collections.abc import Callable
 import numpy as np
 from numpy.typing import NDArray
 
-from fitter.models.types import Numbers
+from fitter.models.types import Numbers, Value
 
-__all__ = ["carries_derivatives", "increasing_root", "lifted_root"]
+__all__ = ["carries_derivatives", "increasing_root", "lifted_root", "without_derivatives"]
 
 _MOST_STEPS = 200
 #: A step this small relative to the root is the last one: the error behind a Newton step is about its square.
@@ -53,6 +53,23 @@ def increasing_root(function: Function, start: Numbers, lower: Numbers, upper: N
 def carries_derivatives(*values: Numbers) -> bool:
     """Whether any of the values is complex, that is, carries a derivative in its imaginary part."""
     return any(np.iscomplexobj(value) for value in values)
+
+
+def without_derivatives(value: Value) -> Numbers:
+    """Real part of a value; of a complex one with a row for each derivative, the first row only.
+
+    Those rows differ in their imaginary parts alone (`fitter.fitting.space.derivatives`): an implicit equation need be
+    solved once for all of them.
+
+    Examples
+    --------
+    >>> without_derivatives(np.array([[2.0 + 1e-30j], [2.0 + 0.0j]]))
+    array([[2.]])
+    """
+    value = np.asarray(value)
+    if value.dtype.kind != "c":
+        return value
+    return value.real[:1] if value.ndim > 1 else value.real
 
 
 def lifted_root(function: Function, root: Numbers) -> Numbers:

@@ -7,12 +7,15 @@ from numpy.typing import ArrayLike
 
 from fitter.models.types import Numbers
 
-__all__ = ["inverse_softplus", "log1p", "logistic", "softplus", "softplus_and_slope"]
+__all__ = ["exp", "inverse_softplus", "log1p", "logistic", "softplus", "softplus_and_slope"]
 
 
-def _minus_magnitude(t: Numbers) -> Numbers:
-    """-|t|, as an analytic function on either side of Re t = 0."""
-    return np.where(t.real > 0.0, -t, t)
+def _first_order(value: Numbers, slope: Numbers, z: Numbers) -> Numbers:
+    """A function's value and slope at Re z as its value at z, to first order in Im z."""
+    result = np.empty(z.shape, dtype=complex)
+    result.real = value
+    result.imag = slope * z.imag
+    return result
 
 
 def log1p(z: Numbers) -> Numbers:
@@ -26,16 +29,25 @@ def log1p(z: Numbers) -> Numbers:
     (1e-20+1e-30j)
     """
     z = np.asarray(z)
-    if z.dtype.kind != "c":
-        return np.asarray(np.log1p(z))
-    result = np.empty(z.shape, dtype=complex)
-    result.real = np.log1p(z.real)
-    result.imag = z.imag / (1.0 + z.real)
-    return result
+    value = np.log1p(z.real)
+    return _first_order(value, 1.0 / (1.0 + z.real), z) if z.dtype.kind == "c" else np.asarray(value)
+
+
+def exp(z: Numbers) -> Numbers:
+    """The exponential, for a complex z to first order in its imaginary part: numpy's own takes ten times as long.
+
+    Examples
+    --------
+    >>> complex(exp(np.asarray(0.0 + 1e-30j)))
+    (1+1e-30j)
+    """
+    z = np.asarray(z)
+    value = np.exp(z.real)
+    return _first_order(value, value, z) if z.dtype.kind == "c" else np.asarray(value)
 
 
 def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
-    """Softplus w ln(1 + exp(x/w)), in the form that cannot overflow.
+    """Softplus w ln(1 + exp(x/w)).
 
     Parameters
     ----------
@@ -54,8 +66,7 @@ def softplus(x: ArrayLike, w: ArrayLike) -> Numbers:
     >>> float(softplus(0.0, 2.0) / np.log(4.0))
     1.0
     """
-    x, w = np.asarray(x), np.asarray(w)
-    return np.asarray(np.where(x.real > 0.0, x, 0.0) + w * log1p(np.exp(_minus_magnitude(x / w))))
+    return softplus_and_slope(x, w)[0]
 
 
 def logistic(x: ArrayLike, w: ArrayLike) -> Numbers:
@@ -76,13 +87,13 @@ def logistic(x: ArrayLike, w: ArrayLike) -> Numbers:
     >>> float(logistic(0.0, 1.0)), float(logistic(-1e6, 1.0))
     (0.5, 0.0)
     """
-    t = np.asarray(x) / np.asarray(w)
-    e = np.exp(_minus_magnitude(t))
-    return np.where(t.real > 0.0, 1.0, e) / (1.0 + e)
+    return softplus_and_slope(x, w)[1]
 
 
 def softplus_and_slope(x: ArrayLike, w: ArrayLike) -> tuple[Numbers, Numbers]:
-    """Both `softplus` and `logistic`, for the price of one exponential.
+    """Both `softplus` and `logistic`, for the price of one, in a form that cannot overflow.
+
+    For complex arguments to first order in their imaginary parts.
 
     Parameters
     ----------
@@ -99,11 +110,13 @@ def softplus_and_slope(x: ArrayLike, w: ArrayLike) -> tuple[Numbers, Numbers]:
     >>> bool(value == softplus(0.3, 0.1)), bool(slope == logistic(0.3, 0.1))
     (True, True)
     """
-    x = np.asarray(x)
-    t = x / np.asarray(w)
-    above = t.real > 0.0
-    e = np.exp(np.where(above, -t, t))
-    return np.where(above, x, 0.0) + w * log1p(e), np.where(above, 1.0, e) / (1.0 + e)
+    w = np.asarray(w)
+    t = np.asarray(x) / w
+    over = np.logaddexp(0.0, t.real)
+    slope = np.exp(t.real - over)
+    if t.dtype.kind != "c":
+        return np.asarray(w * over), np.asarray(slope)
+    return w * _first_order(over, slope, t), _first_order(slope, slope * (1.0 - slope), t)
 
 
 def inverse_softplus(y: ArrayLike, w: ArrayLike) -> Numbers:
