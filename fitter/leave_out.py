@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from fitter.comparison import Comparison, compare, digitized_reading
 from fitter.fitting import observations
-from fitter.fitting.assumptions import GateAssumption, assumed_space
+from fitter.fitting.assumptions import GATE_CHARGE_ONLY, GateAssumption, assumed_space
 from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock, model_space
 from fitter.fitting.fit import FitResult
 from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, intervals
@@ -111,7 +111,7 @@ def leave_out(part: Part, result: FitResult) -> tuple[LeftOut, ...]:
 
 
 def _is_gate_charge(block: Block) -> bool:
-    return isinstance(block, PathBlock) or block.name.startswith(("q_g", "v_plateau"))
+    return isinstance(block, PathBlock) or block.name.startswith(("q_g", "v_plateau", "s_gs"))
 
 
 def _quantities(part: Part, estimate: Estimate) -> list[str]:
@@ -128,10 +128,10 @@ def _without(part: Part, result: FitResult, gone: Collection[Block]) -> Estimate
     fixed = dict(result.estimate.space.fixed)
     gate_charge_gone = any(_is_gate_charge(b) for b in gone)
     if gate_charge_gone:
-        own = [name for name in own if name not in ("c_ch", "c_acc")]
-        fixed |= {"c_ch": 0.0, "c_acc": 1e-12}
+        own = [name for name in own if name not in GATE_CHARGE_ONLY]
+        fixed |= GATE_CHARGE_ONLY
     elif not result.used_gate_charge:
-        fixed |= {"c_ch": 0.0, "c_acc": 1e-12}
+        fixed |= GATE_CHARGE_ONLY
     outputs = any(b.group in (Quantity.OUTPUT, Quantity.GATE_CHARGE) for b in blocks)
     for name, told in (("lambda", outputs), ("r_d", outputs or any(b.name == "rds_on (table)" for b in blocks))):
         if name in own and not told:

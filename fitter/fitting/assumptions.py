@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.fitting.space import ParameterSpace, Values
-from fitter.models.transistor import Transistor
+from fitter.models.transistor import GATE, Transistor
 from fitter.models.types import Value, scalar
 from fitter.parameters import ParameterDefinition
 from fitter.part import Part, Quantity
@@ -17,6 +17,9 @@ from fitter.part import Part, Quantity
 __all__ = ["ACCUMULATION_RATIO", "ON_STATE_RATIO", "GateAssumption", "assumed_space"]
 
 Array = NDArray[np.float64]
+
+#: Parameters that show on gate-charge data alone; stand-ins where nothing that depends on them is fitted.
+GATE_CHARGE_ONLY = {"s_gs": 0.0, "c_ch": 0.0, "c_acc": 1e-12}
 
 ON_STATE_RATIO = ParameterDefinition(
     name="on_state_ratio", unit="", lower=0.5, upper=5.0, scale="log",
@@ -32,6 +35,9 @@ _RATIO, _RATIO_LOW, _RATIO_HIGH = 1.5, 1.0, 2.3
 _SIGMA_RATIO = math.log(_RATIO_HIGH / _RATIO_LOW) / (2.0 * 1.96)
 #: 1-sigma of ln(Cacc/Cgd(lowest VDS)): a factor of 1.5 either way at 95 % (a judgement, no source).
 _SIGMA_ACCUMULATION = math.log(1.5) / 1.96
+#: Share of Cgs over the body, and its 1-sigma: over published tables QGS/(Ciss Vplateau) runs from 0.93 to 1, which is
+#: a share of 0 to 0.3.
+BODY_SHARE, BODY_SHARE_SPREAD = 0.1, 0.08
 #: Cch tends to 0 over this share of Ciss.
 _BEND = 0.1
 
@@ -66,10 +72,11 @@ class GateAssumption:
 
     def __call__(self, values: Values) -> Values:
         """The values with c_acc and c_ch added; the ratios are at their typical values where absent."""
+        values = {"s_gs": BODY_SHARE, **values}
         bare = Transistor.from_values({**values, "c_ch": 0.0, "c_acc": 1e-12})
         c_acc = np.asarray(values.get(ACCUMULATION_RATIO.name, 1.0)) * bare.c_gd(self.v_low)
         on_state = np.asarray(values.get(ON_STATE_RATIO.name, _RATIO)) * bare.c_iss(self.v_dd)
-        c_ch = on_state - values["c_gs"] - c_acc
+        c_ch = on_state - values["c_gs"] * (1.0 - np.asarray(values["s_gs"])) - c_acc
         # Towards 0 along a hyperbola: a sharp end there would leave the ratio's spread out of every interval.
         bend = _BEND * bare.c_iss(self.v_dd)
         return {**values, "c_acc": c_acc, "c_ch": 0.5 * (c_ch + np.sqrt(c_ch * c_ch + bend * bend))}
@@ -98,12 +105,15 @@ def assumed_space(
     space, coordinates, covariance
         With on_state_ratio and accumulation_ratio added.
     """
-    wider = np.zeros((coordinates.size + 2, coordinates.size + 2))
-    wider[:-2, :-2] = covariance
-    wider[-2, -2], wider[-1, -1] = _SIGMA_RATIO**2, _SIGMA_ACCUMULATION**2
-    fixed = {name: value for name, value in space.fixed.items() if name not in ("c_ch", "c_acc")}
+    wider = np.zeros((coordinates.size + 3, coordinates.size + 3))
+    wider[:-3, :-3] = covariance
+    wider[range(-3, 0), range(-3, 0)] = (
+        (BODY_SHARE_SPREAD / GATE["s_gs"].typical) ** 2, _SIGMA_RATIO**2, _SIGMA_ACCUMULATION**2,
+    )  # fmt: skip
+    fixed = {name: value for name, value in space.fixed.items() if name not in GATE_CHARGE_ONLY}
+    free = (*space.free, GATE["s_gs"], ON_STATE_RATIO, ACCUMULATION_RATIO)
     return (
-        ParameterSpace(free=(*space.free, ON_STATE_RATIO, ACCUMULATION_RATIO), fixed=fixed, complete=assumption),
-        np.concatenate([coordinates, [math.log(_RATIO), 0.0]]),
+        ParameterSpace(free=free, fixed=fixed, complete=assumption),
+        np.concatenate([coordinates, [BODY_SHARE / GATE["s_gs"].typical, math.log(_RATIO), 0.0]]),
         wider,
     )

@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from fitter.fitting.assumptions import GateAssumption, assumed_space
+from fitter.fitting.assumptions import GATE_CHARGE_ONLY, GateAssumption, assumed_space
 from fitter.fitting.blocks import Block, model_space
 from fitter.fitting.forms import FormTrial, fit_capacitances
 from fitter.fitting.intervals import Estimate
@@ -105,7 +105,7 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
         outliers += charge.outliers
     else:
         # They stand in no residual; what is assumed of them is added after the fit.
-        fixed |= {"c_ch": 0.0, "c_acc": 1e-12}
+        fixed |= GATE_CHARGE_ONLY
     space = model_space(free, fixed, blocks)
     solution, statistics = _widened(blocks, space, start, [stage.solution for stage in done])
     result = _result(solution, free, fixed)

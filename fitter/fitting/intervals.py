@@ -48,11 +48,38 @@ class Estimate:
         return self.space.values(self.coordinates)
 
 
-def _gradient(figures: Figures, estimate: Estimate) -> tuple[Array, Array]:
-    """Covariance times gradient, shape (n, m), and standard errors, shape (m,), of m figures."""
-    slopes = derivatives(figures, estimate.space, estimate.coordinates, estimate.space.names)
-    moved = estimate.covariance @ slopes
-    return moved, np.sqrt(np.maximum(np.sum(slopes * moved, axis=0), 0.0))
+def _slopes(figures: Figures, estimate: Estimate) -> Array:
+    """Derivatives of m figures by the coordinates, shape (n, m)."""
+    return derivatives(figures, estimate.space, estimate.coordinates, estimate.space.names)
+
+
+def _end(slope: Array, estimate: Estimate, sign: float) -> Array:
+    """Coordinates at one end of a figure's 95 % interval.
+
+    Of all points inside the bounds that lie 1.96 standard deviations off, the one where the figure, to first order, is
+    the lowest or highest. Without bounds in the way that is a step along covariance times slope; a coordinate that would
+    go past its bound stays on it, and the others go on from where they are then to be expected.
+    """
+    lower, upper = estimate.space.bounds()
+    room = np.stack([lower, upper]) - estimate.coordinates
+    covariance, step, held = estimate.covariance, np.zeros(slope.size), np.zeros(slope.size, dtype=bool)
+    while True:
+        mean, rest, left = np.zeros(slope.size), covariance, COVERAGE_FACTOR**2
+        if held.any():
+            gain = np.linalg.solve(covariance[np.ix_(held, held)], covariance[held]).T
+            mean = gain @ step[held]
+            rest = covariance - gain @ covariance[held]
+            left -= float(step[held] @ np.linalg.solve(covariance[np.ix_(held, held)], step[held]))
+        moved = np.where(held, 0.0, rest @ slope)
+        size = float(slope @ moved)
+        along = moved * (sign * np.sqrt(max(left, 0.0) / size)) if size > 0.0 else 0.0
+        step = np.where(held, step, mean + along)
+        beyond = np.where(held, 0.0, np.maximum(room[0] - step, step - room[1]) / np.sqrt(np.diag(covariance) + 1e-300))
+        worst = int(np.argmax(beyond))
+        if beyond[worst] <= 1e-9:
+            return np.clip(estimate.coordinates + step, lower, upper)
+        held[worst] = True
+        step[worst] = np.clip(step[worst], *room[:, worst])
 
 
 def standard_errors(figures: Figures, estimate: Estimate) -> Array:
@@ -70,7 +97,8 @@ def standard_errors(figures: Figures, estimate: Estimate) -> Array:
     ndarray, shape (m,)
         In the figures' units.
     """
-    return _gradient(figures, estimate)[1]
+    slopes = _slopes(figures, estimate)
+    return np.asarray(np.sqrt(np.maximum(np.sum(slopes * (estimate.covariance @ slopes), axis=0), 0.0)))
 
 
 def ends(figure: Figures, estimate: Estimate) -> tuple[Values, Values]:
@@ -88,11 +116,8 @@ def ends(figure: Figures, estimate: Estimate) -> tuple[Values, Values]:
     low, high : mapping of str to value
         Moved along the direction in which the figure varies most for its probability.
     """
-    moved, sigma = _gradient(figure, estimate)
-    step = COVERAGE_FACTOR * moved[:, 0] / max(float(sigma[0]), 1e-300)
-    lower, upper = estimate.space.bounds()
-    points = (np.clip(estimate.coordinates + sign * step, lower, upper) for sign in (-1.0, 1.0))
-    low, high = (estimate.space.values(point) for point in points)
+    slope = _slopes(figure, estimate)[:, 0]
+    low, high = (estimate.space.values(_end(slope, estimate, sign)) for sign in (-1.0, 1.0))
     return low, high
 
 
@@ -100,8 +125,8 @@ def intervals(figures: Figures, estimate: Estimate) -> tuple[Array, Array, Array
     """Values and 95 % intervals of figures.
 
     Each figure is computed again with the parameters moved by 1.96 standard deviations along the direction in which it
-    varies most for its probability (covariance times gradient), up and down: where the figure bends, so does its
-    interval.
+    varies most for its probability (covariance times gradient), up and down, as far as bounds let them: where the
+    figure bends, so does its interval.
 
     Parameters
     ----------
@@ -116,12 +141,10 @@ def intervals(figures: Figures, estimate: Estimate) -> tuple[Array, Array, Array
         low <= value <= high.
     """
     value = np.real(figures(estimate.values))
-    moved, sigma = _gradient(figures, estimate)
-    step = COVERAGE_FACTOR * moved / np.where(sigma > 0.0, sigma, 1.0)
-    lower, upper = estimate.space.bounds()
+    slopes = _slopes(figures, estimate)
     ends = []
     for sign in (-1.0, 1.0):
-        points = np.clip(estimate.coordinates[:, None] + sign * step, lower[:, None], upper[:, None])
+        points = np.stack([_end(slope, estimate, sign) for slope in slopes.T], axis=-1)
         # Row j holds the parameters moved for figure j; only that figure is taken from it.
         at = figures(estimate.space.values(points[:, :, None]))
         ends.append(np.diagonal(np.broadcast_to(at, (value.size, value.size))))

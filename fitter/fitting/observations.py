@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.errors import FitError
+from fitter.fitting.assumptions import BODY_SHARE, BODY_SHARE_SPREAD
 from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock
 from fitter.fitting.space import Values
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
@@ -34,6 +35,7 @@ __all__ = [
     "from_axis",
     "gate_charge_blocks",
     "hot_blocks",
+    "modulation_block",
     "to_axis",
 ]
 
@@ -56,6 +58,11 @@ TABLE_ERROR = {
 #: physics (silicon, silicon carbide), the rest leaves room for what the form makes of it. It only matters where
 #: no point at low VDS was digitized: there it keeps the capacitance at 0 V from running away.
 _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
+
+#: How far a current may be expected to rise by channel-length modulation up to the gate-charge test's VDD, 1-sigma: the
+#: drift zone takes what VDS rises by beyond a few volts (a judgement, no source). It matters where output curves bend
+#: otherwise than a square law does, and a straight rise over some volts would be drawn out to hundreds.
+_MODULATION_SPREAD = 0.15
 
 _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
 _DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
@@ -257,7 +264,7 @@ def _scalar(
 def capacitance_blocks(part: Part) -> list[Block]:
     """The capacitance curves; for one that is missing, its table value."""
     blocks: list[Block] = list(_of(part, Quantity.CISS, Quantity.COSS, Quantity.CRSS))
-    blocks += [_built_in(GATE_DRAIN["phi"].name), _built_in(DRAIN_SOURCE["phi"].name)]
+    blocks += [_built_in(d["phi"].name) for d in (GATE_DRAIN, DRAIN_SOURCE)]
     table = part.stated.capacitance
     if table is None:
         return blocks
@@ -272,11 +279,22 @@ def capacitance_blocks(part: Part) -> list[Block]:
 
 
 def _built_in(name: str) -> ScalarBlock:
-    """What is known of a built-in potential before any point is seen."""
+    return _expected(name, math.log(_BUILT_IN), _BUILT_IN_SPREAD, lambda values: np.log(values[name]))
+
+
+def _expected(name: str, value: float, spread: float, function: Callable[[Values], Numbers]) -> ScalarBlock:
+    """What is known of a parameter, or a function of it, before any point is seen."""
     return ScalarBlock(
-        name=f"{name} (expected)", parameters=(name,), stated=math.log(_BUILT_IN), sigma=_BUILT_IN_SPREAD,
-        function=lambda values: np.log(values[name]),
+        name=f"{name} (expected)", parameters=(name,), stated=value, sigma=spread,
+        function=lambda values: np.asarray(function(values)),
     )  # fmt: skip
+
+
+def modulation_block(part: Part) -> ScalarBlock:
+    """What is known of channel-length modulation before any point is seen, for fits in which lambda is free."""
+    table = part.stated.gate_charge
+    v_dd = 0.5 * part.v_ds_max if table is None else table.v_dd
+    return _expected("lambda", 0.0, _MODULATION_SPREAD / v_dd, lambda values: values["lambda"])
 
 
 def channel_blocks(part: Part) -> list[Block]:
@@ -327,11 +345,11 @@ def body_diode_curves(part: Part) -> tuple[Curve, ...]:
 
 def gate_charge_blocks(part: Part) -> list[Block]:
     """The digitized gate-charge curves; where there are none, the stated QG, QGS, QGD and plateau."""
-    curves = _of(part, Quantity.GATE_CHARGE)
-    if curves:
-        return list(curves)
     table = part.stated.gate_charge
-    return [] if table is None else _gate_charge_table(table)
+    blocks: list[Block] = list(_of(part, Quantity.GATE_CHARGE))
+    if not blocks and table is not None:
+        blocks = _gate_charge_table(table)
+    return [*blocks, _expected("s_gs", BODY_SHARE, BODY_SHARE_SPREAD, lambda values: values["s_gs"])] if blocks else []
 
 
 def _gate_charge_table(table: StatedGateCharge) -> list[Block]:

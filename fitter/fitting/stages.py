@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 from fitter.errors import FitError
 from fitter.fitting import observations, start_values
-from fitter.fitting.assumptions import GateAssumption
+from fitter.fitting.assumptions import GATE_CHARGE_ONLY, GateAssumption
 from fitter.fitting.blocks import Block, model_space
 from fitter.fitting.misfit import widening
 from fitter.fitting.outliers import Outlier, set_aside
@@ -87,7 +87,7 @@ def fit_channel(part: Part) -> Stage:
     allowed = _WORSE * widening(solution, Quantity.TRANSFER)
     free = tuple(d.name for d in CHANNEL.values())
     start = {**solution.values, "lambda": 1e-3}
-    every = (*marked, *outputs)
+    every = (*marked, *outputs, observations.modulation_block(part))
     rough = solve(every, model_space(free, {}, every), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
     start = rough.values
@@ -171,7 +171,7 @@ def fit_gate_charge(part: Part, found: Values, untold: Sequence[str]) -> Stage:
             "there are no gate-charge data to fit: digitize a gate_charge curve or state qg, qgs and qgd, or fit "
             "without --use-gate-charge"
         )
-    free = ("c_ch", "c_acc", *(untold if part.curves_of(Quantity.GATE_CHARGE) else ()))
+    free = (*GATE_CHARGE_ONLY, *(untold if part.curves_of(Quantity.GATE_CHARGE) else ()))
     start = GateAssumption.of(part).start(found)
     held = {name: scalar(value) for name, value in start.items() if name in DEFINITIONS and name not in free}
     rough = solve(blocks, model_space(free, held, blocks), start, robust=True, rough=True)

@@ -27,8 +27,11 @@ __all__ = ["DEFINITIONS", "GATE", "Transistor"]
 #: Definitions of the gate's own parameters by their field in `Transistor`.
 GATE = {
     "c_gs": ParameterDefinition(
-        name="c_gs", unit="F", meaning="gate-source capacitance below threshold",
+        name="c_gs", unit="F", meaning="gate-source capacitance at VGS = 0",
         lower=1e-15, upper=1e-5, scale="log"),
+    "s_gs": ParameterDefinition(
+        name="s_gs", unit="", meaning="share of it that lies over the body and falls while the gate depletes that",
+        lower=0.0, upper=0.8, scale="linear", typical=0.1),
     "c_ch": ParameterDefinition(
         name="c_ch", unit="F", meaning="what the channel adds to it above threshold",
         lower=0.0, upper=1e-5, scale="linear", typical=1e-9),
@@ -37,6 +40,10 @@ GATE = {
         lower=1e-15, upper=1e-5, scale="log"),
 }  # fmt: skip
 
+#: How that share falls with VGS [V], and its exponent: an oxide in series with the body's depletion layer has
+#: C = Cox [1 + 2 Cox^2 (VGS - VFB)/(q eps NA)]^(-1/2) (Sze & Ng, Physics of Semiconductor Devices, 3rd ed., ch. 4),
+#: where q eps NA/(2 Cox^2) - VFB is about 2 V for the oxides and bodies of power transistors (50 nm, 1e17 cm^-3).
+BODY_DEPLETION, BODY_EXPONENT = 2.0, 0.5
 
 #: Every fitted parameter's definition by its name, in the order of the tables.
 DEFINITIONS: dict[str, ParameterDefinition] = {
@@ -52,8 +59,12 @@ class Transistor:
 
     Parameters
     ----------
-    c_gs, c_ch, c_acc : array_like
-        Gate-source capacitance, what the channel adds to it, gate-drain capacitance for VGD > 0 [F].
+    c_gs : array_like
+        Gate-source capacitance at VGS = 0 [F].
+    s_gs : array_like
+        Share of it that lies over the body.
+    c_ch, c_acc : array_like
+        What the channel adds to it, and the gate-drain capacitance for VGD > 0 [F].
     gate_drain, drain_source : Junction
         The two capacitances that fall with voltage.
     channel : Channel
@@ -65,6 +76,7 @@ class Transistor:
     """
 
     c_gs: Value
+    s_gs: Value
     c_ch: Value
     c_acc: Value
     gate_drain: Junction
@@ -151,10 +163,16 @@ class Transistor:
         return np.where(v_ds.real > 0.0, depleted, cap.capacitance(0.0, self.drain_source) * v_ds)
 
     def q_gs(self, v_gs: ArrayLike) -> Numbers:
-        """Charge [C] of the gate-source capacitance at VGS [V]: Cgs v + Cch [sp(v-VTH; w) - sp(-VTH; w)]."""
+        """Charge [C] of the gate-source capacitance at VGS [V].
+
+        Cgs [(1-s) v + s QB(v)] + Cch [sp(v-VTH; w) - sp(-VTH; w)]: over the body QB is v below 0 V, and the charge
+        of a depletion capacitance above.
+        """
         v_gs, v_th = np.asarray(v_gs), np.asarray(self.channel.v_th)
         turned_on = softplus(v_gs - v_th, self.channel.w) - softplus(-v_th, self.channel.w)
-        return np.asarray(np.asarray(self.c_gs) * v_gs + np.asarray(self.c_ch) * turned_on)
+        above = np.where(v_gs.real > 0.0, v_gs, 0.0)
+        lost = above - cap.depletion_charge(above, 1.0, BODY_DEPLETION, BODY_EXPONENT)
+        return np.asarray(np.asarray(self.c_gs) * (v_gs - self.s_gs * lost) + np.asarray(self.c_ch) * turned_on)
 
     def c_iss(self, v_ds: ArrayLike) -> Numbers:
         """Input capacitance [F] at VDS [V], VGS = 0: Cgs + Cgd."""
