@@ -96,7 +96,9 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
         origin: Origin = "fitted"
         stderr: float | None = None
         note = ""
-        if name in free:
+        if name == "s_gs" and not result.used_gate_charge:
+            origin, note, stderr = "assumed", _WHY_ASSUMED[name], free[name] * d.typical
+        elif name in free:
             # On a log scale the coordinate's error is relative to the value.
             stderr = free[name] * (value if d.scale == "log" else d.typical)
             if name in result.on_bound:
@@ -130,11 +132,13 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
 
 _FIXED_AS: dict[str, Origin] = {"lambda": "fixed"}
 _WHY_FIXED = {
+    "alpha": "shows on no curve given but output curves; taken as over typical devices",
     "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
     "r_d": "is taken as 0: the stated RDS(on), or an output curve at low VDS, would tell",
 }
 _WHY_ASSUMED = {
     "c_ch": "shows on no curve at VGS = 0; the on-state input capacitance is taken as 1.5 (1.0 to 2.3) Ciss(VDD)",
+    "s_gs": "shows on no curve at VGS = 0; over published tables QGS is 0.93 to 1 of Ciss times the plateau",
     "c_acc": "shows on no curve at VGS = 0; taken as Crss at the lowest digitized VDS",
 }
 

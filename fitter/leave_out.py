@@ -18,6 +18,7 @@ from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, intervals
 from fitter.fitting.observations import TABLE_ERROR
 from fitter.fitting.solve import solve
 from fitter.fitting.space import ParameterSpace, Values
+from fitter.fitting.stages import UNSEEN_CHANNEL
 from fitter.models.types import Numbers, scalar
 from fitter.part import Curve, Part, Quantity, Stated
 
@@ -132,11 +133,13 @@ def _without(part: Part, result: FitResult, gone: Collection[Block]) -> Estimate
         fixed |= GATE_CHARGE_ONLY
     elif not result.used_gate_charge:
         fixed |= GATE_CHARGE_ONLY
-    outputs = any(b.group in (Quantity.OUTPUT, Quantity.GATE_CHARGE) for b in blocks)
-    for name, told in (("lambda", outputs), ("r_d", outputs or any(b.name == "rds_on (table)" for b in blocks))):
+    outputs = any(b.group == Quantity.OUTPUT for b in blocks)
+    sloping = outputs or any(b.group == Quantity.GATE_CHARGE for b in blocks)
+    resistance = sloping or any(b.name == "rds_on (table)" for b in blocks)
+    for name, told in (("alpha", outputs), ("lambda", sloping), ("r_d", resistance)):
         if name in own and not told:
             own.remove(name)
-            fixed[name] = 0.0
+            fixed[name] = UNSEEN_CHANNEL[name]
     seen = {name for b in blocks for name in b.parameters}
     unseen = [name for name in own if name not in seen]
     fitted = [name for name in own if name in seen]

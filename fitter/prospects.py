@@ -20,7 +20,7 @@ from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate
 from fitter.fitting.space import ParameterSpace, Values, derivatives
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
 from fitter.models.channel import on_resistance, threshold_voltage
-from fitter.models.transistor import Transistor
+from fitter.models.transistor import DEFINITIONS, Transistor
 from fitter.models.types import Numbers, scalar
 from fitter.part import (
     Axis,
@@ -46,6 +46,9 @@ _POINT = _AXIS = 0.003
 _MANY, _SOME, _DECADES = 35, 25, 3.0
 #: A curve that would narrow the intervals by less than this is not worth clicking a second time.
 _WORTH_A_SECOND_TIME = 0.02
+#: Parameters that are fixed where nothing given shows them and that one more curve may free, and how far off they may be
+#: taken to be: 1-sigma of their coordinates, 0.01 1/V, 1 mohm, a factor of 2.
+_FREED = {"lambda": 1.0, "r_d": 1.0, "alpha": 0.7}
 #: A threshold's usual test current [A].
 _THRESHOLD_CURRENT = 250e-6
 
@@ -140,14 +143,22 @@ def _widths(slopes: Array, covariance: Array) -> dict[str, float]:
 
 
 def _with_block(block: Block, estimate: Estimate, covariance: Array) -> Array:
-    """Covariance of the parameters once a block is observed, too, its own common errors unknown."""
+    """Covariance of the parameters once a block is observed, too.
+
+    Its common errors are unknown, and so are parameters that are fixed as long as nothing like it is given.
+    """
     space = estimate.space
-    wider = ParameterSpace(free=(*space.free, *block.nuisance_definitions), fixed=space.fixed, complete=space.complete)
-    at = np.concatenate([estimate.coordinates, np.zeros(len(block.nuisance_definitions))])
+    freed = [name for name in _FREED if name in space.fixed and name in block.parameters]
+    fixed = {name: value for name, value in space.fixed.items() if name not in freed}
+    further = (*(DEFINITIONS[name] for name in freed), *block.nuisance_definitions)
+    wider = ParameterSpace(free=(*space.free, *further), fixed=fixed, complete=space.complete)
+    start = {**{name: 0.0 for name in block.nuisances}, **space.fixed}
+    at = np.concatenate([estimate.coordinates, ParameterSpace(free=further).coordinates(start)])
     rows = derivatives(block.residuals, wider, at, wider.names).T[: block.points]
-    by_parameters, by_shifts = rows[:, : len(space.free)], rows[:, len(space.free) :]
+    by_parameters, by_further = rows[:, : len(space.free)], rows[:, len(space.free) :]
+    by_further = by_further * np.array([_FREED.get(d.name, 1.0) for d in further])
     moved = by_parameters @ covariance
-    spread = np.eye(block.points) + by_shifts @ by_shifts.T + moved @ by_parameters.T
+    spread = np.eye(block.points) + by_further @ by_further.T + moved @ by_parameters.T
     return np.asarray(covariance - moved.T @ np.linalg.solve(spread, moved))
 
 

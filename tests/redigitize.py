@@ -38,7 +38,7 @@ def inside(values):
             values[name] = min(value, 0.93)
         elif name.startswith("ws"):
             values[name] = min(max(value, 0.08), 1.0)
-    values["lambda"] = max(values["lambda"], 0.005)
+    values["lambda"] = max(values["lambda"], 2e-4)
     values["r_s"] = max(values["r_s"], 0.15 * values["r_d"])
     return values
 

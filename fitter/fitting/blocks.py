@@ -276,7 +276,7 @@ Block = PointsBlock | PathBlock | ScalarBlock
 _UNSEEN = {
     **{name: d.typical if d.scale == "linear" else 1e-12 for name, d in DEFINITIONS.items() if d.unit == "F"},
     "phi_gd": 1.0, "m_gd": 0.5, "phi_ds": 1.0, "m_ds": 0.5,
-    "s_gs": 0.0, "v_th": 1.0, "k": 1.0, "w": 0.1, "lambda": 0.0, "r_s": 0.0, "r_d": 0.0,
+    "s_gs": 0.0, "v_th": 1.0, "k": 1.0, "w": 0.1, "lambda": 0.0, "alpha": 1.0, "r_s": 0.0, "r_d": 0.0,
 }  # fmt: skip
 
 

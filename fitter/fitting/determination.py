@@ -33,12 +33,12 @@ _FORWARD = "a body-diode curve over more decades of current"
 _HOT_FORWARD = "a hot body-diode curve"
 #: What would tell a parameter, by its name.
 _TELLS = {
-    "c_gs": "a ciss curve", "c_ch": _GATE_CHARGE, "c_acc": _GATE_CHARGE,
+    "c_gs": "a ciss curve", "s_gs": _GATE_CHARGE, "c_ch": _GATE_CHARGE, "c_acc": _GATE_CHARGE,
     "c0_gd": _LOW_CRSS, "phi_gd": _LOW_CRSS, "m_gd": _LOW_CRSS, "cf_gd": "points of crss at higher VDS",
     "c0_ds": _LOW_COSS, "phi_ds": _LOW_COSS, "m_ds": _LOW_COSS, "cf_ds": "points of coss at higher VDS",
     "v_th": "transfer points at small currents", "k": "transfer points at higher currents",
     "w": "transfer points below threshold, on a log axis, or the stated VGS(th)",
-    "lambda": "an output curve in saturation", "r_s": _LOW_OUTPUT, "r_d": _LOW_OUTPUT,
+    "alpha": "output curves around the knee", "lambda": "an output curve in saturation", "r_s": _LOW_OUTPUT, "r_d": _LOW_OUTPUT,
     "vth_tc": _HOT, "k_exponent": _HOT, "rd_exponent": "RDS(on) over Tj",
     "is_d": _FORWARD, "n_d": _FORWARD, "r_dio": _FORWARD, "eg_d": _HOT_FORWARD, "rdio_exponent": _HOT_FORWARD,
 }  # fmt: skip

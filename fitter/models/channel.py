@@ -1,7 +1,10 @@
 """The channel: a square law in one formula for all regions, behind series resistances.
 
 Square law: H. Shichman and D. A. Hodges, IEEE J. Solid-State Circuits 3 (1968) 285. One formula for all regions:
-C. C. Enz, F. Krummenacher and E. A. Vittoz, Analog Integr. Circuits Signal Process. 8 (1995) 83.
+C. C. Enz, F. Krummenacher and E. A. Vittoz, Analog Integr. Circuits Signal Process. 8 (1995) 83. Bulk-charge factor: the
+body's depletion charge grows towards the drain, so the channel saturates at (VGS - VTH)/alpha with alpha above 1 (Sze &
+Ng, Physics of Semiconductor Devices, 3rd ed., ch. 6; Y. Tsividis, Operation and Modeling of the MOS Transistor, ch. 4;
+both from memory). Carriers that reach their saturation velocity have much the same effect.
 """
 
 from __future__ import annotations
@@ -12,7 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from fitter.models.roots import carries_derivatives, increasing_root, lifted_root, without_derivatives
-from fitter.models.smooth import inverse_softplus, softplus, softplus_and_slope
+from fitter.models.smooth import inverse_softplus, softplus_and_slope
 from fitter.models.types import Numbers, Value
 from fitter.parameters import ParameterDefinition
 
@@ -40,6 +43,9 @@ CHANNEL = {
     "w": ParameterDefinition(
         name="w", unit="V", meaning="width of the bend at threshold: 2 n kT/q with the slope factor n",
         lower=0.05, upper=2.0, scale="log"),
+    "alpha": ParameterDefinition(
+        name="alpha", unit="", meaning="bulk-charge factor: the current saturates at VDS = (VGS - VTH)/alpha",
+        lower=0.5, upper=10.0, scale="log"),
     "lam": ParameterDefinition(
         name="lambda", unit="1/V", meaning="channel-length modulation",
         lower=0.0, upper=1.0, scale="linear", typical=1e-2),
@@ -68,6 +74,8 @@ class Channel:
         Channel-length modulation [1/V].
     r_s, r_d : array_like
         Series resistances of source and drain [ohm].
+    alpha : array_like
+        Bulk-charge factor: the channel saturates at VDS = (VGS - VTH)/alpha. 1 is the plain square law.
     """
 
     v_th: Value
@@ -76,6 +84,7 @@ class Channel:
     lam: Value
     r_s: Value
     r_d: Value
+    alpha: Value = 1.0
 
     @property
     def carries_derivatives(self) -> bool:
@@ -88,7 +97,9 @@ class Channel:
 
 
 def channel_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
-    """Current of the inner channel, K/2 [sp(VGS-VTH; w)^2 - sp(VGD-VTH; w)^2] (1 + lambda |VDS|).
+    """Current of the inner channel, K/2 [sp(VGS-VTH; w)^2 - sp(VGS-alpha VDS-VTH; w)^2] (1 + lambda VDS).
+
+    With VDS < 0 source and drain change their places: the current is the negative of that at VGD and -VDS.
 
     Parameters
     ----------
@@ -111,16 +122,7 @@ def channel_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     >>> round(float(channel_current(2.0, 3.0, c)) * 1e6, 6)
     360.0
     """
-    v_gs, v_ds = np.asarray(v_gs), np.asarray(v_ds)
-    source_side = softplus(v_gs - c.v_th, c.w)
-    drain_side = softplus(v_gs - v_ds - c.v_th, c.w)
-    # The difference of squares as a product: fewer digits are lost where the two sides are nearly equal.
-    square = (source_side - drain_side) * (source_side + drain_side)
-    return np.asarray(0.5 * np.asarray(c.k) * square * (1.0 + np.asarray(c.lam) * _magnitude(v_ds)))
-
-
-def _magnitude(x: Numbers) -> Numbers:
-    return np.where(x.real < 0.0, -x, x)
+    return conductances(v_gs, v_ds, c)[0]
 
 
 def conductances(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> tuple[Numbers, Numbers, Numbers]:
@@ -139,16 +141,20 @@ def conductances(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> tuple[Numbers,
         Current [A], dID/dVGS at constant VDS [S], dID/dVDS at constant VGS [S].
     """
     v_gs, v_ds = np.asarray(v_gs), np.asarray(v_ds)
-    over_s, over_d = v_gs - c.v_th, v_gs - v_ds - c.v_th
-    source_side, source_slope = softplus_and_slope(over_s, c.w)
-    drain_side, drain_slope = softplus_and_slope(over_d, c.w)
+    forward, more = v_ds.real >= 0.0, np.asarray(c.alpha) - 1.0
+    # What alpha takes from the overdrive stands on the drain's side, whichever end that is.
+    at_source, at_drain = np.where(forward, 0.0, -more * v_ds), np.where(forward, more * v_ds, 0.0)
+    over = v_gs - c.v_th
+    source_side, source_slope = softplus_and_slope(over - at_source, c.w)
+    drain_side, drain_slope = softplus_and_slope(over - v_ds - at_drain, c.w)
     k, lam = np.asarray(c.k), np.asarray(c.lam)
-    modulation = 1.0 + lam * _magnitude(v_ds)
+    modulation = 1.0 + lam * np.where(forward, v_ds, -v_ds)
+    # The difference of squares as a product: fewer digits are lost where the two sides are nearly equal.
     square = 0.5 * k * (source_side - drain_side) * (source_side + drain_side)
-    g_drain = k * drain_side * drain_slope
-    g_m = (k * source_side * source_slope - g_drain) * modulation
-    g_ds = g_drain * modulation + square * lam * np.where(v_ds.real < 0.0, -1.0, 1.0)
-    return square * modulation, g_m, g_ds
+    g_source, g_drain = k * source_side * source_slope, k * drain_side * drain_slope
+    g_ds = g_drain + more * np.where(forward, g_drain, g_source)
+    rise = square * np.where(forward, lam, -lam)
+    return square * modulation, (g_source - g_drain) * modulation, g_ds * modulation + rise
 
 
 def terminal_current(v_gs: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
@@ -211,10 +217,11 @@ def gate_voltage(i_d: ArrayLike, v_ds: ArrayLike, c: Channel) -> Numbers:
     # Lower end: with the drain side off. Upper end: both sides on, with the softplus at its straight line.
     square = 2.0 * i_d / (np.asarray(c.k) * (1.0 + np.asarray(c.lam) * v_ds))
     off = np.sqrt(square)
-    on = 0.5 * (square / v_ds + v_ds)
+    across = np.asarray(c.alpha) * v_ds
+    on = 0.5 * (square / across + across)
     lower = np.asarray(c.v_th) + inverse_softplus(off, c.w)
     upper = np.asarray(c.v_th) + np.maximum(on, off) + 5.0 * np.asarray(c.w)
-    guess = np.where(off < v_ds, lower, np.maximum(lower, np.asarray(c.v_th) + on))
+    guess = np.where(off < across, lower, np.maximum(lower, np.asarray(c.v_th) + on))
     return increasing_root(lambda v: _excess_over(v, i_d, v_ds, c), guess, lower - 1e-9, upper)
 
 
@@ -255,7 +262,7 @@ def threshold_voltage(i_d: ArrayLike, c: Channel) -> Numbers:
 
 def _excess_as_diode(v: Numbers, i_d: Numbers, c: Channel) -> tuple[Numbers, Numbers]:
     carried, g_m, g_ds = conductances(v - i_d * c.r_s, v - i_d * (np.asarray(c.r_s) + c.r_d), c)
-    return np.log(_magnitude(carried) / i_d), (g_m + g_ds) / carried
+    return np.log(np.where(carried.real < 0.0, -carried, carried) / i_d), (g_m + g_ds) / carried
 
 
 def drain_voltage(i_d: ArrayLike, v_gs: ArrayLike, c: Channel) -> Numbers:

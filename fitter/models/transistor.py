@@ -30,7 +30,7 @@ GATE = {
         name="c_gs", unit="F", meaning="gate-source capacitance at VGS = 0",
         lower=1e-15, upper=1e-5, scale="log"),
     "s_gs": ParameterDefinition(
-        name="s_gs", unit="", meaning="share of it that lies over the body and falls while the gate depletes that",
+        name="s_gs", unit="", meaning="share of it over the body, which the gate depletes",
         lower=0.0, upper=0.8, scale="linear", typical=0.1),
     "c_ch": ParameterDefinition(
         name="c_ch", unit="F", meaning="what the channel adds to it above threshold",
@@ -40,7 +40,7 @@ GATE = {
         lower=1e-15, upper=1e-5, scale="log"),
 }  # fmt: skip
 
-#: How that share falls with VGS [V], and its exponent: an oxide in series with the body's depletion layer has
+#: How that share falls with VGS, voltage [V] and exponent: an oxide in series with the body's depletion layer has
 #: C = Cox [1 + 2 Cox^2 (VGS - VFB)/(q eps NA)]^(-1/2) (Sze & Ng, Physics of Semiconductor Devices, 3rd ed., ch. 4),
 #: where q eps NA/(2 Cox^2) - VFB is about 2 V for the oxides and bodies of power transistors (50 nm, 1e17 cm^-3).
 BODY_DEPLETION, BODY_EXPONENT = 2.0, 0.5
@@ -76,12 +76,12 @@ class Transistor:
     """
 
     c_gs: Value
-    s_gs: Value
     c_ch: Value
     c_acc: Value
     gate_drain: Junction
     drain_source: Junction
     channel: Channel
+    s_gs: Value = 0.0
     laws: TemperatureLaws | None = None
     diode: BodyDiode | None = None
 
@@ -105,7 +105,8 @@ class Transistor:
 
         laws, diode = group(TEMPERATURE), group(BODY_DIODE)
         return cls(
-            **{field: values[d.name] for field, d in GATE.items()},
+            **{field: values[d.name] for field, d in GATE.items() if field != "s_gs"},
+            s_gs=values.get(GATE["s_gs"].name, 0.0),
             gate_drain=junction_from(GATE_DRAIN, values),
             drain_source=junction_from(DRAIN_SOURCE, values),
             channel=Channel(**group(CHANNEL)),
@@ -165,14 +166,20 @@ class Transistor:
     def q_gs(self, v_gs: ArrayLike) -> Numbers:
         """Charge [C] of the gate-source capacitance at VGS [V].
 
-        Cgs [(1-s) v + s QB(v)] + Cch [sp(v-VTH; w) - sp(-VTH; w)]: over the body QB is v below 0 V, and the charge
-        of a depletion capacitance above.
+        Cgs (1-s) v + QB(v) + Cch [sp(v-VTH; w) - sp(-VTH; w)], with QB the charge over the body.
         """
         v_gs, v_th = np.asarray(v_gs), np.asarray(self.channel.v_th)
         turned_on = softplus(v_gs - v_th, self.channel.w) - softplus(-v_th, self.channel.w)
-        above = np.where(v_gs.real > 0.0, v_gs, 0.0)
-        lost = above - cap.depletion_charge(above, 1.0, BODY_DEPLETION, BODY_EXPONENT)
-        return np.asarray(np.asarray(self.c_gs) * (v_gs - self.s_gs * lost) + np.asarray(self.c_ch) * turned_on)
+        body = self.gate_body
+        depleting = cap.charge(np.where(v_gs.real > 0.0, v_gs, 0.0), body)
+        over_body = np.where(v_gs.real > 0.0, depleting, np.asarray(body.c_0) * v_gs)
+        return np.asarray((np.asarray(self.c_gs) - body.c_0) * v_gs + over_body + np.asarray(self.c_ch) * turned_on)
+
+    @property
+    def gate_body(self) -> Junction:
+        """The share of Cgs over the body, constant below VGS = 0, and falling above while the gate depletes the body."""
+        c_0 = np.asarray(self.s_gs) * np.asarray(self.c_gs)
+        return Junction(c_0=c_0, phi=BODY_DEPLETION, m=BODY_EXPONENT, c_f=0.0)
 
     def c_iss(self, v_ds: ArrayLike) -> Numbers:
         """Input capacitance [F] at VDS [V], VGS = 0: Cgs + Cgd."""

@@ -28,7 +28,7 @@ from fitter.writers.element_laws import (
 from fitter.writers.netlist_frame import DELAY
 from fitter.writers.netlist_text import comment, number, scalar, statement
 
-__all__ = ["gate_source_charge", "junction_charge", "shared"]
+__all__ = ["gate_source_charge", "junction_charge", "shared", "split"]
 
 #: Models and nodes that all charges share. No model's name is that of an element.
 _SPLIT, _BEND_IN, _BEND_OUT, _LIMIT = "splitlaw", "bendinlaw", "bendoutlaw", "limitlaw"
@@ -56,6 +56,32 @@ def shared() -> list[str]:
         f"VBIAS {_BIAS_NODE} 0 {number(SPLIT_BIAS)}",
         f"VLIMIT {_LIMIT_NODE} 0 {number(_HIGHEST)}",
     ]
+
+
+def split(name: str, pair: _Pair) -> tuple[list[str], _Pair, _Pair]:
+    """A voltage taken apart at zero.
+
+    Parameters
+    ----------
+    name : str
+        What its elements' names end in.
+    pair : tuple of str
+        The nodes between which the voltage is.
+
+    Returns
+    -------
+    lines : list of str
+        Statements.
+    positive, negative : tuple of str
+        Nodes between which its positive and its negative part are; they must not be loaded.
+    """
+    copy, clamped = f"c{name}".lower(), f"x{name}".lower()
+    lines = [
+        f"EC{name} {copy} 0 {pair[0]} {pair[1]} 1",
+        f"RX{name} {copy} {clamped} {number(SPLIT_RESISTANCE)}",
+        f"DX{name} {_BIAS_NODE} {clamped} {_SPLIT}",
+    ]
+    return lines, (clamped, "0"), (copy, clamped)
 
 
 @dataclass(frozen=True)
@@ -159,13 +185,11 @@ def junction_charge(name: str, pair: _Pair, j: Junction, c_below: float) -> list
     list of str
         Statements.
     """
-    copy, clamped, above, below, sensed = (f"{letter}{name}".lower() for letter in "cxpns")
-    lines = [
-        f"EC{name} {copy} 0 {pair[0]} {pair[1]} 1",
-        f"RX{name} {copy} {clamped} {number(SPLIT_RESISTANCE)}",
-        f"DX{name} {_BIAS_NODE} {clamped} {_SPLIT}",
-        f"EP{name} {above} 0 {clamped} 0 1",
-        f"EN{name} {below} 0 {copy} {clamped} 1",
+    above, below, sensed = (f"{letter}{name}".lower() for letter in "pns")
+    lines, positive, negative = split(name, pair)
+    lines += [
+        f"EP{name} {above} 0 {positive[0]} {positive[1]} 1",
+        f"EN{name} {below} 0 {negative[0]} {negative[1]} 1",
         f"CN{name} {below} {sensed} {number(c_below)}",
     ]
     if scalar(j.c_f) > 0.0:
@@ -185,8 +209,10 @@ def junction_charge(name: str, pair: _Pair, j: Junction, c_below: float) -> list
 
 def gate_source_charge(name: str, pair: _Pair, t: Transistor) -> list[str]:
     """The gate-source charge; see `junction_charge`. Its constant part is a capacitor between the real nodes."""
-    lines = [f"C{name} {pair[0]} {pair[1]} {number(scalar(t.c_gs))}"]
-    c_ch, v_th, w = scalar(t.c_ch), scalar(t.channel.v_th), scalar(t.channel.w)
+    c_body, c_ch, v_th, w = scalar(t.gate_body.c_0), scalar(t.c_ch), scalar(t.channel.v_th), scalar(t.channel.w)
+    lines = [f"C{name} {pair[0]} {pair[1]} {number(scalar(t.c_gs) - c_body)}"]
+    if c_body > 0.0:
+        lines += junction_charge(f"{name}B", pair, t.gate_body, c_body)
     if c_ch <= 0.0:
         return lines
     bend = _bend(name, pair, v_th, w, float(np.inf))

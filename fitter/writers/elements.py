@@ -9,7 +9,7 @@ from __future__ import annotations
 from fitter.model import FittedModel
 from fitter.models.temperature import REFERENCE
 from fitter.models.transistor import Transistor
-from fitter.writers.element_charges import gate_source_charge, junction_charge, shared
+from fitter.writers.element_charges import gate_source_charge, junction_charge, shared, split
 from fitter.writers.element_laws import ElementAccuracy, element_accuracy
 from fitter.writers.netlist_frame import NOMINAL, Nodes, body_diode, frame
 from fitter.writers.netlist_header import header
@@ -64,9 +64,9 @@ def element_subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | N
         *_form(model, t),
         f".SUBCKT {around.name} drain gate source",
         *around.lead_elements(),
+        *shared(),
         comment("Channel"),
         *_channel(t, nodes),
-        *shared(),
         comment("Gate-drain charge"),
         *junction_charge("GD", nodes.drain_gate, t.gate_drain, scalar(t.c_acc)),
         comment("Gate-source charge"),
@@ -100,13 +100,28 @@ def _percent(share: float) -> str:
 
 
 def _channel(t: Transistor, nodes: Nodes) -> list[str]:
-    """The channel between the inner drain and source, with its body apart."""
+    """The channel between the inner drain and source, with its body apart.
+
+    The transistor has alpha VDS across it: alpha - 1 times the positive part of VDS is added to its drain, and as much
+    of the negative part to its source.
+    """
     c, sign, kind = t.channel, *((-1.0, "PMOS") if nodes.p_channel else (1.0, "NMOS"))
-    v_th, k, lam = (number(scalar(x)) for x in (sign * scalar(c.v_th), c.k, c.lam))
+    alpha = scalar(c.alpha)
+    v_th, k, lam = (number(x) for x in (sign * scalar(c.v_th), scalar(c.k), scalar(c.lam) / alpha))
+    lines, drain, source = [], nodes.drain, nodes.source
+    if alpha != 1.0:
+        parts, above, below = split("CH", nodes.drain_source)
+        drain, source, more = "mdrain", "msource", number(sign * (alpha - 1.0))
+        lines = [
+            *parts,
+            f"EMD {drain} {nodes.drain} {above[0]} {above[1]} {more}",
+            f"EMS {source} {nodes.source} {below[1]} {below[0]} {more}",
+        ]
     return [
+        *lines,
         statement(f".MODEL {_CHANNEL_MODEL} {kind}(LEVEL=1 VTO={v_th} KP={k} LAMBDA={lam})"),
         f"VBULK low 0 {number(-sign * _BODY_BIAS)}",
         f"EBULK bulk low {nodes.source} 0 1",
-        f"MCH {nodes.drain} {nodes.gate} {nodes.source} bulk {_CHANNEL_MODEL} L=1e-06 W=1e-06",
+        f"MCH {drain} {nodes.gate} {source} bulk {_CHANNEL_MODEL} L=1e-06 W=1e-06",
         f"RCH {nodes.drain} {nodes.source} {number(_LEAKAGE)}",
     ]

@@ -7,6 +7,8 @@ Expressions have a space wherever a line may end, and nowhere else.
 
 from __future__ import annotations
 
+import numpy as np
+
 from fitter.models import capacitance as cap
 from fitter.models.capacitance import Junction, Shield
 from fitter.models.channel import Channel
@@ -85,23 +87,29 @@ def drain_source_charge(t: Transistor, v_ds: str, unit: float) -> str:
 def gate_source_charge(t: Transistor, v_gs: str, unit: float) -> str:
     """Charge of the gate-source capacitance over a unit capacitance; see `gate_drain_charge`."""
     v_th, w = scalar(t.channel.v_th), scalar(t.channel.w)
+    c_body = scalar(t.gate_body.c_0)
     expression = f"{number(scalar(t.c_gs) / unit)} * {v_gs}"
+    if c_body > 0.0:
+        # Less what depletion takes of it: nothing and with no slope at 0 V, whatever slope a simulator gives max there.
+        above = f"max({v_gs}, 0)"
+        expression += f" - {number(c_body / unit)} * ({above} - ({_junction_charge(above, t.gate_body, c_body)}))"
     if scalar(t.c_ch) <= 0.0:
         return expression
     turned_on = f"{_softplus(f'{v_gs} {signed(-v_th)}', w)} {signed(-scalar(softplus(-v_th, w)))}"
     return f"{expression} + {number(scalar(t.c_ch) / unit)} * ({turned_on})"
 
 
-def channel_current(c: Channel, v_gs: str, v_gd: str, v_ds: str) -> str:
+def channel_current(c: Channel, v_gs: str, v_ds: str) -> str:
     """Current of the inner channel from drain to source.
 
-    The difference of squares is written as a product, so that no digits are lost where both are nearly equal.
+    The difference of squares is written as a product, so that no digits are lost where both are nearly equal; what alpha
+    takes from the overdrive is written so that the slope at VDS = 0 is right whatever slope a simulator gives max there.
 
     Parameters
     ----------
     c : Channel
         With numbers, no arrays, for parameters.
-    v_gs, v_gd, v_ds : str
+    v_gs, v_ds : str
         The inner voltages in n-channel polarity [V].
 
     Returns
@@ -109,10 +117,14 @@ def channel_current(c: Channel, v_gs: str, v_gd: str, v_ds: str) -> str:
     str
         The current [A].
     """
-    v_th, w, lam = scalar(c.v_th), scalar(c.w), scalar(c.lam)
-    source_side, drain_side = (_softplus(f"{v} {signed(-v_th)}", w) for v in (v_gs, v_gd))
-    product = f"({source_side} - {drain_side}) * ({source_side} + {drain_side})"
-    current = f"{number(0.5 * scalar(c.k))} * {product}"
+    v_th, w, lam, more = (scalar(x) for x in (c.v_th, c.w, c.lam, np.asarray(c.alpha) - 1.0))
+    at_source = at_drain = ""
+    if more != 0.0:
+        at_source = f" {signed(-more)} * (max({v_ds}, 0) - {v_ds})"
+        at_drain = f" {signed(-more)} * max({v_ds}, 0)"
+    source_side = _softplus(f"{v_gs} {signed(-v_th)}{at_source}", w)
+    drain_side = _softplus(f"{v_gs} - {v_ds} {signed(-v_th)}{at_drain}", w)
+    current = f"{number(0.5 * scalar(c.k))} * ({source_side} - {drain_side}) * ({source_side} + {drain_side})"
     if lam < _NO_MODULATION:
         return current
     return f"{current} * (1 + {number(lam)} * abs({v_ds}))"

@@ -76,7 +76,7 @@ def subcircuit(model: FittedModel, t_j: float = REFERENCE, name: str | None = No
 
 def _channel(t: Transistor, nodes: Nodes) -> list[str]:
     """The channel between the inner drain and source."""
-    current = channel_current(t.channel, nodes.v_gs, nodes.v_gd, nodes.v_ds)
+    current = channel_current(t.channel, nodes.v_gs, nodes.v_ds)
     plus, minus = nodes.drain_source
     return [statement(f"GCH {plus} {minus} VALUE={{{current}}}")]
 

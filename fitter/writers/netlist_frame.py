@@ -132,12 +132,6 @@ class Nodes:
         """Drain-source voltage, as an expression."""
         return _voltage(self.drain_source)
 
-    @property
-    def v_gd(self) -> str:
-        """Gate-drain voltage, as an expression."""
-        plus, minus = self.drain_gate
-        return _voltage((minus, plus))
-
 
 def _voltage(pair: tuple[str, str]) -> str:
     return f"V({pair[0]},{pair[1]})"
