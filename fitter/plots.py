@@ -11,7 +11,7 @@ from typing import Literal
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, NullFormatter
+from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 from numpy.typing import NDArray
 
 from fitter.errors import OperatingPointError
@@ -80,8 +80,10 @@ def _finish(ax: Axes, title: str, x: str, y: str) -> Axes:
     for axis in (ax.xaxis, ax.yaxis):
         if axis.get_scale() == "log":
             axis.set_major_formatter(FuncFormatter(_plain_number))
+            axis.set_minor_locator(LogLocator(subs=(2.0, 5.0)))
             axis.set_minor_formatter(NullFormatter())
-    ax.set_title(title, loc="left")
+    # Where to put a title is not worked out from all that is on the axes when it is told: that takes long.
+    ax.set_title(title, loc="left", y=1.0)
     ax.set_xlabel(x)
     ax.set_ylabel(y)
     ax.grid(visible=True, which="major", linewidth=0.4, color="0.85")
@@ -333,26 +335,15 @@ def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:
     ax = _axes(ax)
     names = list(dict.fromkeys(point.curve for point in model.points))
     edge = 6.0
-    for k, name in enumerate(names):
-        points = _points(model, name)
-        residuals = np.array([p.residual for p in points])
-        x = k + (np.arange(len(points)) + 0.5) / len(points) * 0.86 + 0.07
-        inside = np.abs(residuals) <= edge
-        colour = COLOURS[k % 3]
-        ax.plot(x[inside], residuals[inside], linestyle="none", marker=".", markersize=3.0, color=colour)
-        far = ~inside
-        for sign, marker in ((1.0, "^"), (-1.0, "v")):
-            chosen = far & (np.sign(residuals) == sign)
-            ax.plot(
-                x[chosen],
-                np.full(int(chosen.sum()), sign * edge),
-                linestyle="none",
-                marker=marker,
-                markersize=3.5,
-                color=colour,
-            )
-        if k:
-            ax.axvline(k, color="0.85", linewidth=0.5)
+    residuals, x, number = _residuals(model, names)
+    shown = np.clip(residuals, -edge, edge)
+    for far, marker, size in ((0.0, ".", 3.0), (1.0, "^", 3.5), (-1.0, "v", 3.5)):
+        kind = np.where(np.abs(residuals) > edge, np.sign(residuals), 0.0) == far
+        for k, colour in enumerate(COLOURS[:3]):
+            chosen = kind & (number % 3 == k)
+            if np.any(chosen):
+                ax.plot(x[chosen], shown[chosen], linestyle="none", marker=marker, markersize=size, color=colour)
+    ax.vlines(np.arange(1, len(names)), -2.0 * edge, 2.0 * edge, color="0.85", linewidth=0.5)
     for level, style in ((0.0, "-"), (2.0, ":"), (-2.0, ":")):
         ax.axhline(level, color="0.5", linewidth=0.6, linestyle=style)
     ax.set_xlim(0.0, max(len(names), 1))
@@ -360,6 +351,17 @@ def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:
     labels = [name if len(name) <= _LONGEST_LABEL else f"{name[: _LONGEST_LABEL - 2]} ..." for name in names]
     ax.set_xticks([k + 0.5 for k in range(len(names))], labels, rotation=35, ha="right", rotation_mode="anchor")
     ax.tick_params(axis="x", length=0)
-    ax.set_title("Residuals", loc="left")
+    ax.set_title("Residuals", loc="left", y=1.0)
     ax.set_ylabel("std. deviations")
     return ax
+
+
+def _residuals(model: FittedModel, names: Sequence[str]) -> tuple[Array, Array, NDArray[np.int_]]:
+    """Of every digitized point: residual, place along x, number of its curve, which takes 1 of the x axis."""
+    residuals, x, number = [], [], []
+    for k, name in enumerate(names):
+        points = _points(model, name)
+        residuals += [point.residual for point in points]
+        x += [k + 0.07 + 0.86 * (j + 0.5) / len(points) for j in range(len(points))]
+        number += [k] * len(points)
+    return np.array(residuals), np.array(x), np.array(number, dtype=int)
