@@ -9,7 +9,10 @@ from collections.abc import Sequence
 import matplotlib as mpl
 import matplotlib.lines
 from matplotlib import font_manager
+from matplotlib.artist import Artist
+from matplotlib.backend_bases import RendererBase
 from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties
 from matplotlib.gridspec import GridSpec
 
 from fitter import plots
@@ -27,6 +30,8 @@ _DPI = 170
 _LEFT, _RIGHT = 0.07, 0.965
 #: Height of a table line, as a share of the page.
 _LINE = 0.0103
+#: Size of the tables' and notices' texts [pt].
+_TABLE_SIZE = 5.7
 
 CAUTIONS = (
     "Typical values are no limits. No safe operating area, avalanche, short circuit or self-heating. Such circuits "
@@ -39,10 +44,43 @@ _SETTINGS = {
     "axes.labelsize": 6.5, "xtick.labelsize": 6.0, "ytick.labelsize": 6.0, "legend.fontsize": 6.0,
     "legend.title_fontsize": 6.0, "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
     "xtick.minor.width": 0.3, "ytick.minor.width": 0.3, "lines.solid_capstyle": "round", "pdf.fonttype": 3,
-    "svg.hashsalt": "fetwright", "text.usetex": False, "mathtext.fontset": "dejavusans",
+    "svg.hashsalt": "fetwright", "text.usetex": False, "text.hinting": "no_hinting", "mathtext.fontset": "dejavusans",
 }  # fmt: skip
 
 _VERDICT_COLOUR = {"agrees": plots.COLOURS[2], "differs": plots.COLOURS[1], "outside limit": "#B00000"}
+
+
+class _Texts(Artist):
+    """Many short texts on the page.
+
+    A Text of its own for each would take twice as long, most of it for what short texts in a table do not need:
+    lines, boxes, angles, formulas.
+    """
+
+    def __init__(self) -> None:
+        super().__init__()
+        self._texts: list[tuple[float, float, str, str, str, FontProperties]] = []
+        self._fonts = {weight: FontProperties(size=_TABLE_SIZE, weight=weight) for weight in ("normal", "bold")}
+
+    def add(
+        self, x: float, y: float, text: str, align: str = "left", colour: str = "black", weight: str = "normal"
+    ) -> None:
+        """One more text: its left or right end on the baseline, as shares of the page."""
+        self._texts.append((x, y, text, align, colour, self._fonts[weight]))
+
+    def get_text(self) -> str:
+        """All texts, line by line."""
+        return "\n".join(text for _, _, text, *_ in self._texts)
+
+    def draw(self, renderer: RendererBase) -> None:
+        width, height = renderer.get_canvas_width_height()
+        pen = renderer.new_gc()
+        for x, y, text, align, colour, font in self._texts:
+            pen.set_foreground(colour)
+            length = renderer.get_text_width_height_descent(text, font, False)[0] if align == "right" else 0.0
+            down = (1.0 - y if renderer.flipy() else y) * height
+            renderer.draw_text(pen, x * width - length, down, text, font, 0.0)
+        pen.restore()
 
 
 def sheet_files(model: FittedModel) -> dict[str, bytes]:
@@ -63,7 +101,7 @@ def sheet_files(model: FittedModel) -> dict[str, bytes]:
         mpl.rcParams.update(_SETTINGS)  # type: ignore[arg-type]
         figure = draw_sheet(model)
         png, pdf = io.BytesIO(), io.BytesIO()
-        figure.savefig(png, format="png", metadata={"Software": None})
+        figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 3})
         figure.savefig(pdf, format="pdf", metadata={"CreationDate": None, "Creator": None, "Producer": None})
     return {"sheet.png": png.getvalue(), "sheet.pdf": pdf.getvalue()}
 
@@ -111,9 +149,11 @@ def draw_sheet(model: FittedModel) -> Figure:
     lower = GridSpec(1, 1, figure=figure, left=_LEFT, right=_RIGHT, top=0.496, bottom=0.438)
     plots.plot_residuals(model, figure.add_subplot(lower[0, 0]))
     top = 0.375
-    _draw_parameters(figure, model, top)
-    right_end = _draw_checks(figure, model, top)
-    _draw_notices(figure, model, right_end - 0.014, 0.062)
+    texts = _Texts()
+    _draw_parameters(figure, texts, model, top)
+    right_end = _draw_checks(figure, texts, model, top)
+    _draw_notices(figure, texts, model, right_end - 0.014, 0.062)
+    figure.add_artist(texts)
     _draw_cautions(figure)
     return figure
 
@@ -130,19 +170,20 @@ def _draw_head(figure: Figure, model: FittedModel) -> None:
         else "gate charge not fitted: Cacc and Cch assumed, QG is a check"
     )
     figure.text(_RIGHT, 0.967, f"fetwright {model.version}: {how}", fontsize=7, ha="right", va="baseline", color="0.3")
-    figure.text(_LEFT, 0.950, _shortened(part.notes, 150), fontsize=7, va="baseline", color="0.3")
+    notes = _shortened(part.notes, 150).replace("$", r"\$")  # which would begin a formula
+    figure.text(_LEFT, 0.950, notes, fontsize=7, va="baseline", color="0.3")
     figure.add_artist(mpl.lines.Line2D([_LEFT, _RIGHT], [0.942, 0.942], color="black", linewidth=0.8))
 
 
 def _shortened(text: str, most: int) -> str:
-    # What the font lacks would make the plot warn; a dollar sign would begin a formula.
+    # What the font lacks would make the plot warn.
     known = font_manager.get_font(font_manager.findfont("DejaVu Sans")).get_charmap()
-    plain = "".join(c if ord(c) in known else "?" for c in " ".join(text.split())).replace("$", r"\$")
+    plain = "".join(c if ord(c) in known else "?" for c in " ".join(text.split()))
     return plain if len(plain) <= most else plain[: most - 1].rstrip() + "\N{HORIZONTAL ELLIPSIS}"
 
 
 def _row(
-    figure: Figure,
+    texts: _Texts,
     y: float,
     cells: Sequence[str],
     places: Sequence[tuple[float, str]],
@@ -152,8 +193,7 @@ def _row(
     """One line of a table: texts at their places, left or right aligned."""
     for k, (cell, (x, align)) in enumerate(zip(cells, places, strict=True)):
         if cell:
-            colour = colours[k] if colours else "black"
-            figure.text(x, y, cell, ha=align, va="baseline", fontsize=5.7, color=colour, fontweight=weight)
+            texts.add(x, y, cell, align, colours[k] if colours else "black", weight)
 
 
 def _rule(figure: Figure, y: float, left: float, right: float) -> None:
@@ -163,9 +203,9 @@ def _rule(figure: Figure, y: float, left: float, right: float) -> None:
 _PARAMETER_PLACES = ((_LEFT, "left"), (0.215, "right"), (0.285, "right"), (0.298, "left"))
 
 
-def _draw_parameters(figure: Figure, model: FittedModel, top: float) -> None:
+def _draw_parameters(figure: Figure, texts: _Texts, model: FittedModel, top: float) -> None:
     """The parameter table, its lines as far apart as there is room for."""
-    _row(figure, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, weight="bold")
+    _row(texts, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, weight="bold")
     _rule(figure, top - 0.004, _LEFT, 0.372)
     step = min(_LINE, (top - 0.012 - 0.056) / max(len(model.parameters), 1))
     y = top - 0.0035
@@ -174,7 +214,7 @@ def _draw_parameters(figure: Figure, model: FittedModel, top: float) -> None:
         error = "" if p.stderr is None else engineering(p.stderr, _pretty_unit(p), 2)
         colour = "black" if p.origin == "fitted" else "0.4"
         cells = (p.name, engineering(p.value, _pretty_unit(p), 4), error, p.origin)
-        _row(figure, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _PARAMETER_PLACES, [colour] * 4)
+        _row(texts, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _PARAMETER_PLACES, [colour] * 4)
 
 
 def _pretty_unit(p: Parameter) -> str:
@@ -187,10 +227,10 @@ _CHECK_PLACES = (
 )  # fmt: skip
 
 
-def _draw_checks(figure: Figure, model: FittedModel, top: float) -> float:
+def _draw_checks(figure: Figure, texts: _Texts, model: FittedModel, top: float) -> float:
     """The comparison; returns where it ends."""
     heads = ("Stated", "condition", "typ (limits)", "fitted", "95 % interval", "off", "", "verdict")
-    _row(figure, top, heads, _CHECK_PLACES, weight="bold")
+    _row(texts, top, heads, _CHECK_PLACES, weight="bold")
     _rule(figure, top - 0.004, 0.385, _RIGHT)
     y = top - 0.0035
     for s in shown_checks(model):
@@ -203,10 +243,10 @@ def _draw_checks(figure: Figure, model: FittedModel, top: float) -> float:
             s.check.verdict,
         )  # fmt: skip
         colours = ["black"] * 7 + [_VERDICT_COLOUR.get(s.check.verdict, "0.4")]
-        _row(figure, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _CHECK_PLACES, colours)
+        _row(texts, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _CHECK_PLACES, colours)
     if not model.checks:
         y -= _LINE
-        _row(figure, y, ("no table values are stated", *[""] * 7), _CHECK_PLACES)
+        _row(texts, y, ("no table values are stated", *[""] * 7), _CHECK_PLACES)
     return y
 
 
@@ -222,9 +262,9 @@ def _stated(s: Shown) -> str:
     return f"{typ}{inside} {s.unit}".strip()
 
 
-def _draw_notices(figure: Figure, model: FittedModel, top: float, bottom: float) -> None:
+def _draw_notices(figure: Figure, texts: _Texts, model: FittedModel, top: float, bottom: float) -> None:
     """As many notices as there is room for; the command shows them all."""
-    _row(figure, top, ("Notices",), ((0.385, "left"),), weight="bold")
+    _row(texts, top, ("Notices",), ((0.385, "left"),), weight="bold")
     _rule(figure, top - 0.004, 0.385, _RIGHT)
     y, shown = top - 0.0035, 0
     for notice in model.notices:
@@ -234,12 +274,12 @@ def _draw_notices(figure: Figure, model: FittedModel, top: float, bottom: float)
         for k, line in enumerate(lines):
             y -= _LINE * 0.9
             text = ("\N{EN DASH} " if k == 0 else "   ") + line
-            figure.text(0.385, y, text, fontsize=5.6, va="baseline", color="0.2")
+            texts.add(0.385, y, text, colour="0.2")
         shown += 1
     left = len(model.notices) - shown
     if left or not model.notices:
         text = f"and {left} more, in model.json" if left else "none"
-        figure.text(0.385, y - _LINE * 0.9, text, fontsize=5.6, va="baseline", color="0.4")
+        texts.add(0.385, y - _LINE * 0.9, text, colour="0.4")
 
 
 def _draw_cautions(figure: Figure) -> None:

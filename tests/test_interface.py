@@ -387,7 +387,7 @@ def test_drawing_the_sheet_leaves_the_users_settings(fitted):
 
 
 def texts_of(figure):
-    return " ".join(text.get_text() for text in figure.texts)
+    return " ".join(artist.get_text() for artist in figure.get_children() if hasattr(artist, "get_text"))
 
 
 def test_the_sheet_names_part_parameters_checks_and_cautions(model):
