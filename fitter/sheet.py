@@ -4,16 +4,17 @@ from __future__ import annotations
 
 import io
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from functools import partial
 
 import matplotlib as mpl
 import matplotlib.lines
 from matplotlib import font_manager
 from matplotlib.artist import Artist
+from matplotlib.axes import Axes
 from matplotlib.backend_bases import RendererBase
 from matplotlib.figure import Figure
 from matplotlib.font_manager import FontProperties
-from matplotlib.gridspec import GridSpec
 
 from fitter import plots
 from fitter.model import FittedModel
@@ -28,6 +29,10 @@ __all__ = ["CAUTIONS", "draw_sheet", "sheet_files"]
 _PAGE = (8.27, 11.69)
 _DPI = 170
 _LEFT, _RIGHT = 0.07, 0.965
+#: Where the table of parameters ends, and the comparison begins.
+_PARAMETERS_END, _CHECKS = 0.355, 0.368
+#: Between two plots, for the right one's scale.
+_GAP = 0.064
 #: Height of a table line, as a share of the page.
 _LINE = 0.0103
 #: Size of the tables' and notices' texts [pt].
@@ -42,12 +47,24 @@ CAUTIONS = (
 _SETTINGS = {
     "font.family": "DejaVu Sans", "font.size": 6.5, "axes.titlesize": 7.5, "axes.titleweight": "bold",
     "axes.labelsize": 6.5, "xtick.labelsize": 6.0, "ytick.labelsize": 6.0, "legend.fontsize": 6.0,
-    "legend.title_fontsize": 6.0, "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
+    "legend.title_fontsize": 6.0, "legend.handlelength": 1.7, "legend.labelspacing": 0.3, "legend.borderaxespad": 0.3,
+    "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
     "xtick.minor.width": 0.3, "ytick.minor.width": 0.3, "lines.solid_capstyle": "round", "pdf.fonttype": 3,
     "svg.hashsalt": "fetwright", "text.usetex": False, "text.hinting": "no_hinting", "mathtext.fontset": "dejavusans",
 }  # fmt: skip
 
 _VERDICT_COLOUR = {"agrees": plots.COLOURS[2], "differs": plots.COLOURS[1], "outside limit": "#B00000"}
+
+
+#: Plots of what not every part gives.
+_WHERE_GIVEN: dict[Quantity, Callable[[FittedModel, Axes], Axes]] = {
+    Quantity.OUTPUT: plots.plot_output,
+    Quantity.BODY_DIODE: plots.plot_body_diode,
+    Quantity.RDS_ON_TEMPERATURE: plots.plot_on_resistance,
+    Quantity.VGS_TH_TEMPERATURE: plots.plot_threshold,
+}
+#: Up to so many plots, two stand in the first row; else three.
+_FEW = 5
 
 
 class _Texts(Artist):
@@ -121,34 +138,8 @@ def draw_sheet(model: FittedModel) -> Figure:
     """
     figure = Figure(figsize=_PAGE, dpi=_DPI)
     _draw_head(figure, model)
-    rows = [1.25, 1.0]
-    upper = GridSpec(
-        2,
-        12,
-        figure=figure,
-        left=_LEFT,
-        right=_RIGHT,
-        top=0.918,
-        bottom=0.545,
-        height_ratios=rows,
-        hspace=0.36,
-        wspace=3.6,
-    )
-    plots.plot_capacitances(model, figure.add_subplot(upper[0, 0:6]))
-    plots.plot_gate_charge(model, figure.add_subplot(upper[0, 6:12]))
-    plots.plot_transfer(model, figure.add_subplot(upper[1, 0:4]))
-    plots.plot_transfer(model, figure.add_subplot(upper[1, 4:8]), scale="log")
-    drawn = {curve.quantity for curve in model.part.curves if any(p.curve == curve.name for p in model.points)}
-    third = figure.add_subplot(upper[1, 8:12])
-    if Quantity.OUTPUT in drawn or Quantity.BODY_DIODE not in drawn:
-        plots.plot_output(model, third)
-        if Quantity.OUTPUT not in drawn:
-            third.text(0.5, 0.5, "no output curve given", transform=third.transAxes, ha="center", color="0.5")
-    else:
-        plots.plot_body_diode(model, third)
-    lower = GridSpec(1, 1, figure=figure, left=_LEFT, right=_RIGHT, top=0.496, bottom=0.438)
-    plots.plot_residuals(model, figure.add_subplot(lower[0, 0]))
-    top = 0.375
+    _draw_plots(figure, model)
+    top = 0.405
     texts = _Texts()
     _draw_parameters(figure, texts, model, top)
     right_end = _draw_checks(figure, texts, model, top)
@@ -156,6 +147,25 @@ def draw_sheet(model: FittedModel) -> Figure:
     figure.add_artist(texts)
     _draw_cautions(figure)
     return figure
+
+
+def _draw_plots(figure: Figure, model: FittedModel) -> None:
+    """Two rows of plots of what the part gives, and the residuals across the page."""
+    digitized = {p.curve for p in model.points}
+    given = {c.quantity for c in model.part.curves if c.name in digitized}
+    wanted: list[Callable[[FittedModel, Axes], Axes]] = [plots.plot_capacitances, plots.plot_gate_charge]
+    wanted += [plots.plot_transfer, partial(plots.plot_transfer, scale="log")]
+    wanted += [plot for quantity, plot in _WHERE_GIVEN.items() if quantity in given]
+    first = 3 if len(wanted) > _FEW else 2
+    for row, (top, bottom) in ((wanted[:first], (0.918, 0.745)), (wanted[first:], (0.690, 0.572))):
+        shares = [1.5 if plot is plots.plot_output else 1.0 for plot in row]  # its legend stands beside the curves
+        unit = (_RIGHT - _LEFT - _GAP * (len(row) - 1)) / sum(shares)
+        left = _LEFT
+        for plot, share in zip(row, shares, strict=True):
+            ax = plot(model, figure.add_axes((left, bottom, unit * share, top - bottom)))
+            ax.xaxis.set_label_coords(0.5, -0.020 / (top - bottom))  # being told saves measuring the scale's labels
+            left += unit * share + _GAP
+    plots.plot_residuals(model, figure.add_axes((_LEFT, 0.466, _RIGHT - _LEFT, 0.054)))
 
 
 def _draw_head(figure: Figure, model: FittedModel) -> None:
@@ -200,13 +210,13 @@ def _rule(figure: Figure, y: float, left: float, right: float) -> None:
     figure.add_artist(mpl.lines.Line2D([left, right], [y, y], color="0.6", linewidth=0.5))
 
 
-_PARAMETER_PLACES = ((_LEFT, "left"), (0.215, "right"), (0.285, "right"), (0.298, "left"))
+_PARAMETER_PLACES = ((_LEFT, "left"), (0.205, "right"), (0.270, "right"), (0.281, "left"))
 
 
 def _draw_parameters(figure: Figure, texts: _Texts, model: FittedModel, top: float) -> None:
     """The parameter table, its lines as far apart as there is room for."""
     _row(texts, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, weight="bold")
-    _rule(figure, top - 0.004, _LEFT, 0.372)
+    _rule(figure, top - 0.004, _LEFT, _PARAMETERS_END)
     step = min(_LINE, (top - 0.012 - 0.056) / max(len(model.parameters), 1))
     y = top - 0.0035
     for p in model.parameters.values():
@@ -222,7 +232,7 @@ def _pretty_unit(p: Parameter) -> str:
 
 
 _CHECK_PLACES = (
-    (0.385, "left"), (0.436, "left"), (0.690, "right"), (0.734, "right"), (0.828, "right"), (0.873, "right"),
+    (_CHECKS, "left"), (0.419, "left"), (0.672, "right"), (0.720, "right"), (0.825, "right"), (0.873, "right"),
     (0.880, "left"), (_RIGHT, "right"),
 )  # fmt: skip
 
@@ -231,7 +241,7 @@ def _draw_checks(figure: Figure, texts: _Texts, model: FittedModel, top: float) 
     """The comparison; returns where it ends."""
     heads = ("Stated", "condition", "typ (limits)", "fitted", "95 % interval", "off", "", "verdict")
     _row(texts, top, heads, _CHECK_PLACES, weight="bold")
-    _rule(figure, top - 0.004, 0.385, _RIGHT)
+    _rule(figure, top - 0.004, _CHECKS, _RIGHT)
     y = top - 0.0035
     for s in shown_checks(model):
         y -= _LINE
@@ -264,22 +274,22 @@ def _stated(s: Shown) -> str:
 
 def _draw_notices(figure: Figure, texts: _Texts, model: FittedModel, top: float, bottom: float) -> None:
     """As many notices as there is room for; the command shows them all."""
-    _row(texts, top, ("Notices",), ((0.385, "left"),), weight="bold")
-    _rule(figure, top - 0.004, 0.385, _RIGHT)
+    _row(texts, top, ("Notices",), ((_CHECKS, "left"),), weight="bold")
+    _rule(figure, top - 0.004, _CHECKS, _RIGHT)
     y, shown = top - 0.0035, 0
     for notice in model.notices:
-        lines = textwrap.wrap(_shortened(notice.text, 240), 112)
+        lines = textwrap.wrap(_shortened(notice.text, 240), 115)
         if y - _LINE * 0.9 * (len(lines) + 1) < bottom:
             break
         for k, line in enumerate(lines):
             y -= _LINE * 0.9
             text = ("\N{EN DASH} " if k == 0 else "   ") + line
-            texts.add(0.385, y, text, colour="0.2")
+            texts.add(_CHECKS, y, text, colour="0.2")
         shown += 1
     left = len(model.notices) - shown
     if left or not model.notices:
         text = f"and {left} more, in model.json" if left else "none"
-        texts.add(0.385, y - _LINE * 0.9, text, colour="0.4")
+        texts.add(_CHECKS, y - _LINE * 0.9, text, colour="0.4")
 
 
 def _draw_cautions(figure: Figure) -> None:
