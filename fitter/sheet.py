@@ -5,7 +5,7 @@ from __future__ import annotations
 import io
 import textwrap
 from collections.abc import Callable, Sequence
-from functools import partial
+from functools import cache, partial
 
 import matplotlib as mpl
 import matplotlib.lines
@@ -54,7 +54,6 @@ _SETTINGS = {
 }  # fmt: skip
 
 _VERDICT_COLOUR = {"agrees": plots.COLOURS[2], "differs": plots.COLOURS[1], "outside limit": "#B00000"}
-
 
 #: Plots of what not every part gives.
 _WHERE_GIVEN: dict[Quantity, Callable[[FittedModel, Axes], Axes]] = {
@@ -185,10 +184,14 @@ def _draw_head(figure: Figure, model: FittedModel) -> None:
     figure.add_artist(mpl.lines.Line2D([_LEFT, _RIGHT], [0.942, 0.942], color="black", linewidth=0.8))
 
 
+@cache
+def _known_characters() -> frozenset[int]:
+    return frozenset(font_manager.get_font(font_manager.findfont("DejaVu Sans")).get_charmap())
+
+
 def _shortened(text: str, most: int) -> str:
     # What the font lacks would make the plot warn.
-    known = font_manager.get_font(font_manager.findfont("DejaVu Sans")).get_charmap()
-    plain = "".join(c if ord(c) in known else "?" for c in " ".join(text.split()))
+    plain = "".join(c if ord(c) in _known_characters() else "?" for c in " ".join(text.split()))
     return plain if len(plain) <= most else plain[: most - 1].rstrip() + "\N{HORIZONTAL ELLIPSIS}"
 
 
