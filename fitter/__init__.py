@@ -30,8 +30,10 @@ if TYPE_CHECKING:
         plot_body_diode,
         plot_capacitances,
         plot_gate_charge,
+        plot_on_resistance,
         plot_output,
         plot_residuals,
+        plot_threshold,
         plot_transfer,
     )
     from fitter.reader import read_part
@@ -51,8 +53,10 @@ _HOMES = {
     "plot_body_diode": "fitter.plots",
     "plot_capacitances": "fitter.plots",
     "plot_gate_charge": "fitter.plots",
+    "plot_on_resistance": "fitter.plots",
     "plot_output": "fitter.plots",
     "plot_residuals": "fitter.plots",
+    "plot_threshold": "fitter.plots",
     "plot_transfer": "fitter.plots",
     "read_part": "fitter.reader",
 }
@@ -72,8 +76,10 @@ __all__ = [
     "plot_body_diode",
     "plot_capacitances",
     "plot_gate_charge",
+    "plot_on_resistance",
     "plot_output",
     "plot_residuals",
+    "plot_threshold",
     "plot_transfer",
     "read_part",
 ]

@@ -11,26 +11,32 @@ from typing import Literal
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, NullFormatter
+from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 from numpy.typing import NDArray
 
 from fitter.errors import OperatingPointError
 from fitter.gate_charge import gate_charge_curve
 from fitter.model import CurveRow, FittedModel
+from fitter.models.channel import on_resistance, threshold_voltage
 from fitter.models.diode import forward_voltage
 from fitter.models.temperature import REFERENCE
 from fitter.part import Curve, Quantity
+from fitter.units import engineering
 
 __all__ = [
     "COLOURS",
     "plot_body_diode",
     "plot_capacitances",
     "plot_gate_charge",
+    "plot_on_resistance",
     "plot_output",
     "plot_residuals",
+    "plot_threshold",
     "plot_transfer",
 ]
 
+#: On a log axis whose ends have a ratio of less, 2 and 5 are labelled, too.
+_FEW_DECADES = 100.0
 #: Characters of a curve's name below the residuals.
 _LONGEST_LABEL = 18
 
@@ -71,6 +77,15 @@ def _draw_points(
             )  # fmt: skip
 
 
+def _signed(text: str) -> str:
+    """Figures with minus signs instead of hyphens."""
+    return text.replace("-", "\N{MINUS SIGN}")
+
+
+def _celsius(t_j: float) -> str:
+    return _signed(f"{t_j:g} \N{DEGREE SIGN}C")
+
+
 def _plain_number(value: float, _: int) -> str:
     """A decade's label as an ordinary number up to 10000, without the font that powers of ten need."""
     return f"{value:g}" if 1e-4 < abs(value) < 1e5 else f"{value:.0e}".replace("e-0", "e-").replace("e+0", "e")
@@ -80,8 +95,11 @@ def _finish(ax: Axes, title: str, x: str, y: str) -> Axes:
     for axis in (ax.xaxis, ax.yaxis):
         if axis.get_scale() == "log":
             axis.set_major_formatter(FuncFormatter(_plain_number))
-            axis.set_minor_formatter(NullFormatter())
-    ax.set_title(title, loc="left")
+            axis.set_minor_locator(LogLocator(subs=(2.0, 5.0)))
+            low, high = axis.get_view_interval()
+            axis.set_minor_formatter(FuncFormatter(_plain_number) if high < _FEW_DECADES * low else NullFormatter())
+    # A title that is told where to stand saves measuring everything on the axes.
+    ax.set_title(title, loc="left", y=1.0)
     ax.set_xlabel(x)
     ax.set_ylabel(y)
     ax.grid(visible=True, which="major", linewidth=0.4, color="0.85")
@@ -149,7 +167,7 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
     known = model.validity.v_gs
     end = max((float(np.max(c.x)) for c in curves), default=known[-1] if known else model.part.v_gs_max)
     v_ds = next((c.v_ds for c in curves if c.v_ds is not None), 0.5 * model.part.v_ds_max)
-    v = np.linspace(0.0, end, 160)
+    v = np.linspace(0.0, end, 100)
     for t_j, colour, marker, style in zip(
         _temperatures(curves) or [REFERENCE], COLOURS, _MARKERS, _STYLES, strict=False
     ):
@@ -157,7 +175,7 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
         shown = (i < 1.15 * top) & (i > (1e-6 * top if scale == "log" else -1.0))
         low, high = model.current_band(model.sign * v[shown], model.sign * v_ds, t_j)
         ax.fill_between(v[shown], low, high, color=colour, alpha=0.18, linewidth=0.0)
-        ax.plot(v[shown], i[shown], color=colour, linestyle=style, linewidth=1.1, label=f"{t_j:g} \N{DEGREE SIGN}C")
+        ax.plot(v[shown], i[shown], color=colour, linestyle=style, linewidth=1.1, label=_celsius(t_j))
         for curve in curves:
             if (REFERENCE if curve.t_j is None else curve.t_j) == t_j:
                 points = _points(model, curve.name)
@@ -165,6 +183,7 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
     if scale == "log":
         ax.set_yscale("log")
         ax.set_ylim(1e-5 * top, 2.0 * top)
+        ax.set_xlim(right=1.25 * end)  # room for the legend beside the curves
     else:
         ax.set_ylim(0.0, 1.05 * top)
     crossing = model.zero_temperature_coefficient() if scale == "linear" else None
@@ -175,13 +194,13 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
             ha="right", fontsize="small",
         )  # fmt: skip
     ax.legend(loc="upper left" if scale == "linear" else "lower right", frameon=False)
-    title = f"Transfer, {_minus(model)}VDS = {v_ds:g} V" + (", log" if scale == "log" else "")
     minus = _minus(model)
+    title = f"Transfer at {minus}{v_ds:g} V" + (", log" if scale == "log" else "")
     return _finish(ax, title, f"{minus}VGS / V", f"{minus}ID / A")
 
 
 def plot_output(model: FittedModel, ax: Axes | None = None) -> Axes:
-    """Drain current over VDS at every VGS that was digitized, at 25 degC; empty axes where none was.
+    """Drain current over VDS at every VGS that was digitized, at 25 degC or, where none was there, at the hottest.
 
     Parameters
     ----------
@@ -193,23 +212,26 @@ def plot_output(model: FittedModel, ax: Axes | None = None) -> Axes:
     Returns
     -------
     Axes
-        VDS [V], ID [A].
+        VDS [V], ID [A]; empty where no output curve was digitized.
     """
     ax = _axes(ax)
     every = [c for c in model.part.curves_of(Quantity.OUTPUT) if _points(model, c.name)]
-    curves = [c for c in every if c.t_j in (None, REFERENCE)]
+    t_j = (_temperatures(every) or [REFERENCE])[0]
+    curves = [c for c in every if (REFERENCE if c.t_j is None else c.t_j) == t_j]
+    transistor = model.transistor(t_j)
     for k, curve in enumerate(sorted(curves, key=lambda c: -(c.v_gs or 0.0))):
         colour, marker, style = COLOURS[k % 7], _MARKERS[k % 7], _STYLES[k % 7]
         v = np.linspace(0.0, float(curve.x[-1]), 80)
-        i = np.asarray(model.transistor().i_d(curve.v_gs or 0.0, v))
-        label = f"{model.sign * (curve.v_gs or 0.0):g} V".replace("-", "\N{MINUS SIGN}")
+        i = np.asarray(transistor.i_d(curve.v_gs or 0.0, v))
+        label = _signed(f"{model.sign * (curve.v_gs or 0.0):g} V")
         ax.plot(v, i, color=colour, linestyle=style, linewidth=1.1, label=label)
         _draw_points(ax, _points(model, curve.name), colour, marker)
     if curves:
         ax.set_ylim(0.0, 1.05 * max(float(np.max(c.y)) for c in curves))
-        ax.legend(loc="upper right", framealpha=0.85, edgecolor="none", title="VGS")
+        ax.set_xlim(0.0, 1.8 * max(float(np.max(c.x)) for c in curves))  # room for the legend beside the curves
+        ax.legend(loc="upper right", frameon=False, title="VGS")
     minus = _minus(model)
-    return _finish(ax, "Output, 25 \N{DEGREE SIGN}C", f"{minus}VDS / V", f"{minus}ID / A")
+    return _finish(ax, f"Output, {_celsius(t_j)}", f"{minus}VDS / V", f"{minus}ID / A")
 
 
 def plot_gate_charge(model: FittedModel, ax: Axes | None = None) -> Axes:
@@ -306,13 +328,94 @@ def plot_body_diode(model: FittedModel, ax: Axes | None = None) -> Axes:
         i = np.geomspace(min(float(np.min(c.y)) for c in curves), max(float(np.max(c.y)) for c in curves), 80)
         for t_j, colour, marker, style in zip(_temperatures(curves), COLOURS, _MARKERS, _STYLES, strict=False):
             v = np.asarray(forward_voltage(i, diode, t_j))
-            ax.plot(v, i, color=colour, linestyle=style, linewidth=1.1, label=f"{t_j:g} \N{DEGREE SIGN}C")
+            ax.plot(v, i, color=colour, linestyle=style, linewidth=1.1, label=_celsius(t_j))
             for curve in curves:
                 if (REFERENCE if curve.t_j is None else curve.t_j) == t_j:
                     _draw_points(ax, _points(model, curve.name), colour, marker)
         ax.set_yscale("log")
+        ax.set_ylim(top=4.0 * i[-1])  # room for the legend above the curves
         ax.legend(loc="upper left", frameon=False)
     return _finish(ax, "Body diode", "VSD / V", "IS / A")
+
+
+def plot_on_resistance(model: FittedModel, ax: Axes | None = None) -> Axes:
+    """RDS(on) over the junction temperature, every curve that was digitized.
+
+    Parameters
+    ----------
+    model : FittedModel
+        The model.
+    ax : Axes, optional
+        Where to draw; new ones by default.
+
+    Returns
+    -------
+    Axes
+        Tj [degC], RDS(on) [mOhm], or over its value at 25 degC where every curve is; empty where none was digitized.
+    """
+    ax = _axes(ax)
+    curves = [c for c in model.part.curves_of(Quantity.RDS_ON_TEMPERATURE) if _points(model, c.name)]
+    relative = bool(curves) and all(c.y_unit == "" for c in curves)
+    transistor = model.transistor()
+    drawn = []
+    for curve in curves:
+        i_d, v_gs = curve.i_d or 0.0, curve.v_gs or 0.0
+        cold = float(on_resistance(i_d, v_gs, transistor.channel))
+        t_j = np.linspace(curve.x[0], curve.x[-1], 60)
+        fitted = np.asarray(on_resistance(i_d, v_gs, transistor.at(t_j).channel)) / (cold if relative else 1e-3)
+        # A curve over its own value at 25 degC, beside one in ohms, is drawn in ohms of the fit.
+        scale = 1.0 if relative else 1e3 * (cold if curve.y_unit == "" else 1.0)
+        condition = _signed(f"{model.sign * v_gs:g} V, {engineering(model.sign * i_d, 'A', 3)}")
+        drawn.append((curve, t_j, fitted, scale, condition))
+    unit = f"RDS(on) at {_celsius(REFERENCE)}" if relative else "m\N{GREEK CAPITAL LETTER OMEGA}"
+    _draw_over_temperature(ax, model, drawn, "upper left")
+    return _finish(ax, "On-resistance", "Tj / \N{DEGREE SIGN}C", f"RDS(on) / {unit}")
+
+
+def plot_threshold(model: FittedModel, ax: Axes | None = None) -> Axes:
+    """VGS(th) over the junction temperature, every curve that was digitized.
+
+    Parameters
+    ----------
+    model : FittedModel
+        The model.
+    ax : Axes, optional
+        Where to draw; new ones by default.
+
+    Returns
+    -------
+    Axes
+        Tj [degC], VGS(th) [V]; empty where none was digitized.
+    """
+    ax = _axes(ax)
+    curves = [c for c in model.part.curves_of(Quantity.VGS_TH_TEMPERATURE) if _points(model, c.name)]
+    transistor = model.transistor()
+    drawn = []
+    for curve in curves:
+        i_d = curve.i_d or 0.0
+        t_j = np.linspace(curve.x[0], curve.x[-1], 60)
+        fitted = np.asarray(threshold_voltage(i_d, transistor.at(t_j).channel))
+        drawn.append((curve, t_j, fitted, 1.0, _signed(engineering(model.sign * i_d, "A", 3))))
+    _draw_over_temperature(ax, model, drawn, "lower left")
+    return _finish(ax, "Threshold", "Tj / \N{DEGREE SIGN}C", f"{_minus(model)}VGS(th) / V")
+
+
+def _draw_over_temperature(
+    ax: Axes,
+    model: FittedModel,
+    drawn: Sequence[tuple[Curve, Array, Array, float, str]],
+    corner: Literal["upper left", "lower left"],
+) -> None:
+    """Curves with their fit over the junction temperature, what scales their points, and their condition."""
+    for k, (curve, t_j, fitted, scale, condition) in enumerate(drawn):
+        colour = COLOURS[k % 7]
+        ax.plot(t_j, fitted, color=colour, linestyle=_STYLES[k % 7], linewidth=1.1, label=condition)
+        _draw_points(ax, _points(model, curve.name), colour, _MARKERS[k % 7], y=scale)
+    if len(drawn) == 1:
+        y, va = (0.94, "top") if corner == "upper left" else (0.06, "bottom")
+        ax.text(0.06, y, drawn[0][-1], transform=ax.transAxes, va=va)
+    elif drawn:
+        ax.legend(loc=corner, frameon=False)
 
 
 def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:
@@ -333,26 +436,15 @@ def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:
     ax = _axes(ax)
     names = list(dict.fromkeys(point.curve for point in model.points))
     edge = 6.0
-    for k, name in enumerate(names):
-        points = _points(model, name)
-        residuals = np.array([p.residual for p in points])
-        x = k + (np.arange(len(points)) + 0.5) / len(points) * 0.86 + 0.07
-        inside = np.abs(residuals) <= edge
-        colour = COLOURS[k % 3]
-        ax.plot(x[inside], residuals[inside], linestyle="none", marker=".", markersize=3.0, color=colour)
-        far = ~inside
-        for sign, marker in ((1.0, "^"), (-1.0, "v")):
-            chosen = far & (np.sign(residuals) == sign)
-            ax.plot(
-                x[chosen],
-                np.full(int(chosen.sum()), sign * edge),
-                linestyle="none",
-                marker=marker,
-                markersize=3.5,
-                color=colour,
-            )
-        if k:
-            ax.axvline(k, color="0.85", linewidth=0.5)
+    residuals, x, number = _residuals(model, names)
+    shown = np.clip(residuals, -edge, edge)
+    for far, marker, size in ((0.0, ".", 3.0), (1.0, "^", 3.5), (-1.0, "v", 3.5)):
+        kind = np.where(np.abs(residuals) > edge, np.sign(residuals), 0.0) == far
+        for k, colour in enumerate(COLOURS[:3]):
+            chosen = kind & (number % 3 == k)
+            if np.any(chosen):
+                ax.plot(x[chosen], shown[chosen], linestyle="none", marker=marker, markersize=size, color=colour)
+    ax.vlines(np.arange(1, len(names)), -2.0 * edge, 2.0 * edge, color="0.85", linewidth=0.5)
     for level, style in ((0.0, "-"), (2.0, ":"), (-2.0, ":")):
         ax.axhline(level, color="0.5", linewidth=0.6, linestyle=style)
     ax.set_xlim(0.0, max(len(names), 1))
@@ -360,6 +452,17 @@ def plot_residuals(model: FittedModel, ax: Axes | None = None) -> Axes:
     labels = [name if len(name) <= _LONGEST_LABEL else f"{name[: _LONGEST_LABEL - 2]} ..." for name in names]
     ax.set_xticks([k + 0.5 for k in range(len(names))], labels, rotation=35, ha="right", rotation_mode="anchor")
     ax.tick_params(axis="x", length=0)
-    ax.set_title("Residuals", loc="left")
+    ax.set_title("Residuals", loc="left", y=1.0)
     ax.set_ylabel("std. deviations")
     return ax
+
+
+def _residuals(model: FittedModel, names: Sequence[str]) -> tuple[Array, Array, NDArray[np.int_]]:
+    """Of every digitized point: residual, place along x, number of its curve, which takes 1 of the x axis."""
+    residuals, x, number = [], [], []
+    for k, name in enumerate(names):
+        points = _points(model, name)
+        residuals += [point.residual for point in points]
+        x += [k + 0.07 + 0.86 * (j + 0.5) / len(points) for j in range(len(points))]
+        number += [k] * len(points)
+    return np.array(residuals), np.array(x), np.array(number, dtype=int)

@@ -4,13 +4,17 @@ from __future__ import annotations
 
 import io
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from functools import cache, partial
 
 import matplotlib as mpl
 import matplotlib.lines
 from matplotlib import font_manager
+from matplotlib.artist import Artist
+from matplotlib.axes import Axes
+from matplotlib.backend_bases import RendererBase
 from matplotlib.figure import Figure
-from matplotlib.gridspec import GridSpec
+from matplotlib.font_manager import FontProperties
 
 from fitter import plots
 from fitter.model import FittedModel
@@ -25,8 +29,14 @@ __all__ = ["CAUTIONS", "draw_sheet", "sheet_files"]
 _PAGE = (8.27, 11.69)
 _DPI = 170
 _LEFT, _RIGHT = 0.07, 0.965
+#: Where the table of parameters ends, and the comparison begins.
+_PARAMETERS_END, _CHECKS = 0.355, 0.368
+#: Between two plots, for the right one's scale.
+_GAP = 0.064
 #: Height of a table line, as a share of the page.
 _LINE = 0.0103
+#: Size of the tables' and notices' texts [pt].
+_TABLE_SIZE = 5.7
 
 CAUTIONS = (
     "Typical values are no limits. No safe operating area, avalanche, short circuit or self-heating. Such circuits "
@@ -37,12 +47,56 @@ CAUTIONS = (
 _SETTINGS = {
     "font.family": "DejaVu Sans", "font.size": 6.5, "axes.titlesize": 7.5, "axes.titleweight": "bold",
     "axes.labelsize": 6.5, "xtick.labelsize": 6.0, "ytick.labelsize": 6.0, "legend.fontsize": 6.0,
-    "legend.title_fontsize": 6.0, "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
+    "legend.title_fontsize": 6.0, "legend.handlelength": 1.7, "legend.labelspacing": 0.3, "legend.borderaxespad": 0.3,
+    "axes.linewidth": 0.6, "xtick.major.width": 0.5, "ytick.major.width": 0.5,
     "xtick.minor.width": 0.3, "ytick.minor.width": 0.3, "lines.solid_capstyle": "round", "pdf.fonttype": 3,
-    "svg.hashsalt": "fetwright", "text.usetex": False, "mathtext.fontset": "dejavusans",
+    "svg.hashsalt": "fetwright", "text.usetex": False, "text.hinting": "no_hinting", "mathtext.fontset": "dejavusans",
 }  # fmt: skip
 
 _VERDICT_COLOUR = {"agrees": plots.COLOURS[2], "differs": plots.COLOURS[1], "outside limit": "#B00000"}
+
+#: Plots of what not every part gives.
+_WHERE_GIVEN: dict[Quantity, Callable[[FittedModel, Axes], Axes]] = {
+    Quantity.OUTPUT: plots.plot_output,
+    Quantity.BODY_DIODE: plots.plot_body_diode,
+    Quantity.RDS_ON_TEMPERATURE: plots.plot_on_resistance,
+    Quantity.VGS_TH_TEMPERATURE: plots.plot_threshold,
+}
+#: Up to so many plots, two stand in the first row; else three.
+_FEW = 5
+
+
+class _Texts(Artist):
+    """Many short texts on the page.
+
+    A Text of its own for each would take twice as long, most of it for what short texts in a table do not need:
+    lines, boxes, angles, formulas.
+    """
+
+    def __init__(self) -> None:
+        super().__init__()
+        self._texts: list[tuple[float, float, str, str, str, FontProperties]] = []
+        self._fonts = {weight: FontProperties(size=_TABLE_SIZE, weight=weight) for weight in ("normal", "bold")}
+
+    def add(
+        self, x: float, y: float, text: str, align: str = "left", colour: str = "black", weight: str = "normal"
+    ) -> None:
+        """One more text: its left or right end on the baseline, as shares of the page."""
+        self._texts.append((x, y, text, align, colour, self._fonts[weight]))
+
+    def get_text(self) -> str:
+        """All texts, line by line."""
+        return "\n".join(text for _, _, text, *_ in self._texts)
+
+    def draw(self, renderer: RendererBase) -> None:
+        width, height = renderer.get_canvas_width_height()
+        pen = renderer.new_gc()
+        for x, y, text, align, colour, font in self._texts:
+            pen.set_foreground(colour)
+            length = renderer.get_text_width_height_descent(text, font, False)[0] if align == "right" else 0.0
+            down = (1.0 - y if renderer.flipy() else y) * height
+            renderer.draw_text(pen, x * width - length, down, text, font, 0.0)
+        pen.restore()
 
 
 def sheet_files(model: FittedModel) -> dict[str, bytes]:
@@ -63,7 +117,7 @@ def sheet_files(model: FittedModel) -> dict[str, bytes]:
         mpl.rcParams.update(_SETTINGS)  # type: ignore[arg-type]
         figure = draw_sheet(model)
         png, pdf = io.BytesIO(), io.BytesIO()
-        figure.savefig(png, format="png", metadata={"Software": None})
+        figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 3})
         figure.savefig(pdf, format="pdf", metadata={"CreationDate": None, "Creator": None, "Producer": None})
     return {"sheet.png": png.getvalue(), "sheet.pdf": pdf.getvalue()}
 
@@ -83,39 +137,34 @@ def draw_sheet(model: FittedModel) -> Figure:
     """
     figure = Figure(figsize=_PAGE, dpi=_DPI)
     _draw_head(figure, model)
-    rows = [1.25, 1.0]
-    upper = GridSpec(
-        2,
-        12,
-        figure=figure,
-        left=_LEFT,
-        right=_RIGHT,
-        top=0.918,
-        bottom=0.545,
-        height_ratios=rows,
-        hspace=0.36,
-        wspace=3.6,
-    )
-    plots.plot_capacitances(model, figure.add_subplot(upper[0, 0:6]))
-    plots.plot_gate_charge(model, figure.add_subplot(upper[0, 6:12]))
-    plots.plot_transfer(model, figure.add_subplot(upper[1, 0:4]))
-    plots.plot_transfer(model, figure.add_subplot(upper[1, 4:8]), scale="log")
-    drawn = {curve.quantity for curve in model.part.curves if any(p.curve == curve.name for p in model.points)}
-    third = figure.add_subplot(upper[1, 8:12])
-    if Quantity.OUTPUT in drawn or Quantity.BODY_DIODE not in drawn:
-        plots.plot_output(model, third)
-        if Quantity.OUTPUT not in drawn:
-            third.text(0.5, 0.5, "no output curve given", transform=third.transAxes, ha="center", color="0.5")
-    else:
-        plots.plot_body_diode(model, third)
-    lower = GridSpec(1, 1, figure=figure, left=_LEFT, right=_RIGHT, top=0.496, bottom=0.438)
-    plots.plot_residuals(model, figure.add_subplot(lower[0, 0]))
-    top = 0.375
-    _draw_parameters(figure, model, top)
-    right_end = _draw_checks(figure, model, top)
-    _draw_notices(figure, model, right_end - 0.014, 0.062)
+    _draw_plots(figure, model)
+    top = 0.405
+    texts = _Texts()
+    _draw_parameters(figure, texts, model, top)
+    right_end = _draw_checks(figure, texts, model, top)
+    _draw_notices(figure, texts, model, right_end - 0.014, 0.062)
+    figure.add_artist(texts)
     _draw_cautions(figure)
     return figure
+
+
+def _draw_plots(figure: Figure, model: FittedModel) -> None:
+    """Two rows of plots of what the part gives, and the residuals across the page."""
+    digitized = {p.curve for p in model.points}
+    given = {c.quantity for c in model.part.curves if c.name in digitized}
+    wanted: list[Callable[[FittedModel, Axes], Axes]] = [plots.plot_capacitances, plots.plot_gate_charge]
+    wanted += [plots.plot_transfer, partial(plots.plot_transfer, scale="log")]
+    wanted += [plot for quantity, plot in _WHERE_GIVEN.items() if quantity in given]
+    first = 3 if len(wanted) > _FEW else 2
+    for row, (top, bottom) in ((wanted[:first], (0.918, 0.745)), (wanted[first:], (0.690, 0.572))):
+        shares = [1.5 if plot is plots.plot_output else 1.0 for plot in row]  # its legend stands beside the curves
+        unit = (_RIGHT - _LEFT - _GAP * (len(row) - 1)) / sum(shares)
+        left = _LEFT
+        for plot, share in zip(row, shares, strict=True):
+            ax = plot(model, figure.add_axes((left, bottom, unit * share, top - bottom)))
+            ax.xaxis.set_label_coords(0.5, -0.020 / (top - bottom))  # being told saves measuring the scale's labels
+            left += unit * share + _GAP
+    plots.plot_residuals(model, figure.add_axes((_LEFT, 0.466, _RIGHT - _LEFT, 0.054)))
 
 
 def _draw_head(figure: Figure, model: FittedModel) -> None:
@@ -130,19 +179,24 @@ def _draw_head(figure: Figure, model: FittedModel) -> None:
         else "gate charge not fitted: Cacc and Cch assumed, QG is a check"
     )
     figure.text(_RIGHT, 0.967, f"fetwright {model.version}: {how}", fontsize=7, ha="right", va="baseline", color="0.3")
-    figure.text(_LEFT, 0.950, _shortened(part.notes, 150), fontsize=7, va="baseline", color="0.3")
+    notes = _shortened(part.notes, 150).replace("$", r"\$")  # which would begin a formula
+    figure.text(_LEFT, 0.950, notes, fontsize=7, va="baseline", color="0.3")
     figure.add_artist(mpl.lines.Line2D([_LEFT, _RIGHT], [0.942, 0.942], color="black", linewidth=0.8))
 
 
+@cache
+def _known_characters() -> frozenset[int]:
+    return frozenset(font_manager.get_font(font_manager.findfont("DejaVu Sans")).get_charmap())
+
+
 def _shortened(text: str, most: int) -> str:
-    # What the font lacks would make the plot warn; a dollar sign would begin a formula.
-    known = font_manager.get_font(font_manager.findfont("DejaVu Sans")).get_charmap()
-    plain = "".join(c if ord(c) in known else "?" for c in " ".join(text.split())).replace("$", r"\$")
+    # What the font lacks would make the plot warn.
+    plain = "".join(c if ord(c) in _known_characters() else "?" for c in " ".join(text.split()))
     return plain if len(plain) <= most else plain[: most - 1].rstrip() + "\N{HORIZONTAL ELLIPSIS}"
 
 
 def _row(
-    figure: Figure,
+    texts: _Texts,
     y: float,
     cells: Sequence[str],
     places: Sequence[tuple[float, str]],
@@ -152,21 +206,20 @@ def _row(
     """One line of a table: texts at their places, left or right aligned."""
     for k, (cell, (x, align)) in enumerate(zip(cells, places, strict=True)):
         if cell:
-            colour = colours[k] if colours else "black"
-            figure.text(x, y, cell, ha=align, va="baseline", fontsize=5.7, color=colour, fontweight=weight)
+            texts.add(x, y, cell, align, colours[k] if colours else "black", weight)
 
 
 def _rule(figure: Figure, y: float, left: float, right: float) -> None:
     figure.add_artist(mpl.lines.Line2D([left, right], [y, y], color="0.6", linewidth=0.5))
 
 
-_PARAMETER_PLACES = ((_LEFT, "left"), (0.215, "right"), (0.285, "right"), (0.298, "left"))
+_PARAMETER_PLACES = ((_LEFT, "left"), (0.205, "right"), (0.270, "right"), (0.281, "left"))
 
 
-def _draw_parameters(figure: Figure, model: FittedModel, top: float) -> None:
+def _draw_parameters(figure: Figure, texts: _Texts, model: FittedModel, top: float) -> None:
     """The parameter table, its lines as far apart as there is room for."""
-    _row(figure, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, weight="bold")
-    _rule(figure, top - 0.004, _LEFT, 0.372)
+    _row(texts, top, ("Parameter", "value", "std. error", "origin"), _PARAMETER_PLACES, weight="bold")
+    _rule(figure, top - 0.004, _LEFT, _PARAMETERS_END)
     step = min(_LINE, (top - 0.012 - 0.056) / max(len(model.parameters), 1))
     y = top - 0.0035
     for p in model.parameters.values():
@@ -174,7 +227,7 @@ def _draw_parameters(figure: Figure, model: FittedModel, top: float) -> None:
         error = "" if p.stderr is None else engineering(p.stderr, _pretty_unit(p), 2)
         colour = "black" if p.origin == "fitted" else "0.4"
         cells = (p.name, engineering(p.value, _pretty_unit(p), 4), error, p.origin)
-        _row(figure, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _PARAMETER_PLACES, [colour] * 4)
+        _row(texts, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _PARAMETER_PLACES, [colour] * 4)
 
 
 def _pretty_unit(p: Parameter) -> str:
@@ -182,16 +235,16 @@ def _pretty_unit(p: Parameter) -> str:
 
 
 _CHECK_PLACES = (
-    (0.385, "left"), (0.436, "left"), (0.690, "right"), (0.734, "right"), (0.828, "right"), (0.873, "right"),
+    (_CHECKS, "left"), (0.419, "left"), (0.672, "right"), (0.720, "right"), (0.825, "right"), (0.873, "right"),
     (0.880, "left"), (_RIGHT, "right"),
 )  # fmt: skip
 
 
-def _draw_checks(figure: Figure, model: FittedModel, top: float) -> float:
+def _draw_checks(figure: Figure, texts: _Texts, model: FittedModel, top: float) -> float:
     """The comparison; returns where it ends."""
     heads = ("Stated", "condition", "typ (limits)", "fitted", "95 % interval", "off", "", "verdict")
-    _row(figure, top, heads, _CHECK_PLACES, weight="bold")
-    _rule(figure, top - 0.004, 0.385, _RIGHT)
+    _row(texts, top, heads, _CHECK_PLACES, weight="bold")
+    _rule(figure, top - 0.004, _CHECKS, _RIGHT)
     y = top - 0.0035
     for s in shown_checks(model):
         y -= _LINE
@@ -203,10 +256,10 @@ def _draw_checks(figure: Figure, model: FittedModel, top: float) -> float:
             s.check.verdict,
         )  # fmt: skip
         colours = ["black"] * 7 + [_VERDICT_COLOUR.get(s.check.verdict, "0.4")]
-        _row(figure, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _CHECK_PLACES, colours)
+        _row(texts, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _CHECK_PLACES, colours)
     if not model.checks:
         y -= _LINE
-        _row(figure, y, ("no table values are stated", *[""] * 7), _CHECK_PLACES)
+        _row(texts, y, ("no table values are stated", *[""] * 7), _CHECK_PLACES)
     return y
 
 
@@ -222,24 +275,24 @@ def _stated(s: Shown) -> str:
     return f"{typ}{inside} {s.unit}".strip()
 
 
-def _draw_notices(figure: Figure, model: FittedModel, top: float, bottom: float) -> None:
+def _draw_notices(figure: Figure, texts: _Texts, model: FittedModel, top: float, bottom: float) -> None:
     """As many notices as there is room for; the command shows them all."""
-    _row(figure, top, ("Notices",), ((0.385, "left"),), weight="bold")
-    _rule(figure, top - 0.004, 0.385, _RIGHT)
+    _row(texts, top, ("Notices",), ((_CHECKS, "left"),), weight="bold")
+    _rule(figure, top - 0.004, _CHECKS, _RIGHT)
     y, shown = top - 0.0035, 0
     for notice in model.notices:
-        lines = textwrap.wrap(_shortened(notice.text, 240), 112)
+        lines = textwrap.wrap(_shortened(notice.text, 240), 115)
         if y - _LINE * 0.9 * (len(lines) + 1) < bottom:
             break
         for k, line in enumerate(lines):
             y -= _LINE * 0.9
             text = ("\N{EN DASH} " if k == 0 else "   ") + line
-            figure.text(0.385, y, text, fontsize=5.6, va="baseline", color="0.2")
+            texts.add(_CHECKS, y, text, colour="0.2")
         shown += 1
     left = len(model.notices) - shown
     if left or not model.notices:
         text = f"and {left} more, in model.json" if left else "none"
-        figure.text(0.385, y - _LINE * 0.9, text, fontsize=5.6, va="baseline", color="0.4")
+        texts.add(_CHECKS, y - _LINE * 0.9, text, colour="0.4")
 
 
 def _draw_cautions(figure: Figure) -> None:

@@ -15,13 +15,19 @@ import numpy as np
 import pandas as pd
 import pytest
 from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 
 import fitter
+from fitter.models.channel import on_resistance, threshold_voltage
+from fitter.part import Quantity
 from fitter.sheet import draw_sheet, sheet_files
 
 ROOT = Path(__file__).resolve().parents[1]
-PLOTS = ("plot_body_diode", "plot_capacitances", "plot_gate_charge", "plot_output", "plot_residuals", "plot_transfer")
+PLOTS = (
+    *("plot_body_diode", "plot_capacitances", "plot_gate_charge", "plot_on_resistance", "plot_output"),
+    *("plot_residuals", "plot_threshold", "plot_transfer"),
+)
 ERRORS = ("FitError", "ModelFileError", "OperatingPointError", "OutputError", "PartFolderError")
 
 
@@ -312,9 +318,9 @@ def test_the_transfer_plot_is_linear_unless_told(model):
 
 def test_the_transfer_plot_has_a_line_for_each_temperature(model):
     assert sorted(labels_of(fitter.plot_transfer(model))) == [
-        "-40 \N{DEGREE SIGN}C",
         "150 \N{DEGREE SIGN}C",
         "25 \N{DEGREE SIGN}C",
+        "\N{MINUS SIGN}40 \N{DEGREE SIGN}C",
     ]
 
 
@@ -332,8 +338,89 @@ def test_a_gate_charge_that_cannot_be_reached_is_said_in_the_plot(model):
     assert any("does not carry" in text.get_text() for text in ax.texts)
 
 
-def test_the_body_diode_plot_of_a_model_without_one_is_empty(loaded):
-    assert not fitter.plot_body_diode(loaded).lines
+@pytest.mark.parametrize("name", ["plot_body_diode", "plot_on_resistance", "plot_output", "plot_threshold"])
+def test_a_plot_of_what_was_not_digitized_is_empty(loaded, name):
+    assert not getattr(fitter, name)(loaded).lines
+
+
+def curve_of(model, quantity):
+    (curve,) = model.part.curves_of(quantity)
+    return curve
+
+
+def test_a_normalised_on_resistance_is_drawn_over_its_value_at_25_degrees(model):
+    curve = curve_of(model, Quantity.RDS_ON_TEMPERATURE)
+    assert curve.y_unit == ""
+    ax = fitter.plot_on_resistance(model)
+    assert ax.get_ylabel() == "RDS(on) / RDS(on) at 25 \N{DEGREE SIGN}C"
+    line, points = ax.lines
+    assert np.interp(25.0, *line.get_data()) == pytest.approx(1.0, abs=1e-3)
+    np.testing.assert_array_equal(points.get_data(), [curve.x, curve.y])
+
+
+def test_an_on_resistance_in_ohms_is_drawn_in_milliohms(fitted):
+    model = fitted("ferry_charger_1200v")
+    curve = curve_of(model, Quantity.RDS_ON_TEMPERATURE)
+    assert curve.y_unit == "ohm"
+    ax = fitter.plot_on_resistance(model)
+    assert ax.get_ylabel() == "RDS(on) / m\N{GREEK CAPITAL LETTER OMEGA}"
+    line, points = ax.lines
+    t_j, drawn = line.get_data()
+    hot = model.transistor(t_j[-1]).channel
+    assert drawn[-1] == pytest.approx(1e3 * float(on_resistance(curve.i_d, curve.v_gs, hot)))
+    np.testing.assert_array_equal(points.get_data(), [curve.x, 1e3 * curve.y])
+
+
+def with_two_curves(model, quantity, **changed):
+    """The model with a second curve of that quantity, a copy of its own but for what is changed."""
+    curve = curve_of(model, quantity)
+    part = replace(model.part, curves=(*model.part.curves, replace(curve, name="second", **changed)))
+    points = tuple(replace(p, curve="second") for p in model.points if p.curve == curve.name)
+    return replace(model, part=part, points=model.points + points)
+
+
+def test_a_normalised_on_resistance_beside_one_in_ohms_is_drawn_in_milliohms(fitted):
+    model = with_two_curves(fitted("ferry_charger_1200v"), Quantity.RDS_ON_TEMPERATURE, y_unit="")
+    ax = fitter.plot_on_resistance(model)
+    assert ax.get_ylabel() == "RDS(on) / m\N{GREEK CAPITAL LETTER OMEGA}"
+    ohms, _, normalised, points = (line.get_ydata() for line in ax.lines)
+    np.testing.assert_array_equal(normalised, ohms)
+    curve = model.part.curves[-1]
+    cold = float(on_resistance(curve.i_d, curve.v_gs, model.transistor().channel))
+    np.testing.assert_allclose(points, 1e3 * cold * curve.y)
+
+
+def test_the_threshold_is_drawn_at_its_current(model):
+    curve = curve_of(model, Quantity.VGS_TH_TEMPERATURE)
+    ax = fitter.plot_threshold(model)
+    line, points = ax.lines
+    t_j, drawn = line.get_data()
+    assert drawn[0] == pytest.approx(float(threshold_voltage(curve.i_d, model.transistor(t_j[0]).channel)))
+    np.testing.assert_array_equal(points.get_data(), [curve.x, curve.y])
+
+
+def test_plots_over_the_temperature_name_the_condition(model, p_channel):
+    assert [text.get_text() for text in fitter.plot_on_resistance(model).texts] == ["10 V, 50 A"]
+    assert [text.get_text() for text in fitter.plot_threshold(p_channel).texts] == ["\N{MINUS SIGN}250 uA"]
+    ax = fitter.plot_threshold(with_two_curves(model, Quantity.VGS_TH_TEMPERATURE, i_d=1e-3))
+    assert [text.get_text() for text in ax.get_legend().get_texts()] == ["250 uA", "1 mA"]
+
+
+def test_output_curves_at_another_temperature_alone_are_drawn_there(model):
+    hot = tuple(replace(c, t_j=150.0) if c.quantity is Quantity.OUTPUT else c for c in model.part.curves)
+    ax = fitter.plot_output(replace(model, part=replace(model.part, curves=hot)))
+    assert ax.get_title(loc="left") == "Output, 150 \N{DEGREE SIGN}C"
+    v_ds, i_d = ax.lines[0].get_data()
+    np.testing.assert_allclose(i_d, model.drain_current(10.0, v_ds, t_j=150.0))
+
+
+def test_a_log_axis_of_few_decades_labels_2_and_5_too(model, p_channel):
+    def labels(model):
+        ax = fitter.plot_capacitances(model)
+        return [ax.yaxis.get_minor_formatter()(y, None) for y in (200.0, 500.0)]
+
+    assert labels(model) == ["", ""]
+    assert labels(p_channel) == ["200", "500"]
 
 
 def test_plots_show_magnitudes_with_a_minus_sign_for_a_p_channel_part(p_channel):
@@ -341,6 +428,9 @@ def test_plots_show_magnitudes_with_a_minus_sign_for_a_p_channel_part(p_channel)
         ax = getattr(fitter, name)(p_channel)
         assert ax.get_xlabel().startswith("\N{MINUS SIGN}V")
         assert min(ax.get_xlim()) > -1.0
+    ax = fitter.plot_threshold(p_channel)
+    assert ax.get_ylabel().startswith("\N{MINUS SIGN}V")
+    assert min(ax.get_ylim()) > 0.0
 
 
 # Sheet
@@ -387,7 +477,7 @@ def test_drawing_the_sheet_leaves_the_users_settings(fitted):
 
 
 def texts_of(figure):
-    return " ".join(text.get_text() for text in figure.texts)
+    return " ".join(artist.get_text() for artist in figure.get_children() if hasattr(artist, "get_text"))
 
 
 def test_the_sheet_names_part_parameters_checks_and_cautions(model):
@@ -400,11 +490,58 @@ def test_the_sheet_names_part_parameters_checks_and_cautions(model):
         assert check.quantity in shown
 
 
-def test_the_sheet_has_its_six_plots(model):
-    titles = [ax.get_title(loc="left") for ax in draw_sheet(model).axes]
-    assert len(titles) == 6
-    for word in ("Capacitances", "Gate charge", "Transfer", "Output", "Residuals"):
-        assert any(title.startswith(word) for title in titles)
+def titles_of(figure):
+    """Titles of the plots, the words before any condition, row by row."""
+    rows = {}
+    for ax in figure.axes:
+        title = ax.get_title(loc="left").partition(" at ")[0].partition(",")[0]
+        rows.setdefault(ax.get_position().y0, []).append(title)
+    return list(rows.values())
+
+
+def test_the_sheet_of_a_part_that_gives_everything_shows_everything(model):
+    assert titles_of(draw_sheet(model)) == [
+        ["Capacitances", "Gate charge", "Transfer"],
+        ["Transfer", "Output", "Body diode", "On-resistance", "Threshold"],
+        ["Residuals"],
+    ]
+
+
+@pytest.mark.parametrize(
+    "left_out,second_row",
+    [
+        ((), ["Transfer", "Output", "Body diode", "On-resistance", "Threshold"]),
+        ((Quantity.BODY_DIODE, Quantity.OUTPUT), ["Transfer", "On-resistance", "Threshold"]),
+        ((Quantity.BODY_DIODE, Quantity.OUTPUT, Quantity.RDS_ON_TEMPERATURE), ["Transfer", "Transfer", "Threshold"]),
+        (
+            (Quantity.BODY_DIODE, Quantity.OUTPUT, Quantity.RDS_ON_TEMPERATURE, Quantity.VGS_TH_TEMPERATURE),
+            ["Transfer", "Transfer"],
+        ),
+    ],
+)
+def test_the_sheet_shows_only_what_the_part_gives(model, left_out, second_row):
+    curves = tuple(c for c in model.part.curves if c.quantity not in left_out)
+    assert titles_of(draw_sheet(replace(model, part=replace(model.part, curves=curves))))[1] == second_row
+
+
+@pytest.mark.parametrize("demo", ["cargo_80v", "camper_van_p40v", "ferry_charger_1200v", "wall_box_650v"])
+def test_no_text_of_a_table_runs_into_the_next_or_off_the_page(fitted, monkeypatch, demo):
+    figure = draw_sheet(fitted(demo))
+    renderer = FigureCanvasAgg(figure).get_renderer()
+    lines = {}
+
+    def note(pen, x, y, text, font, angle):
+        width, *_ = renderer.get_text_width_height_descent(text, font, False)
+        lines.setdefault(y, []).append((x, x + width))
+
+    monkeypatch.setattr(renderer, "draw_text", note)
+    (texts,) = [artist for artist in figure.artists if hasattr(artist, "get_text")]
+    texts.draw(renderer)
+    assert len(lines) > 30
+    for stretches in lines.values():
+        ends = [0.0, *(end for _, end in sorted(stretches))]
+        starts = [*(start for start, _ in sorted(stretches)), 0.97 * renderer.width]
+        assert min(start - end for end, start in zip(ends, starts, strict=True)) > 3.0
 
 
 def test_the_sheet_of_a_loaded_model_can_be_drawn(loaded):
