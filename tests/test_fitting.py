@@ -38,16 +38,16 @@ CAPACITANCES = (Quantity.CISS, Quantity.COSS, Quantity.CRSS)
 POINT = OperatingPoint(v_dd=40.0, i_d=30.0, v_gs=10.0)
 
 PLAIN = {
-    "c_gs": 2e-9, "c_ch": 5e-10, "c_acc": 8e-10,
+    "c_gs": 2e-9, "s_gs": 0.1, "c_ch": 5e-10, "c_acc": 8e-10,
     "c0_gd": 8e-10, "phi_gd": 0.8, "m_gd": 0.5, "cf_gd": 1e-11,
     "c0_ds": 3e-9, "phi_ds": 0.7, "m_ds": 0.45, "cf_ds": 5e-11,
-    "v_th": 3.0, "k": 40.0, "w": 0.15, "lambda": 0.01, "r_s": 1e-3, "r_d": 2e-3,
+    "v_th": 3.0, "k": 40.0, "w": 0.15, "alpha": 1.6, "lambda": 0.002, "r_s": 1e-3, "r_d": 2e-3,
 }  # fmt: skip
 SHIELDED = {
     **PLAIN, "s1_gd": 0.8, "vs1_gd": 15.0, "ws1_gd": 0.15, "s1_ds": 0.9, "vs1_ds": 20.0, "ws1_ds": 0.2,
 }  # fmt: skip
 TRUTHS = {"plain": PLAIN, "shielded": SHIELDED}
-CHANNEL = ("v_th", "k", "w", "lambda", "r_s", "r_d")
+CHANNEL = ("v_th", "k", "w", "alpha", "lambda", "r_s", "r_d")
 
 
 def linear(start, end):

@@ -72,18 +72,17 @@ class GateAssumption:
 
     def __call__(self, values: Values) -> Values:
         """The values with c_acc and c_ch added; the ratios are at their typical values where absent."""
-        values = {"s_gs": BODY_SHARE, **values}
         bare = Transistor.from_values({**values, "c_ch": 0.0, "c_acc": 1e-12})
         c_acc = np.asarray(values.get(ACCUMULATION_RATIO.name, 1.0)) * bare.c_gd(self.v_low)
         on_state = np.asarray(values.get(ON_STATE_RATIO.name, _RATIO)) * bare.c_iss(self.v_dd)
-        c_ch = on_state - values["c_gs"] * (1.0 - np.asarray(values["s_gs"])) - c_acc
+        c_ch = on_state - values["c_gs"] * (1.0 - np.asarray(bare.s_gs)) - c_acc
         # Towards 0 along a hyperbola: a sharp end there would leave the ratio's spread out of every interval.
         bend = _BEND * bare.c_iss(self.v_dd)
         return {**values, "c_acc": c_acc, "c_ch": 0.5 * (c_ch + np.sqrt(c_ch * c_ch + bend * bend))}
 
     def start(self, values: Values) -> dict[str, Value]:
         """Start values for a fit of Cacc and Cch: as assumed, Cch off its bound of 0."""
-        every = dict(self(values))
+        every = dict(self({**values, "s_gs": BODY_SHARE}))
         every["c_ch"] = max(scalar(every["c_ch"]), 0.1 * scalar(every["c_gs"]))
         return every
 

@@ -75,8 +75,8 @@ def _end(slope: Array, estimate: Estimate, sign: float) -> Array:
         along = moved * (sign * np.sqrt(max(left, 0.0) / size)) if size > 0.0 else 0.0
         step = np.where(held, step, mean + along)
         beyond = np.where(held, 0.0, np.maximum(room[0] - step, step - room[1]) / np.sqrt(np.diag(covariance) + 1e-300))
-        worst = int(np.argmax(beyond))
-        if beyond[worst] <= 1e-9:
+        worst = int(np.argmax(beyond)) if beyond.size else 0
+        if not beyond.size or beyond[worst] <= 1e-9:
             return np.clip(estimate.coordinates + step, lower, upper)
         held[worst] = True
         step[worst] = np.clip(step[worst], *room[:, worst])
