@@ -5,10 +5,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
+from fitter.fitting.blocks import ScalarBlock
 from fitter.fitting.solve import Solution
 
 __all__ = ["BlockStatistics", "block_statistics", "widening"]
+
+
+Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -40,14 +45,44 @@ class BlockStatistics:
     misfit: float
 
 
+#: No misfit runs longer than this correlation from point to point says.
+_LONGEST_RUN = 0.9
+
+
+def _run_length(excess: float, products: Array) -> float:
+    """How many points of a misfit say as much as one, from residuals' products with their neighbours.
+
+    Clicks scatter from point to point, but where a form does not fit, residuals come in runs: with a correlation of rho
+    from point to point, (1 + rho)/(1 - rho) of them count as one (an autoregressive process of first order).
+
+    Parameters
+    ----------
+    excess : float
+        Mean square of the misfit, in reading errors: what chi-squared has above its freedom.
+    products : ndarray
+        Products of neighbouring residuals, in reading errors.
+    """
+    if excess <= 0.0 or not products.size:
+        return 1.0
+    # Without any misfit the mean product is off zero by this much, and must not be taken for a run.
+    chance = 1.0 / np.sqrt(products.size)
+    rho = min(max(float(np.mean(products)) - chance, 0.0) / excess, _LONGEST_RUN)
+    return (1.0 + rho) / (1.0 - rho)
+
+
 def block_statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
     """Misfit of each block; curves of one group share a widening, or the worst would be weighed down ever more."""
     taken = solution.leverage()
     chi_square: dict[str, float] = {}
     freedom: dict[str, float] = {}
     together: dict[str, tuple[float, float]] = {}
+    products: dict[str, list[Array]] = {}
     for block in solution.blocks:
-        chi_square[block.name] = float(np.sum(solution.residuals[block.name][: block.points] ** 2)) * block.inflation**2
+        residuals = solution.residuals[block.name][: block.points] * block.inflation
+        chi_square[block.name] = float(np.sum(residuals**2))
+        if not isinstance(block, ScalarBlock):
+            used = residuals[block.used]
+            products.setdefault(block.group, []).append(used[1:] * used[:-1])
         freedom[block.name] = max(block.used_points - taken[block.name], 0.0)
         c, f = together.get(block.group, (0.0, 0.0))
         together[block.group] = c + chi_square[block.name], f + freedom[block.name]
@@ -55,7 +90,10 @@ def block_statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
     for block in solution.blocks:
         c, f = together[block.group]
         # A single table value says nothing of its own scatter.
-        inflation = float(np.sqrt(max(1.0, c / f))) if f >= 1.0 and block.group else 1.0
+        inflation = 1.0
+        if f >= 1.0 and block.group:
+            excess = max(c / f - 1.0, 0.0)
+            inflation = float(np.sqrt(1.0 + excess * _run_length(excess, np.concatenate(products[block.group]))))
         misfit = float(np.sqrt(c / max(f, 1.0)))
         inflation = block.inflation if block.held else inflation
         result.append(
