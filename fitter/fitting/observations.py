@@ -62,7 +62,7 @@ _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
 #: How far a current may be expected to rise by channel-length modulation up to the gate-charge test's VDD, 1-sigma: the
 #: drift zone takes what VDS rises by beyond a few volts (a judgement, no source). It matters where output curves bend
 #: otherwise than a square law does, and a straight rise over some volts would be drawn out to hundreds.
-_MODULATION_SPREAD = 0.15
+_MODULATION_SPREAD = 0.5
 
 _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
 _DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
