@@ -38,7 +38,8 @@ _TELLS = {
     "c0_ds": _LOW_COSS, "phi_ds": _LOW_COSS, "m_ds": _LOW_COSS, "cf_ds": "points of coss at higher VDS",
     "v_th": "transfer points at small currents", "k": "transfer points at higher currents",
     "w": "transfer points below threshold, on a log axis, or the stated VGS(th)",
-    "alpha": "output curves around the knee", "lambda": "an output curve in saturation", "r_s": _LOW_OUTPUT, "r_d": _LOW_OUTPUT,
+    "alpha": "output curves around the knee", "lambda": "an output curve in saturation",
+    "r_s": _LOW_OUTPUT, "r_d": _LOW_OUTPUT,
     "vth_tc": _HOT, "k_exponent": _HOT, "rd_exponent": "RDS(on) over Tj",
     "is_d": _FORWARD, "n_d": _FORWARD, "r_dio": _FORWARD, "eg_d": _HOT_FORWARD, "rdio_exponent": _HOT_FORWARD,
 }  # fmt: skip

@@ -57,8 +57,8 @@ def _end(slope: Array, estimate: Estimate, sign: float) -> Array:
     """Coordinates at one end of a figure's 95 % interval.
 
     Of all points inside the bounds that lie 1.96 standard deviations off, the one where the figure, to first order, is
-    the lowest or highest. Without bounds in the way that is a step along covariance times slope; a coordinate that would
-    go past its bound stays on it, and the others go on from where they are then to be expected.
+    the lowest or highest. Without bounds in the way that is a step along covariance times slope; a coordinate that
+    would go past its bound stays on it, and the others go on from where they are then to be expected.
     """
     lower, upper = estimate.space.bounds()
     room = np.stack([lower, upper]) - estimate.coordinates

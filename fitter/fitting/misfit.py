@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -49,7 +50,7 @@ class BlockStatistics:
 _LONGEST_RUN = 0.9
 
 
-def _run_length(excess: float, products: Array) -> float:
+def _run_length(mean_square: float, products: Array) -> float:
     """How many points of a misfit say as much as one, from residuals' products with their neighbours.
 
     Clicks scatter from point to point, but where a form does not fit, residuals come in runs: with a correlation of rho
@@ -57,16 +58,16 @@ def _run_length(excess: float, products: Array) -> float:
 
     Parameters
     ----------
-    excess : float
-        Mean square of the misfit, in reading errors: what chi-squared has above its freedom.
+    mean_square : float
+        Of the residuals, in reading errors: what is above 1 is misfit.
     products : ndarray
         Products of neighbouring residuals, in reading errors.
     """
-    if excess <= 0.0 or not products.size:
+    if mean_square <= 1.0 or not products.size:
         return 1.0
-    # Without any misfit the mean product is off zero by this much, and must not be taken for a run.
-    chance = 1.0 / np.sqrt(products.size)
-    rho = min(max(float(np.mean(products)) - chance, 0.0) / excess, _LONGEST_RUN)
+    # Residuals that know nothing of their neighbours have a mean product this far off zero: that is no run.
+    chance = mean_square / math.sqrt(products.size)
+    rho = min(max(float(np.mean(products)) - chance, 0.0) / (mean_square - 1.0), _LONGEST_RUN)
     return (1.0 + rho) / (1.0 - rho)
 
 
@@ -92,8 +93,8 @@ def block_statistics(solution: Solution) -> tuple[BlockStatistics, ...]:
         # A single table value says nothing of its own scatter.
         inflation = 1.0
         if f >= 1.0 and block.group:
-            excess = max(c / f - 1.0, 0.0)
-            inflation = float(np.sqrt(1.0 + excess * _run_length(excess, np.concatenate(products[block.group]))))
+            run = _run_length(c / f, np.concatenate(products[block.group]))
+            inflation = math.sqrt(1.0 + max(c / f - 1.0, 0.0) * run)
         misfit = float(np.sqrt(c / max(f, 1.0)))
         inflation = block.inflation if block.held else inflation
         result.append(

@@ -19,7 +19,7 @@ from fitter.models.channel import CHANNEL, on_resistance, threshold_voltage
 from fitter.models.diode import BODY_DIODE, forward_current, forward_voltage
 from fitter.models.temperature import REFERENCE, TEMPERATURE
 from fitter.models.transistor import GATE, Transistor
-from fitter.models.types import Numbers
+from fitter.models.types import Numbers, Value
 from fitter.part import Axis, Curve, Part, Quantity, Stated, StatedGateCharge
 
 __all__ = [
@@ -282,7 +282,7 @@ def _built_in(name: str) -> ScalarBlock:
     return _expected(name, math.log(_BUILT_IN), _BUILT_IN_SPREAD, lambda values: np.log(values[name]))
 
 
-def _expected(name: str, value: float, spread: float, function: Callable[[Values], Numbers]) -> ScalarBlock:
+def _expected(name: str, value: float, spread: float, function: Callable[[Values], Value]) -> ScalarBlock:
     """What is known of a parameter, or a function of it, before any point is seen."""
     return ScalarBlock(
         name=f"{name} (expected)", parameters=(name,), stated=value, sigma=spread,

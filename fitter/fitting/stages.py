@@ -20,7 +20,15 @@ from fitter.models.transistor import DEFINITIONS
 from fitter.models.types import scalar
 from fitter.part import Part, Quantity
 
-__all__ = ["UNSEEN_CHANNEL", "Stage", "fit_body_diode", "fit_channel", "fit_gate_charge", "fit_temperature", "recovery_transit_time"]
+__all__ = [
+    "UNSEEN_CHANNEL",
+    "Stage",
+    "fit_body_diode",
+    "fit_channel",
+    "fit_gate_charge",
+    "fit_temperature",
+    "recovery_transit_time",
+]
 
 #: How much farther from its points the transfer curve may come to lie for the sake of output curves.
 _WORSE = 1.25
