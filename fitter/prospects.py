@@ -46,8 +46,8 @@ _POINT = _AXIS = 0.003
 _MANY, _SOME, _DECADES = 35, 25, 3.0
 #: A curve that would narrow the intervals by less than this is not worth clicking a second time.
 _WORTH_A_SECOND_TIME = 0.02
-#: Parameters that are fixed where nothing given shows them and that one more curve may free, and how far off they may be
-#: taken to be: 1-sigma of their coordinates, 0.01 1/V, 1 mohm, a factor of 2.
+#: Parameters that are fixed where nothing given shows them and that one more curve may free, and how far off they may
+#: be taken to be: 1-sigma of their coordinates, 0.01 1/V, 1 mohm, a factor of 2.
 _FREED = {"lambda": 1.0, "r_d": 1.0, "alpha": 0.7}
 #: A threshold's usual test current [A].
 _THRESHOLD_CURRENT = 250e-6
@@ -152,7 +152,7 @@ def _with_block(block: Block, estimate: Estimate, covariance: Array) -> Array:
     fixed = {name: value for name, value in space.fixed.items() if name not in freed}
     further = (*(DEFINITIONS[name] for name in freed), *block.nuisance_definitions)
     wider = ParameterSpace(free=(*space.free, *further), fixed=fixed, complete=space.complete)
-    start = {**{name: 0.0 for name in block.nuisances}, **space.fixed}
+    start = {**dict.fromkeys(block.nuisances, 0.0), **space.fixed}
     at = np.concatenate([estimate.coordinates, ParameterSpace(free=further).coordinates(start)])
     rows = derivatives(block.residuals, wider, at, wider.names).T[: block.points]
     by_parameters, by_further = rows[:, : len(space.free)], rows[:, len(space.free) :]

@@ -1,10 +1,10 @@
 """The channel: a square law in one formula for all regions, behind series resistances.
 
 Square law: H. Shichman and D. A. Hodges, IEEE J. Solid-State Circuits 3 (1968) 285. One formula for all regions:
-C. C. Enz, F. Krummenacher and E. A. Vittoz, Analog Integr. Circuits Signal Process. 8 (1995) 83. Bulk-charge factor: the
-body's depletion charge grows towards the drain, so the channel saturates at (VGS - VTH)/alpha with alpha above 1 (Sze &
-Ng, Physics of Semiconductor Devices, 3rd ed., ch. 6; Y. Tsividis, Operation and Modeling of the MOS Transistor, ch. 4;
-both from memory). Carriers that reach their saturation velocity have much the same effect.
+C. C. Enz, F. Krummenacher and E. A. Vittoz, Analog Integr. Circuits Signal Process. 8 (1995) 83. Bulk-charge factor:
+the body's depletion charge grows towards the drain, so the channel saturates at (VGS - VTH)/alpha with alpha above 1
+(Sze & Ng, Physics of Semiconductor Devices, 3rd ed., ch. 6; Y. Tsividis, Operation and Modeling of the MOS Transistor,
+ch. 4; both from memory). Carriers that reach their saturation velocity have much the same effect.
 """
 
 from __future__ import annotations

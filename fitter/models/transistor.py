@@ -177,7 +177,7 @@ class Transistor:
 
     @property
     def gate_body(self) -> Junction:
-        """The share of Cgs over the body, constant below VGS = 0, and falling above while the gate depletes the body."""
+        """The share of Cgs over the body: constant below VGS = 0, falling above, while the gate depletes the body."""
         c_0 = np.asarray(self.s_gs) * np.asarray(self.c_gs)
         return Junction(c_0=c_0, phi=BODY_DEPLETION, m=BODY_EXPONENT, c_f=0.0)
 

@@ -102,8 +102,9 @@ def gate_source_charge(t: Transistor, v_gs: str, unit: float) -> str:
 def channel_current(c: Channel, v_gs: str, v_ds: str) -> str:
     """Current of the inner channel from drain to source.
 
-    The difference of squares is written as a product, so that no digits are lost where both are nearly equal; what alpha
-    takes from the overdrive is written so that the slope at VDS = 0 is right whatever slope a simulator gives max there.
+    The difference of squares is written as a product, so that no digits are lost where both are nearly equal. What
+    alpha takes from the overdrive is written so that the slope at VDS = 0 is right whatever slope a simulator gives
+    max there.
 
     Parameters
     ----------

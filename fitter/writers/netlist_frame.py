@@ -34,6 +34,9 @@ NOMINAL = 27.0
 #: Least saturation current of a diode's card [A]: simulators raise a smaller one to a floor of their own. It is written
 #: as this, behind a voltage source that shifts the exponential back: IS exp(V/(N kT/q)) = IS' exp((V - V0)/(N kT/q)).
 _LEAST_CURRENT = 1e-14
+#: Resistance beside the diode [ohm], above that of most leakages: without it a blocking diode behind such a source
+#: leaves operating points to a simulator's rounding.
+_LEAKAGE = 1e9
 #: Differs from every element's name, also without regard to case.
 _DIODE_MODEL = "bodyjunction"
 
@@ -262,4 +265,5 @@ def body_diode(model: FittedModel, frame: Frame, t_j: float) -> list[str]:
         statement(card),
         *shift,
         f"DBODY {anode} {cathode} {_DIODE_MODEL}",
+        f"RBODY {anode} {cathode} {number(_LEAKAGE)}",
     ]
