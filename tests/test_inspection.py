@@ -13,7 +13,7 @@ from test_inspection_mutations import demo_part, with_curves
 from fitter.inspection import Finding, inspect
 from fitter.inspection.finding import ratio
 from fitter.inspection.rules import comparisons
-from fitter.inspection.transforms import exchange_curves, redivide, scale, scale_axis, scale_points
+from fitter.inspection.transforms import exchange_curves, mirror, redivide, relabel, scale, scale_axis, scale_points
 from fitter.part import Quantity, Stated
 from fitter.reader import read_part
 
@@ -54,6 +54,11 @@ def exchanged(first, second):
 
 def other_division(name, along):
     return lambda part: with_curves(part, redivide(named(part, name), along))
+
+
+def declared(name, along):
+    """Only the axis' scale is entered wrong."""
+    return lambda part: with_curves(part, relabel(named(part, name), along))
 
 
 def stated(group, **values):
@@ -126,7 +131,11 @@ COMPARED = [
     ("forward current", "body diode 25 C", "cargo_80v", stated("body_diode", v_sd=0.6)),
     ("junction voltage", "body diode 150 C", "cargo_80v", scaled("body diode 150 C", "x", 100.0)),
     ("drift", "body diode 150 C", "cargo_80v", exchanged("body diode 25 C", "body diode 150 C")),
-    ("junction law", "body diode 25 C", "cargo_80v", other_division("body diode 25 C", "y")),
+    ("junction law", "body diode 25 C", "cargo_80v", shaped("body diode 25 C", lambda x, y: y**3)),
+    ("range", "transfer 25 C", "cargo_80v", shaped("transfer 25 C", lambda x, y: 0.6 + 0.4 * y)),
+    ("range", "crss", "wall_box_650v", shaped("crss", lambda x, y: 0.9 + 0.1 * y)),
+    ("spread along x", "crss", "wall_box_650v", declared("crss", "x")),
+    ("spread along y", "body diode 25 C", "camper_van_p40v", declared("body diode 25 C", "y")),
     ("temperatures", "rds_on(Tj)", "cargo_80v", scaled("rds_on(Tj)", "x", 10.0)),
     ("at 25 C", "rds_on(Tj)", "cargo_80v", scaled("rds_on(Tj)", "y", 1.3)),
     ("at 25 C", "rds_on(Tj)", "ferry_charger_1200v", scaled("rds_on(Tj)", "y", 10.0)),
@@ -163,6 +172,17 @@ FOUND = [
     ("co definition", "qoss", stated("output_charge", q_oss=50e-9)),
     ("co definition", "eoss", stated("output_charge", e_oss=0.5e-6)),
     ("rating", "stated.gate_charge vdd", stated("gate_charge", v_dd=100.0)),
+    ("rating", "part.vds_max_V", lambda part: replace(part, v_ds_max=800.0)),
+    ("rating", "part.vds_max_V", lambda part: replace(part, v_ds_max=8.0)),
+    ("rating", "part.vgs_max_V", lambda part: replace(part, v_gs_max=200.0)),
+    ("rating", "part.vgs_max_V", lambda part: replace(part, v_gs_max=2.0)),
+    ("stated current", "stated.on_resistance.id", stated("on_resistance", i_d=500.0)),
+    ("supply", "stated.gate_charge vdd", stated("gate_charge", v_dd=4.0)),
+    ("gate-charge test", "gate charge, stated.gate_charge", stated("gate_charge", i_d=5.0)),
+    ("drive", "stated.on_resistance vgs", stated("on_resistance", v_gs=1.0)),
+    ("threshold current", "stated.threshold id", stated("threshold", i_d=25.0)),
+    ("level", "ciss", shaped("ciss", lambda x, y: np.full_like(y, 0.5))),
+    ("level", "body diode 25 C", shaped("body diode 25 C", lambda x, y: np.full_like(y, 0.5))),
     ("few points", "transfer 25 C", only("transfer 25 C", lambda x, y: np.arange(x.size) % 6 == 0)),
     ("gap", "coss", only("coss", lambda x, y: (y > 0.6) | (y < 0.1))),
     ("mis-click", "ciss", misclick),
@@ -217,6 +237,85 @@ def test_a_unit_slip_names_the_column():
     part = demo_part("cargo_80v")
     (found,) = inspect(scaled("ciss", "y", 1e-3, scale)(part))
     assert "the column should be ciss_nF, not ciss_pF" in found.remedy
+
+
+@pytest.mark.parametrize(("factor", "remedy"), [(10.0, "divide vds_max_V by 10"), (0.01, "multiply vds_max_V by 100")])
+def test_no_curve_is_blamed_for_a_rating(factor, remedy):
+    for name in DEMO_PARTS:
+        part = demo_part(name)
+        (found,) = (f for f in inspect(replace(part, v_ds_max=factor * part.v_ds_max)) if f.severity != "note")
+        assert found.topic == "part.vds_max_V"
+        assert remedy in found.remedy
+
+
+@pytest.mark.parametrize("name", ["coss", "crss", "transfer 25 C"])
+def test_a_constant_that_the_fit_needs_stops_it(name):
+    part = shaped(name, lambda x, y: np.full_like(y, 0.5))(demo_part("cargo_80v"))
+    (found,) = (f for f in inspect(part) if f.severity != "note")
+    assert (found.rule, found.severity, found.topic) == ("level", "stop", name)
+    assert "the same at all" in found.found
+
+
+def with_conditions_of(part, name, other):
+    """A curve entered with the conditions of another one of its quantity."""
+    same = named(part, other)
+    return with_curves(part, replace(named(part, name), t_j=same.t_j, v_gs=same.v_gs, v_ds=same.v_ds))
+
+
+@pytest.mark.parametrize(
+    ("demo_name", "name", "other", "key"),
+    [
+        ("cargo_80v", "transfer 150 C", "transfer 25 C", "tj_C"),
+        ("wall_box_650v", "transfer 150 C", "transfer 25 C", "tj_C"),
+        ("cargo_80v", "output 5 V", "output 6 V", "vgs_V"),
+        ("ferry_charger_1200v", "output 18 V", "output 7 V", "vgs_V"),
+        ("camper_van_p40v", "body diode 150 C", "body diode 25 C", "tj_C"),
+    ],
+)
+def test_two_curves_with_the_same_conditions(demo_name, name, other, key):
+    part = with_conditions_of(demo_part(demo_name), name, other)
+    (found,) = (f for f in inspect(part) if f.severity != "note")
+    assert (found.rule, found.severity, found.file) == ("same conditions", "doubtful", "part.toml")
+    assert set(found.topic.split(", ")) == {name, other}
+    assert f"mend {key}" in found.remedy
+    assert named(part, name).file in found.remedy
+
+
+def test_one_curve_clicked_twice_is_a_note(tmp_path):
+    first, second = (read_part(write_part_folder(device_scenarios.shielded_80v(), tmp_path / s, int(s))) for s in "34")
+    again = replace(named(second, "transfer 25 C"), name="transfer 25 C (2)")
+    (found,) = inspect(replace(first, curves=(*first.curves, again)))
+    assert (found.rule, found.severity) == ("same conditions", "note")
+
+
+@pytest.mark.parametrize(("name", "other"), [("transfer 150 C", "transfer 25 C"), ("crss", "coss"), ("ciss", "coss")])
+def test_points_of_another_curve(name, other):
+    part = demo_part("cargo_80v")
+    source = named(part, other)
+    copied = replace(named(part, name), x=source.x, y=source.y, lines=source.lines)
+    (found,) = (f for f in inspect(with_curves(part, copied)) if f.severity != "note")
+    assert (found.rule, found.severity) == ("same points", "doubtful")
+    assert set(found.topic.split(", ")) == {name, other}
+
+
+def test_either_axis_may_be_the_reversed_one():
+    part = demo_part("cargo_80v")
+    (found,) = inspect(with_curves(part, mirror(named(part, "body diode 150 C"), "x")))
+    assert "its x axis was calibrated from the wrong end" in found.remedy
+    assert "or its y axis was calibrated from the wrong end" in found.remedy or found.remedy.startswith("its y axis")
+
+
+def test_a_condition_that_is_off_is_named_beside_the_curves():
+    """A tenth of the VDS at which the capacitances are stated, or ten times that of all their points."""
+    (found,) = inspect(stated("capacitance", v_ds=4.0)(demo_part("cargo_80v")))
+    assert "divide the x values by 10" in found.remedy
+    assert "multiply stated.capacitance.vds by 10" in found.remedy
+
+
+def test_output_charges_at_another_voltage():
+    found = [f for f in inspect(stated("output_charge", v_ds=4.0)(demo_part("cargo_80v"))) if f.rule == "co definition"]
+    assert [f.topic for f in found] == ["qoss", "eoss"]
+    assert all("40.1 V would fit all four" in f.remedy for f in found)
 
 
 def test_two_slips_are_both_named():

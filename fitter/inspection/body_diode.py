@@ -7,7 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from fitter.inspection.finding import Comparison, ratio
-from fitter.inspection.reading import error_at, is_cold, read_at, typical, x_where
+from fitter.inspection.reading import error_at, is_cold, read_at, smallest_readable, typical, x_where
 from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part
 
@@ -88,7 +88,9 @@ def currents(part: Part, curve: Curve) -> Iterator[Comparison]:
             remedy="look at the current axis and column, and at is_A",
         )
     # Between a germanium-like 0.1 V at the least current and ten times a silicon carbide junction's.
-    v_low, v_high = float(curve.x[0]), float(curve.x[-1])
+    # Points that lie on a linear axis say nothing of the voltage.
+    v_low = float(curve.x[np.argmax(curve.y >= min(smallest_readable(curve), top))])
+    v_high = float(curve.x[-1])
     yield Comparison(
         rule="junction voltage",
         curve=curve,
@@ -108,6 +110,7 @@ def drift(part: Part, curve: Curve) -> Iterator[Comparison]:
         cold, hot = (curve, other) if t < u else (other, curve)
         low = max(float(np.min(cold.y)), float(np.min(hot.y)))
         high = min(float(np.max(cold.y)), float(np.max(hot.y)))
+        low = max(low, smallest_readable(cold), smallest_readable(hot))
         level = float(np.sqrt(max(low, 1e-300) * max(low, np.sqrt(max(low * high, 0.0)))))
         v_cold, v_hot = x_where(cold, level), x_where(hot, level)
         if v_cold is None or v_hot is None:
@@ -137,7 +140,7 @@ def drift(part: Part, curve: Curve) -> Iterator[Comparison]:
 
 def slope(part: Part, curve: Curve) -> Iterator[Comparison]:
     """A decade of current takes kT/q ln 10 or more."""
-    low = float(curve.y[0])
+    low = max(float(curve.y[0]), smallest_readable(curve))
     if low <= 0.0 or curve.y[-1] < 10.0 * low:
         return
     first, then = x_where(curve, 1.01 * low), x_where(curve, 10.0 * low)

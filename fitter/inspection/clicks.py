@@ -54,6 +54,8 @@ def _gaps(curve: Curve) -> Iterator[Finding]:
         return
     across = np.diff(x[good]) / curve.x_axis.length
     up = np.abs(np.diff(y[good])) / curve.y_axis.length
+    # Where clicks lie so close along x that they may have been sorted in another order, a step is no gap.
+    up[across < 4.0 * np.sqrt(2.0) * curve.point_error] = 0.0
     widest = int(np.argmax(np.hypot(across, up) * (up > 0.0)))
     if up[widest] > _GAP and np.hypot(across[widest], up[widest]) > 3.0 * float(np.median(np.hypot(across, up))):
         yield Finding(

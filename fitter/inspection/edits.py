@@ -11,7 +11,9 @@ from fitter.inspection.transforms import (
     Along,
     exchange_columns,
     exchange_curves,
+    mirror,
     redivide,
+    relabel,
     scale,
     scale_axis,
     scale_points,
@@ -27,6 +29,19 @@ _USUAL = (10.0, 0.1, 1e3, 1e-3)
 #: Two decades; a micro for a pico.
 _RARE = (100.0, 0.01, 1e6, 1e-6)
 _TEMPERATURES = (Quantity.RDS_ON_TEMPERATURE, Quantity.VGS_TH_TEMPERATURE)
+#: Conditions that a curve is read at to compare it with a table value.
+_CONDITIONS = {
+    "capacitance.c_iss": ("v_ds",),
+    "capacitance.c_oss": ("v_ds",),
+    "capacitance.c_rss": ("v_ds",),
+    "gate_charge.q_g": ("v_gs",),
+    "gate_charge.v_plateau": ("i_d",),
+    "on_resistance.r_ds_on": ("v_gs", "i_d"),
+    "transconductance.g_fs": ("i_d",),
+    "output_charge.q_oss": ("v_ds",),
+    "output_charge.e_oss": ("v_ds",),
+    "body_diode.v_sd": ("i_s",),
+}
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -44,7 +59,7 @@ class Edit:
     stated : StatedValues or None
         The table as it would be then; None where it stays.
     key : str
-        The edited table value's key in the part file.
+        The key in the part file of the edited table value or condition.
     cost : float
         How unlikely the slip is, to choose between edits that explain the data alike.
     """
@@ -73,6 +88,7 @@ def edits(part: Part, curve: Curve, *, rare: bool) -> Iterator[Edit]:
         yield from _figure(part, curve, _USUAL)
         yield from _columns(curve)
         yield from _divisions(curve)
+        yield from _directions(part, curve)
         yield from _exchanges(part, curve)
 
 
@@ -83,7 +99,7 @@ def key_of(value: str) -> str:
 
 
 def table_edits(part: Part, value: str, *, rare: bool) -> Iterator[Edit]:
-    """Decade and unit slips of a table value, named as ``group.value``."""
+    """Decade and unit slips of a table value, named as ``group.value``, and of the conditions that it is stated at."""
     group_name, _, name = value.partition(".")
     group = getattr(part.stated, group_name)
     stated = getattr(group, name)
@@ -98,6 +114,16 @@ def table_edits(part: Part, value: str, *, rare: bool) -> Iterator[Edit]:
             key=key,
             cost=0.3,
         )
+        for condition in _CONDITIONS.get(value, ()):
+            name_of = condition.replace("_", "", 1)
+            changed = replace(group, **{condition: getattr(group, condition) * factor})
+            yield Edit(
+                rule="table slip",
+                text=f"{_by(factor)[0]} stated.{group_name}.{name_of} {_by(factor)[1]}",
+                stated=replace(part.stated, **{group_name: changed}),
+                key=f"stated.{group_name}.{name_of}",
+                cost=0.3,
+            )
 
 
 def _by(factor: float) -> tuple[str, str]:
@@ -179,14 +205,44 @@ def _columns(curve: Curve) -> Iterator[Edit]:
 
 def _divisions(curve: Curve) -> Iterator[Edit]:
     for along, axis in _axes(curve):
+        true = "log" if axis.scale == "linear" else "linear"
         other = redivide(curve, along)
         if other is not None:
-            taken, true = (axis.scale, "log") if axis.scale == "linear" else (axis.scale, "linear")
             yield Edit(
                 rule="axis division",
-                text=f"click it again with a {true} {along} axis: it was taken for {taken}",
+                text=f"click it again with a {true} {along} axis: it was taken for {axis.scale}",
                 curves=(other,),
                 cost=0.5,
+            )
+        declared = relabel(curve, along)
+        if declared is not None and axis.printed:
+            yield Edit(
+                rule="axis division",
+                text=f'write scale = "{true}" for its {along}_axis; the points stay',
+                curves=(declared,),
+                cost=0.4,
+            )
+
+
+def _directions(part: Part, curve: Curve) -> Iterator[Edit]:
+    """Axes that were calibrated from the wrong end, of one curve and of a whole figure."""
+    figure = (curve, *sisters(part, curve))
+    for along, axis in _axes(curve):
+        column = curve.x_column if along == "x" else curve.y_column
+        undone = f"from + to - {column}" if axis.scale == "linear" else f"from x to / {column}"
+        text = f"its {along} axis was calibrated from the wrong end: "
+        if axis.printed:
+            text += f"replace each {column} by {undone} (from and to of its {along}_axis), or "
+        text += f"click it again with the ends of the {along} axis exchanged"
+        for curves, where, cost in (((curve,), "", 0.0), (figure, "; so in all curves of the figure", 0.1)):
+            turned = [mirror(c, along) for c in curves]
+            if where and len(curves) == 1:
+                continue
+            yield Edit(
+                rule="reversed axis",
+                text=text + where,
+                curves=tuple(c for c in turned if c is not None),
+                cost=cost,
             )
 
 

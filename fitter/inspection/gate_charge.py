@@ -7,7 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from fitter.inspection.finding import Comparison, ratio
-from fitter.inspection.reading import first_curve, is_cold, read_at, typical
+from fitter.inspection.reading import extreme_before, first_curve, is_cold, read_at, typical
 from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part, Quantity
 
@@ -26,7 +26,8 @@ _BELOW_ZERO = 0.08
 
 def rising(part: Part, curve: Curve) -> Iterator[Comparison]:
     """VGS only rises."""
-    fall = np.maximum.accumulate(curve.y) - curve.y
+    highest, there = extreme_before(curve, curve.y)
+    fall = np.where(there, curve.y[highest] - curve.y, 0.0)
     worst = int(np.argmax(fall))
     yield Comparison(
         rule="monotone",

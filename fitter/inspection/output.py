@@ -25,15 +25,15 @@ _PLACES = 5
 
 def _neighbours(part: Part, curve: Curve) -> Iterator[tuple[Curve, Curve]]:
     """The curve with the next ones of the same temperature below and above in VGS, the lower first."""
-    if curve.v_gs is None:
+    at = curve.v_gs
+    if at is None:
         return
-    same = [c for c in part.curves_of(Quantity.OUTPUT) if c.v_gs is not None and c.t_j == curve.t_j]
-    same.sort(key=lambda c: c.v_gs or 0.0)
-    at = next(i for i, c in enumerate(same) if c.name == curve.name)
-    if at > 0:
-        yield same[at - 1], curve
-    if at + 1 < len(same):
-        yield curve, same[at + 1]
+    same = {c.v_gs: c for c in part.curves_of(Quantity.OUTPUT) if c.v_gs is not None and c.t_j == curve.t_j}
+    below, above = [v for v in same if v < at], [v for v in same if v > at]
+    if below:
+        yield same[max(below)], curve
+    if above:
+        yield curve, same[min(above)]
 
 
 def order(part: Part, curve: Curve) -> Iterator[Comparison]:

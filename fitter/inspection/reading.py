@@ -14,11 +14,13 @@ __all__ = [
     "column_factors",
     "coordinates",
     "error_at",
+    "extreme_before",
     "first_curve",
     "is_cold",
     "log_error",
     "read_at",
     "sisters",
+    "smallest_readable",
     "square_root_line",
     "typical",
     "x_where",
@@ -118,6 +120,24 @@ def log_error(curve: Curve) -> Array:
         step = np.maximum(xs[high] - xs[low], 1e-3 * curve.x_axis.length)
         slope[good] = (ys[high] - ys[low]) / step
     return np.asarray(np.hypot(along_y, slope * share * curve.x_axis.length))
+
+
+def extreme_before(curve: Curve, values: Array) -> tuple[NDArray[np.intp], NDArray[np.bool_]]:
+    """The point with the largest of `values` to the left of each point, and whether there is one.
+
+    Only points farther to the left than reading errors explain: closer ones may have been clicked in any order.
+    """
+    x = np.nan_to_num(coordinates(curve.x, curve.x_axis), nan=-np.inf)
+    # Four standard deviations of the difference of two points.
+    count = np.searchsorted(x, x - 4.0 * np.sqrt(2.0) * curve.point_error * curve.x_axis.length)
+    largest = np.maximum.accumulate(np.where(values >= np.maximum.accumulate(values), np.arange(values.size), 0))
+    return largest[np.maximum(count - 1, 0)], count > 0
+
+
+def smallest_readable(curve: Curve) -> float:
+    """The smallest y that a click tells from zero, ten reading errors of a linear axis; zero on a log axis."""
+    share = float(np.hypot(curve.point_error, curve.axis_error))
+    return 0.0 if curve.y_axis.scale == "log" else 10.0 * share * curve.y_axis.length
 
 
 def error_at(curve: Curve, x: float) -> float:
