@@ -161,7 +161,7 @@ def misclick(part):
 
 #: Rule, topic, what is made wrong in the 80 V part.
 FOUND = [
-    ("order", "stated.threshold.v_gs_th", stated("threshold", v_gs_th=Stated(min=3.0, typ=2.9))),
+    ("order", "stated.threshold.vgs_th", stated("threshold", v_gs_th=Stated(min=3.0, typ=2.9))),
     ("charge sum", "qg", stated("gate_charge", q_gs=60e-9)),
     ("plateau", "v_plateau", stated("gate_charge", v_plateau=11.0)),
     ("plateau above threshold", "v_plateau", stated("gate_charge", v_plateau=2.8)),
@@ -420,3 +420,46 @@ def test_ratio_in_a_column_of_ohms_stops_the_fit(fitted):
     curves = tuple(renamed if c is curve else c for c in part.curves)
     found = [f for f in inspect(replace(part, curves=curves)) if f.severity == "stop"]
     assert any("rds_on_ratio" in f.remedy for f in found)
+
+
+ODD = (0.0, -1.0, np.nan, np.inf, 1e300, 1e-300)
+
+
+def odd_curves(curve):
+    for value in ODD:
+        yield replace(curve, x=np.full_like(curve.x, value))
+        yield replace(curve, y=np.full_like(curve.y, value))
+        yield replace(curve, y=np.where(np.arange(curve.y.size) == 3, value, curve.y))
+        yield replace(curve, axis_error=value)
+    yield replace(curve, x=curve.x[:0], y=curve.y[:0], lines=curve.lines[:0])
+    yield replace(curve, x_axis=replace(curve.x_axis, end=curve.x_axis.start))
+
+
+@pytest.mark.parametrize(
+    "name", ["coss", "transfer 25 C", "output 5 V", "gate charge", "body diode 25 C", "rds_on(Tj)"]
+)
+def test_parts_made_by_hand_are_judged_without_a_crash(name):
+    part = demo_part("cargo_80v")
+    for odd in odd_curves(named(part, name)):
+        assert all(isinstance(f, Finding) for f in inspect(with_curves(part, odd)))
+
+
+@pytest.mark.parametrize("group", [f.name for f in dataclasses.fields(demo_part("cargo_80v").stated)])
+def test_tables_made_by_hand_are_judged_without_a_crash(group):
+    part = demo_part("cargo_80v")
+    values = getattr(part.stated, group)
+    for field in dataclasses.fields(values):
+        old = getattr(values, field.name)
+        for value in ODD if isinstance(old, float | Stated) else ():
+            new = replace(values, **{field.name: Stated(typ=value) if isinstance(old, Stated) else value})
+            found = inspect(replace(part, stated=replace(part.stated, **{group: new})))
+            assert all(isinstance(f, Finding) for f in found)
+
+
+def test_what_no_rule_can_work_with_stops_the_fit():
+    part = demo_part("cargo_80v")
+    empty = replace(named(part, "coss"), x=np.array([]), y=np.array([]), lines=np.array([], dtype=np.int64))
+    (found,) = (f for f in inspect(with_curves(part, empty)) if f.severity != "note")
+    assert (found.rule, found.severity, found.topic) == ("soundness", "stop", "coss")
+    (found,) = inspect(replace(part, v_ds_max=0.0))
+    assert (found.rule, found.topic) == ("soundness", "part.vds_max_V")

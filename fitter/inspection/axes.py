@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fitter.inspection.finding import Comparison
-from fitter.inspection.reading import CAPACITANCES, coordinates, sisters
+from fitter.inspection.reading import CAPACITANCES, as_printed, coordinates, sisters
 from fitter.part import Axis, Curve, Part, Quantity
 
 __all__ = ["corner", "division", "inside", "leaves", "same_figure"]
@@ -43,9 +44,13 @@ def _places(values: Array, axis: Axis) -> Array:
     return np.asarray((coordinates(values, axis) - start) / axis.length)
 
 
+def _along(curve: Curve) -> tuple[tuple[Literal["x", "y"], Array, Axis], ...]:
+    return ("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)
+
+
 def inside(part: Part, curve: Curve) -> Iterator[Comparison]:
     """Points lie on the printed axes."""
-    for name, values, axis in (("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)):
+    for name, values, axis in _along(curve):
         if not axis.printed:
             continue
         place = np.nan_to_num(_places(values, axis), nan=-1.0)
@@ -56,15 +61,16 @@ def inside(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=curve,
             at=worst,
             off=outside.size / (_MANY * values.size) if outside.size > _MANY * values.size else 0.0,
-            says=f"{outside.size} of {values.size} points lie outside the {name} axis of {axis.start:g} to "
-            f"{axis.end:g} (SI), the farthest at {values[worst]:g}",
+            says=f"{outside.size} of {values.size} points lie outside the {name} axis of "
+            f"{as_printed(curve, name, axis.start)} to {as_printed(curve, name, axis.end)}"
+            + (f", the farthest at {as_printed(curve, name, values[worst])}" if outside.size else ""),
             remedy="look at the axis' from, to and scale, and at the column's unit",
         )
 
 
 def corner(part: Part, curve: Curve) -> Iterator[Comparison]:
     """A curve is not confined to one end of its axes."""
-    for name, values, axis in (("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)):
+    for name, values, axis in _along(curve):
         place = _places(values, axis)
         place = place[np.isfinite(place)]
         if not axis.printed or (curve.quantity, name) in _FREE or place.size < 2:
@@ -100,7 +106,7 @@ def leaves(part: Part, curve: Curve) -> Iterator[Comparison]:
 
 def division(part: Part, curve: Curve) -> Iterator[Comparison]:
     """Clicks are spread along a curve as its axes are divided."""
-    for name, values, axis in (("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)):
+    for name, values, axis in _along(curve):
         low, high = float(np.min(values)), float(np.max(values))
         # Where an axis could be divided either way, and the points tell the two apart.
         if not axis.printed or axis.start <= 0.0 or low <= 0.0 or values.size < 7 or high < _TELLING * low:

@@ -9,6 +9,7 @@ import numpy as np
 from fitter.inspection.finding import Comparison, Finding, ratio
 from fitter.inspection.reading import error_at, extreme_before, first_curve, log_error, read_at, typical
 from fitter.part import Curve, Part, Quantity, Stated
+from fitter.units import engineering
 
 __all__ = ["definitions", "notes", "rating", "readable", "rising", "stated_charge", "table", "table_reach"]
 
@@ -48,7 +49,8 @@ def table(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="off table",
         curve=curve,
         off=ratio(read / value, 1.0 / _FACTOR, _FACTOR, slack=4.0 * error_at(curve, group.v_ds)),
-        says=f"at {group.v_ds:g} V the curve is {read / value:.3g} times its table value of {value * 1e12:.4g} pF",
+        says=f"at {group.v_ds:g} V the curve is {read / value:.3g} times its table value of "
+        f"{engineering(value, 'F', 4)}",
         remedy="one of the two is wrong: look at the curve's axes, the column's unit, and the table's row and condition"
         + _trap(read / value),
         stated=f"capacitance.{_VALUES[curve.quantity]}",
@@ -196,19 +198,18 @@ def stated_charge(part: Part, curve: Curve) -> Iterator[Comparison]:
     v = np.concatenate([[0.0], x[x < group.v_ds], [group.v_ds]])
     c = np.interp(v, x, y)
     for name, unit, stated, integrand in (
-        ("Qoss", "nC", typical(group.q_oss), c),
-        ("Eoss", "uJ", typical(group.e_oss), c * v),
+        ("Qoss", "C", typical(group.q_oss), c),
+        ("Eoss", "J", typical(group.e_oss), c * v),
     ):
         if not stated:
             continue
         integral = float(np.sum(0.5 * (integrand[1:] + integrand[:-1]) * np.diff(v)))
-        figure = stated * (1e9 if unit == "nC" else 1e6)
         yield Comparison(
             rule=name,
             curve=curve,
             off=ratio(integral / stated, 1.0 / _CHARGE, _CHARGE),
             says=f"the curve's integral up to {group.v_ds:g} V is {integral / stated:.3g} times the stated {name} of "
-            f"{figure:.3g} {unit}",
+            f"{engineering(stated, unit)}",
             remedy=f"one of the two is wrong: look at the curve's axes and at the row of {name}",
             stated="output_charge.q_oss" if name == "Qoss" else "output_charge.e_oss",
         )

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.inspection.finding import Finding
-from fitter.inspection.reading import CAPACITANCES, coordinates
+from fitter.inspection.reading import CAPACITANCES, as_printed, coordinates
 from fitter.part import Curve, Part, Quantity
 
 __all__ = ["inspect"]
@@ -64,7 +64,8 @@ def _gaps(curve: Curve) -> Iterator[Finding]:
             topic=curve.name,
             file=curve.file,
             line=int(curve.lines[good][widest]),
-            found=f"between {curve.x[good][widest]:.3g} and {curve.x[good][widest + 1]:.3g} (SI) the curve crosses "
+            found=f"between {as_printed(curve, 'x', curve.x[good][widest])} and "
+            f"{as_printed(curve, 'x', curve.x[good][widest + 1])} the curve crosses "
             f"{100.0 * up[widest]:.0f} % of its y axis without a point",
             remedy="click more points there",
         )
@@ -87,15 +88,14 @@ def _misclicks(curve: Curve) -> Iterator[Finding]:
         near = off[max(i - 2, 0) : i + 3]
         if np.abs(off[i]) < np.max(np.abs(near)):
             continue
-        value = curve.y[good][i]
         yield Finding(
             rule="mis-click",
             severity="doubtful",
             topic=curve.name,
             file=curve.file,
             line=int(lines[i]),
-            found=f"the point ({curve.x[good][i]:g}, {value:g}) (SI) lies {abs(off[i]):.0f} standard deviations "
-            f"off its neighbours",
+            found=f"the point ({as_printed(curve, 'x', curve.x[good][i])}, {as_printed(curve, 'y', curve.y[good][i])}) "
+            f"lies {abs(off[i]):.0f} standard deviations off its neighbours",
             remedy=_slip(x, y, int(i), curve) or "look at the point again",
         )
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from fitter.inspection import capacitances, clicks, level, mending, ratings, table, twins
+from fitter.inspection import capacitances, clicks, level, mending, ratings, soundness, table, twins
 from fitter.inspection.finding import SEVERITIES, Finding
 from fitter.part import Part
 
@@ -22,11 +22,15 @@ def inspect(part: Part) -> tuple[Finding, ...]:
     tuple of Finding
         Worst first, then by file and line; nothing is changed.
     """
+    unsound, part = soundness.judge(part)
+    if any(finding.topic.startswith("part.") for finding in unsound):
+        return tuple(unsound)
     rating, rated = ratings.judge(part)
     flat, bent = level.judge(rated)
     twin, rest = twins.judge(bent)
     explained, contradictions = mending.mend(rest)
     findings = [
+        *unsound,
         *rating,
         *flat,
         *table.inspect(rated),

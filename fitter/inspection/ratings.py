@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from fitter.inspection.finding import Finding
 from fitter.inspection.reading import CAPACITANCES, PART_FILE
 from fitter.part import Part, Quantity
+from fitter.units import engineering
 
 __all__ = ["judge"]
 
@@ -123,15 +124,15 @@ def _currents(part: Part) -> tuple[Finding | None, Part]:
         return None, part
     power = round(math.log10(highest / second))
     key = f"stated.{group}.{name.replace('_', '')}"
-    says = f"{key} is {{:g}} A, {{:.3g}} times the largest of the table's other currents, {second:g} A"
+    says = f"{key} is {{}}, {{:.3g}} times the largest of the table's other currents, {engineering(second, 'A')}"
     mended = highest / 10.0**power
     finding = Finding(
         rule="stated current",
         severity="doubtful",
         topic=key,
         file=PART_FILE,
-        found=says.format(highest, highest / second),
-        remedy=f"divide {key} by {10**power}; then {says.format(mended, mended / second)}",
+        found=says.format(engineering(highest, "A"), highest / second),
+        remedy=f"divide {key} by {10**power}; then {says.format(engineering(mended, 'A'), mended / second)}",
     )
     changed = replace(getattr(part.stated, group), **{name: mended})
     return finding, replace(part, stated=replace(part.stated, **{group: changed}))

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Literal
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -13,6 +15,7 @@ __all__ = [
     "PART_FILE",
     "column_factors",
     "coordinates",
+    "as_printed",
     "error_at",
     "extreme_before",
     "first_curve",
@@ -64,6 +67,14 @@ def column_factors(curve: Curve) -> tuple[float, float]:
     units = ((curve.x_column, curve.x_unit), (curve.y_column, curve.y_unit))
     fx, fy = (si_factor(column.rpartition("_")[2], base) if base else 1.0 for column, base in units)
     return fx, fy
+
+
+def as_printed(curve: Curve, along: Literal["x", "y"], value: float) -> str:
+    """A figure of a curve in its column's own unit, as it stands in the file but for a p-channel part's sign."""
+    column, base = (curve.x_column, curve.x_unit) if along == "x" else (curve.y_column, curve.y_unit)
+    factor = column_factors(curve)[0 if along == "x" else 1]
+    figure = np.format_float_positional(float(f"{value / factor:.4g}"), trim="-")
+    return f"{figure} {column.rpartition('_')[2] if base else ''}".strip()
 
 
 def coordinates(values: Array, axis: Axis) -> Array:

@@ -6,10 +6,12 @@ from collections.abc import Iterator
 from dataclasses import fields
 from itertools import pairwise
 
+from fitter.inspection.edits import key_of
 from fitter.inspection.finding import Finding, Severity
 from fitter.inspection.reading import PART_FILE, typical
 from fitter.inspection.transfer import largest_current
 from fitter.part import Part, Quantity, Stated
+from fitter.reading.schema import STATED
 from fitter.units import engineering
 
 __all__ = ["inspect"]
@@ -56,6 +58,7 @@ def _order(part: Part) -> Iterator[Finding]:
             stated = getattr(values, item.name)
             if not isinstance(stated, Stated):
                 continue
+            base = next(f.base for f in STATED[group.name].values if f.name == item.name)
             known = [
                 (n, v) for n, v in (("min", stated.min), ("typ", stated.typ), ("max", stated.max)) if v is not None
             ]
@@ -64,8 +67,8 @@ def _order(part: Part) -> Iterator[Finding]:
                     yield _finding(
                         "order",
                         "doubtful",
-                        f"stated.{group.name}.{item.name}",
-                        f"{low_name} {low:g} is above {high_name} {high:g} (SI)",
+                        key_of(f"{group.name}.{item.name}"),
+                        f"{low_name} {engineering(low, base, 4)} is above {high_name} {engineering(high, base, 4)}",
                         "look at the row again: min, typ and max must rise",
                     )
 
@@ -80,7 +83,7 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             "charge sum",
             "doubtful",
             "qg",
-            f"QGS + QGD = {(q_gs + q_gd) * 1e9:.3g} nC is above QG = {q_g * 1e9:.3g} nC",
+            f"QGS + QGD = {engineering(q_gs + q_gd, 'C')} is above QG = {engineering(q_g, 'C')}",
             "one of the three is from another row, or QG is stated at another VGS",
         )
     plateau = typical(table.v_plateau)
@@ -112,9 +115,8 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             "crss below qgd",
             "doubtful",
             "qgd",
-            f"Crss times VDS = {c_rss * capacitance.v_ds * 1e9:.3g} nC is above QGD = {q_gd * 1e9:.3g} nC, yet "
-            f"Crss only grows "
-            "towards low VDS",
+            f"Crss times VDS = {engineering(c_rss * min(capacitance.v_ds, table.v_dd), 'C')} is above QGD = "
+            f"{engineering(q_gd, 'C')}, yet Crss only grows towards low VDS",
             "look at the units of Crss and QGD",
         )
     if q_gs and c_iss and plateau:
@@ -148,7 +150,7 @@ def _output_charge(part: Part) -> Iterator[Finding]:
             "co order",
             "doubtful",
             "coss_er, coss_tr",
-            f"Co(er) = {er * 1e12:.3g} pF is above Co(tr) = {tr * 1e12:.3g} pF; where Coss falls it cannot be",
+            f"Co(er) = {engineering(er, 'F')} is above Co(tr) = {engineering(tr, 'F')}; where Coss falls it cannot be",
             "exchange coss_er_pF and coss_tr_pF: datasheets have printed their footnotes exchanged",
         )
     capacitance = part.stated.capacitance
@@ -158,8 +160,8 @@ def _output_charge(part: Part) -> Iterator[Finding]:
             "co order",
             "doubtful",
             "coss_er, coss",
-            f"Co(er) = {er * 1e12:.3g} pF is below Coss = {c_oss * 1e12:.3g} pF at {o.v_ds:g} V; where Coss falls with "
-            "VDS it cannot be",
+            f"Co(er) = {engineering(er, 'F')} is below Coss = {engineering(c_oss, 'F')} at {o.v_ds:g} V; where Coss "
+            "falls with VDS it cannot be",
             "one of the two is from another row or in another unit",
         )
     yield from _charge_definitions(o.v_ds, q, e, tr, er)
