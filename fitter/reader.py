@@ -345,7 +345,8 @@ class _Curves:
 
     def _table(self, file: str) -> CsvTable | None:
         if file not in self._tables:
-            data = self._files.read(file, largest=MAX_CSV_BYTES)
+            full = self._problems.full(file)
+            data = None if full else self._files.read(file, largest=MAX_CSV_BYTES)
             self._tables[file] = None if data is None else csv_table(data, file, self._problems)
         return self._tables[file]
 

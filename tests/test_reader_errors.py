@@ -9,7 +9,7 @@ from part_folders import CAPACITANCE, PART, check, curve, make_folder, messages,
 
 from fitter.reader import MAX_CURVES, MAX_NOTES
 from fitter.reading.csv_tables import MAX_COLUMNS, MAX_CSV_LINE, MAX_ROWS
-from fitter.reading.problems import MAX_PROBLEMS_PER_FILE, quoted
+from fitter.reading.problems import MAX_PROBLEMS, MAX_PROBLEMS_PER_FILE, quoted
 from fitter.reading.toml_tables import MAX_KEYS, MAX_LINE
 
 # The part file's tables and keys
@@ -318,11 +318,31 @@ def test_all_problems_of_all_files_are_listed_at_once(tmp_path):
     ]
 
 
-def test_very_many_problems_are_counted(tmp_path):
+def test_of_very_many_problems_the_first_are_shown(tmp_path):
     text = "vgs_V,id_A\n" + "x,1\n" * 1000
     found = [p for p in problems_of(make_folder(tmp_path, files={"transfer.csv": text})) if p.file == "transfer.csv"]
     assert len(found) == MAX_PROBLEMS_PER_FILE + 1
-    assert found[-1].found == f"{1000 - MAX_PROBLEMS_PER_FILE} more problems"
+    assert found[-1].found == "there may be more problems"
+
+
+def test_the_problems_of_all_files_are_bounded(tmp_path):
+    names = [f"o{n}.csv" for n in range(20)]
+    append = "".join(curve("output", name, f"vgs_V = {n + 3}") for n, name in enumerate(names))
+    files = dict.fromkeys(names, "vds_V,id_A\n" + "x,y\n" * 1000)
+    found = problems_of(make_folder(tmp_path, append=append, files=files))
+    assert MAX_PROBLEMS <= len(found) <= MAX_PROBLEMS + len(names)
+    assert str(found[-1]) == "o3.csv: there may be more problems; mend those above first"
+
+
+def test_large_bad_tables_are_rejected_in_seconds(tmp_path):
+    """Every cell of 20 MiB is wrong; a complaint about each would take a minute."""
+    header = "vds_V,id_A,vgs_V,qg_nC,vsd_V,tj_C,ciss_pF,coss_pF,crss_pF,is_A,rds_on_mohm,vgs_th_V\n"
+    table = header + ("bad cell," * 11 + "bad cell\n") * 19_000
+    append = "".join(curve("output", f"o{n}.csv", f"vgs_V = {n + 3}") for n in range(10))
+    folder = make_folder(tmp_path, append=append, files={f"o{n}.csv": table for n in range(10)})
+    began = time.process_time()
+    assert problems_of(folder)
+    assert time.process_time() - began < 5.0
 
 
 # CSV files
