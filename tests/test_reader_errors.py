@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import shutil
 import time
 
 import pytest
+from conftest import ROOT
 from part_folders import CAPACITANCE, PART, check, curve, make_folder, messages, problems_of
 
 from fitter.reader import MAX_CURVES, MAX_NOTES
@@ -316,6 +318,27 @@ def test_all_problems_of_all_files_are_listed_at_once(tmp_path):
         ("transfer.csv", 3, ""),
         ("transfer.csv", 5, "id_A"),
     ]
+
+
+def test_a_p_channel_part_entered_as_n_is_one_problem(tmp_path):
+    folder = shutil.copytree(ROOT / "digitized_curves" / "camper_van_p40v", tmp_path / "part")
+    text = (folder / "part.toml").read_text().replace('channel = "p"', 'channel = "n"')
+    (folder / "part.toml").write_text(text)
+    check(folder, ("part.toml:7 [part.channel]: found 'n', but most voltages", 'write channel = "p"'))
+
+
+def test_a_p_channel_part_with_another_slip_gets_every_message(tmp_path):
+    folder = shutil.copytree(ROOT / "digitized_curves" / "camper_van_p40v", tmp_path / "part")
+    text = (folder / "part.toml").read_text().replace('channel = "p"', 'channel = "n"').replace("vgs_max_V", "vgs_max")
+    (folder / "part.toml").write_text(text)
+    found = messages(folder)
+    assert sum('for a p-channel part, say so in [part]: channel = "p"' in message for message in found) > 40
+
+
+def test_the_article_before_the_name_of_a_curve(tmp_path):
+    append = curve("output", "o.csv", "vgs_V = 5", "vds_V = 3")
+    folder = make_folder(tmp_path, append=append, files={"o.csv": "vds_V,id_A\n0,0\n1,20\n"})
+    check(folder, "'vds_V' is no condition of an output curve")
 
 
 def test_of_very_many_problems_the_first_are_shown(tmp_path):

@@ -177,6 +177,7 @@ def _upright(
             # Taken from zero, a zero stays the plain one.
             values = 0.0 - values
         else:
+            problems.signs += 1
             problems.add(
                 file,
                 "most values are negative",

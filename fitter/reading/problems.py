@@ -78,9 +78,16 @@ def with_article(noun: str) -> str:
 
 
 class Problems:
-    """The problems found so far, by file."""
+    """The problems found so far, by file.
+
+    Attributes
+    ----------
+    signs : int
+        How many of them are voltages or currents of a p-channel part's sign.
+    """
 
     def __init__(self) -> None:
+        self.signs = 0
         # By file, in the order in which they were found; dictionaries, since a file can have very many.
         self._by_file: dict[str, dict[Problem, None]] = {}
         self._count = 0
