@@ -178,7 +178,7 @@ FOUND = [
     ("rating", "part.vgs_max_V", lambda part: replace(part, v_gs_max=2.0)),
     ("stated current", "stated.on_resistance.id", stated("on_resistance", i_d=500.0)),
     ("supply", "stated.gate_charge vdd", stated("gate_charge", v_dd=4.0)),
-    ("gate-charge test", "gate charge, stated.gate_charge", stated("gate_charge", i_d=5.0)),
+    ("gate-charge test", "gate charge, stated.gate_charge", stated("gate_charge", v_dd=6.0)),
     ("drive", "stated.on_resistance vgs", stated("on_resistance", v_gs=1.0)),
     ("threshold current", "stated.threshold id", stated("threshold", i_d=25.0)),
     ("level", "ciss", shaped("ciss", lambda x, y: np.full_like(y, 0.5))),
@@ -201,7 +201,64 @@ def test_misclick_names_its_line_and_the_decade():
     part = demo_part("cargo_80v")
     (found,) = (f for f in inspect(misclick(part)) if f.rule == "mis-click")
     assert found.line == named(part, "ciss").lines[10]
-    assert "divide it by 10" in found.remedy
+    assert "divide its y by 10" in found.remedy
+
+
+@pytest.mark.parametrize(
+    ("name", "at", "along", "factor", "remedy"),
+    [
+        ("coss", 15, "y", 10.0, "divide its y by 10"),
+        ("transfer 25 C", 15, "y", 0.1, "multiply its y by 10"),
+        ("gate charge", 20, "y", 0.1, "multiply its y by 10"),
+        ("ciss", 30, "y", 0.01, "multiply its y by 100"),
+    ],
+)
+def test_a_decade_slip_of_one_click_is_one_finding(name, at, along, factor, remedy):
+    """What the point spoils besides, such as the order of a curve or its straight line, is not reported again."""
+    part = demo_part("cargo_80v")
+    curve = named(part, name)
+    values = getattr(curve, along).copy()
+    values[at] *= factor
+    (found,) = inspect(with_curves(part, replace(curve, **{along: values})))
+    assert (found.rule, found.line) == ("mis-click", curve.lines[at])
+    assert remedy in found.remedy
+
+
+def test_a_decade_slip_along_x_names_x():
+    part = demo_part("wall_box_650v")
+    curve = named(part, "coss")
+    x = curve.x.copy()
+    x[15] *= 10.0
+    order = np.argsort(x, kind="stable")
+    wrong = replace(curve, x=x[order], y=curve.y[order], lines=curve.lines[order])
+    (found,) = (f for f in inspect(with_curves(part, wrong)) if f.severity != "note")
+    assert (found.rule, found.line) == ("mis-click", curve.lines[15])
+    assert "divide its x by 10" in found.remedy
+
+
+def test_rows_of_the_table_in_each_others_places():
+    values = demo_part("cargo_80v").stated.capacitance
+    part = stated("capacitance", c_iss=values.c_rss, c_rss=values.c_iss)(demo_part("cargo_80v"))
+    (found,) = inspect(part)
+    assert found.rule == "table exchange"
+    assert "exchange stated.capacitance.ciss and stated.capacitance.crss" in found.remedy
+
+
+def test_a_table_slip_is_not_reported_by_every_rule_that_it_breaks():
+    """Ten times the threshold lies above the plateau and the gate drive, too."""
+    (found,) = inspect(stated("threshold", v_gs_th=29.0)(demo_part("cargo_80v")))
+    assert "divide stated.threshold.vgs_th by 10" in found.remedy
+
+
+def test_exchanged_effective_capacitances_are_one_finding():
+    part = stated("output_charge", c_oss_er=2790e-12, c_oss_tr=2040e-12)(demo_part("cargo_80v"))
+    (found,) = inspect(part)
+    assert "exchange coss_er_pF and coss_tr_pF" in found.remedy
+
+
+def test_a_charge_with_its_point_in_the_wrong_place():
+    found = [f for f in inspect(stated("gate_charge", q_gd=147e-9)(demo_part("cargo_80v"))) if f.rule == "charge sum"]
+    assert ["QGD = 14.7 nC or QG = 680 nC would fit" in f.remedy for f in found] == [True]
 
 
 @pytest.mark.parametrize("name", DEMO_PARTS)
@@ -313,7 +370,10 @@ def test_a_condition_that_is_off_is_named_beside_the_curves():
 
 
 def test_output_charges_at_another_voltage():
-    found = [f for f in inspect(stated("output_charge", v_ds=4.0)(demo_part("cargo_80v"))) if f.rule == "co definition"]
+    part = demo_part("cargo_80v")
+    (found,) = inspect(stated("output_charge", v_ds=4.0)(part))
+    assert "multiply stated.output_charge.vds by 10" in found.remedy
+    found = [f for f in inspect(stated("output_charge", v_ds=20.0)(part)) if f.rule == "co definition"]
     assert [f.topic for f in found] == ["qoss", "eoss"]
     assert all("40.1 V would fit all four" in f.remedy for f in found)
 

@@ -1,9 +1,9 @@
 """Every slip in every curve of every demo part: the inspection names the edit that mends it.
 
 Decade and unit slips of either axis (a wrong unit or calibration takes the printed axis with it; or points alone, or
-the axis alone), exchanged columns, exchanged curves, axes taken for linear that were logarithmic, or only declared so,
-axes calibrated from the wrong end, the same slip in a whole figure, slips of table values. The usual run tries every
-seventh, ``slow`` all of them.
+the axis alone), exchanged columns, exchanged curves, axes taken for linear that were logarithmic, or only read or
+declared so, axes calibrated from the wrong end, the same slip in a whole figure, slips of table values. The usual run
+tries every seventh, ``slow`` all of them.
 """
 
 from __future__ import annotations
@@ -223,7 +223,26 @@ def declarations(part):
                 )  # fmt: skip
 
 
-MAKERS = (slips, columns, exchanges, divisions, declarations, reversals, axis_slips, figures, table_values)
+def rereads(part):
+    """Points of a logarithmic axis read as on a linear one, the axis entered as printed.
+
+    Of a level Ciss, and of a single diode curve at another temperature than the table's, nothing tells.
+    """
+    for curve in part.curves:
+        if curve.quantity is Quantity.CISS or (curve.quantity is Quantity.BODY_DIODE and curve.t_j != 25.0):
+            continue
+        for along, axis in (("x", curve.x_axis), ("y", curve.y_axis)):
+            wrong = redivide(curve, along) if axis.scale == "log" else None
+            if wrong is not None:
+                yield Mutation(
+                    "reread", f"{curve.name} {along} read as linear",
+                    with_curves(part, replace(wrong, x_axis=curve.x_axis, y_axis=curve.y_axis)),
+                    re.compile(f"click it again with a log {along} axis: its points were read as on a linear one"),
+                    (curve.name,),
+                )  # fmt: skip
+
+
+MAKERS = (slips, columns, exchanges, divisions, declarations, rereads, reversals, axis_slips, figures, table_values)
 #: The usual run's stride: no divisor of the numbers of factors and axes, so that all of them have their turn.
 STRIDE = 7
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,7 +12,7 @@ from fitter.inspection.finding import Finding
 from fitter.inspection.reading import CAPACITANCES, as_printed, coordinates
 from fitter.part import Curve, Part, Quantity
 
-__all__ = ["inspect"]
+__all__ = ["judge"]
 
 Array = NDArray[np.float64]
 
@@ -23,14 +24,38 @@ _GAP = 0.25
 _INTEGRALS = (*CAPACITANCES, Quantity.GATE_CHARGE)
 #: A point this many standard deviations off the line through its neighbours is a mis-click.
 _FAR = 8.0
+#: A point this near to the line, as a share of the axis, lies on it.
+_NEAR = 0.02
+#: At most this share of a curve's points are single slips.
+_MISCLICKED = 0.1
 
 
-def inspect(part: Part) -> Iterator[Finding]:
-    """Findings on each curve's points and axes."""
+def judge(part: Part) -> tuple[list[Finding], Part]:
+    """Find what is wrong with each curve's points.
+
+    Parameters
+    ----------
+    part : Part
+        As read.
+
+    Returns
+    -------
+    findings : list of Finding
+        Few points, gaps, mis-clicks.
+    part : Part
+        Without the mis-clicked points, which would spoil other comparisons.
+    """
+    findings: list[Finding] = []
+    curves: list[Curve] = []
     for curve in part.curves:
-        yield from _spread(curve)
-        yield from _gaps(curve)
-        yield from _misclicks(curve)
+        off = [*_misclicks(curve)]
+        kept = ~np.isin(curve.lines, [finding.line or 0 for finding in off])
+        # Many of them are no mis-clicks but a curve of another shape.
+        if off and np.count_nonzero(~kept) <= max(1, _MISCLICKED * kept.size):
+            curve = replace(curve, x=curve.x[kept], y=curve.y[kept], lines=curve.lines[kept])
+        findings += [*_spread(curve), *_gaps(curve), *off]
+        curves.append(curve)
+    return findings, replace(part, curves=tuple(curves))
 
 
 def _spread(curve: Curve) -> Iterator[Finding]:
@@ -108,7 +133,12 @@ def _slip(x: Array, y: Array, i: int, curve: Curve) -> str:
     factor = float(np.exp(found - expected)) if curve.y_axis.scale == "log" else found / expected if expected else 1.0
     for power in (-2, -1, 1, 2):
         if factor > 0.0 and abs(np.log(factor / 10.0**power)) < 0.35:
-            return f"a decade slip: divide it by {10.0**power:g}"
+            return f"a decade slip: {'divide' if power > 0 else 'multiply'} its y by {10 ** abs(power)}"
+        # The same along x: where the point would lie on the line then.
+        step = power * np.log(10.0) / curve.x_axis.length
+        place = x[i] - step if curve.x_axis.scale == "log" else x[i] / 10.0**power
+        if x[0] <= place <= x[-1] and abs(y[i] - float(np.interp(place, x[others], y[others]))) < _NEAR:
+            return f"a decade slip: {'divide' if power > 0 else 'multiply'} its x by {10 ** abs(power)}"
     return ""
 
 

@@ -14,6 +14,7 @@ from fitter.inspection.transforms import (
     mirror,
     redivide,
     relabel,
+    reread,
     scale,
     scale_axis,
     scale_points,
@@ -41,6 +42,12 @@ _CONDITIONS = {
     "output_charge.q_oss": ("v_ds",),
     "output_charge.e_oss": ("v_ds",),
     "body_diode.v_sd": ("i_s",),
+}
+#: Rows of the table that one can read in each other's places.
+_ROWS = {
+    "capacitance.c_iss": ("c_oss", "c_rss"),
+    "capacitance.c_oss": ("c_iss", "c_rss"),
+    "capacitance.c_rss": ("c_iss", "c_oss"),
 }
 
 
@@ -99,11 +106,21 @@ def key_of(value: str) -> str:
 
 
 def table_edits(part: Part, value: str, *, rare: bool) -> Iterator[Edit]:
-    """Decade and unit slips of a table value, named as ``group.value``, and of the conditions that it is stated at."""
+    """Slips of a table value, named as ``group.value``, and of its conditions; and its exchange with another row."""
     group_name, _, name = value.partition(".")
     group = getattr(part.stated, group_name)
     stated = getattr(group, name)
     key = key_of(value)
+    for other in () if rare else _ROWS.get(value, ()):
+        taken = getattr(group, other)
+        if taken is not None:
+            both = f"{key}, {key_of(f'{group_name}.{other}')}"
+            yield Edit(
+                rule="table exchange",
+                text=f"exchange {both.replace(', ', ' and ')}",
+                stated=replace(part.stated, **{group_name: replace(group, **{name: taken, other: stated})}),
+                key=both,
+            )
     for factor in _RARE if rare else _USUAL:
         figures = {f: v * factor for f in ("min", "typ", "max") if (v := getattr(stated, f)) is not None}
         changed = replace(group, **{name: replace(stated, **figures)})
@@ -147,7 +164,8 @@ def _scalings(curve: Curve, factors: tuple[float, ...]) -> Iterator[Edit]:
             if axis.printed:
                 yield Edit(
                     rule="slip",
-                    text=f"{verb} the {along} values {how}; its {along}_axis' from and to stay",
+                    text=f"{verb} the {along} values {how}{_read_unit(curve, along, factor)}; its {along}_axis' from "
+                    "and to stay",
                     curves=(scale_points(curve, along, factor),),
                     cost=0.1,
                 )
@@ -180,14 +198,26 @@ def _figure(part: Part, curve: Curve, factors: tuple[float, ...]) -> Iterator[Ed
 def _unit(curve: Curve, along: Along, factor: float) -> str:
     """Where a thousand is meant: the column's name with the unit that would make it so."""
     column, base = (curve.x_column, curve.x_unit) if along == "x" else (curve.y_column, curve.y_unit)
-    symbol, _, unit = column.rpartition("_")
-    now = PREFIXES.get(unit.removesuffix(base)) if base not in ("", "degC") else None
-    if now is None:
+    if base in ("", "degC"):
         return ""
-    for prefix, value in PREFIXES.items():
-        if abs(value / (now * factor) - 1.0) < 1e-6:
-            return f": the column should be {symbol}_{prefix}{base}, not {column}"
+    unit = _scaled_unit(column, base, factor)
+    if unit:
+        return f": the column should be {column.rpartition('_')[0]}_{unit}, not {column}"
     return ": a slip of its unit, or in the axis' calibration"
+
+
+def _read_unit(curve: Curve, along: Along, factor: float) -> str:
+    """Where a thousand is meant: the unit that the points were read in."""
+    column, base = (curve.x_column, curve.x_unit) if along == "x" else (curve.y_column, curve.y_unit)
+    unit = _scaled_unit(column, base, factor) if base not in ("", "degC") else ""
+    return f": they are in {unit}, not in {column.rpartition('_')[2]}" if unit else ""
+
+
+def _scaled_unit(column: str, base: str, factor: float) -> str:
+    """The unit that is a factor times a column's; empty where there is none."""
+    now = PREFIXES.get(column.rpartition("_")[2].removesuffix(base), 0.0)
+    units = (f"{prefix}{base}" for prefix, value in PREFIXES.items() if abs(value - now * factor) < 1e-6 * value)
+    return next(units, "")
 
 
 def _columns(curve: Curve) -> Iterator[Edit]:
@@ -213,6 +243,14 @@ def _divisions(curve: Curve) -> Iterator[Edit]:
                 text=f"click it again with a {true} {along} axis: it was taken for {axis.scale}",
                 curves=(other,),
                 cost=0.5,
+            )
+        read = reread(curve, along)
+        if read is not None:
+            yield Edit(
+                rule="axis division",
+                text=f"click it again with a {axis.scale} {along} axis: its points were read as on a {true} one",
+                curves=(read,),
+                cost=0.45,
             )
         declared = relabel(curve, along)
         if declared is not None and axis.printed:

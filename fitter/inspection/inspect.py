@@ -27,14 +27,15 @@ def inspect(part: Part) -> tuple[Finding, ...]:
         return tuple(unsound)
     rating, rated = ratings.judge(part)
     flat, bent = level.judge(rated)
-    twin, rest = twins.judge(bent)
-    explained, contradictions = mending.mend(rest)
+    clicked, smooth = clicks.judge(bent)
+    twin, rest = twins.judge(smooth)
+    explained, contradictions, mended = mending.mend(rest)
     findings = [
         *unsound,
         *rating,
         *flat,
-        *table.inspect(rated),
-        *clicks.inspect(part),
+        *table.inspect(mended),
+        *clicked,
         *twin,
         *capacitances.notes(part),
         *explained,

@@ -24,13 +24,14 @@ _SUSPECTS = 6
 #: Two edits explain the data alike where their gains differ by less than one contradiction's weight.
 _ALIKE = 1.0
 
-#: Either axis may be the reversed one; a wrong division may be in the points or only in the axis' entry.
-_AMBIGUOUS = ("reversed axis", "axis division")
+#: Either axis may be the reversed one; a wrong division may be in the points or only in the axis' entry, and look like
+#: a slipped decade.
+_AMBIGUOUS = ({"reversed axis"}, {"axis division"}, {"axis division", "slip"})
 
 Key = tuple[str, frozenset[str]]
 
 
-def mend(part: Part) -> tuple[list[Finding], list[Finding]]:
+def mend(part: Part) -> tuple[list[Finding], list[Finding], Part]:
     """Find contradictions and the edits that explain them.
 
     Parameters
@@ -42,6 +43,8 @@ def mend(part: Part) -> tuple[list[Finding], list[Finding]]:
     -------
     edits, contradictions : list of Finding
         What single edits explain, with the comparison as it would be then; and what none explains, after those edits.
+    part : Part
+        With those edits.
     """
     explained: list[Finding] = []
     for _ in range(_MOST_EDITS):
@@ -50,7 +53,7 @@ def mend(part: Part) -> tuple[list[Finding], list[Finding]]:
             break
         explained.append(best.finding())
         part = best.part
-    return explained, [c.finding() for c in _drawn(part).values() if c.contradicts]
+    return explained, [c.finding() for c in _drawn(part).values() if c.contradicts], part
 
 
 def contradiction(part: Part) -> float:
@@ -91,7 +94,7 @@ def _with_rival(trials: list[_Trial]) -> _Trial:
 
 def _is_rival(edit: Edit, best: Edit) -> bool:
     """Whether two edits are worth naming both: one of the table and one of a curve, or two readings of one slip."""
-    alike = edit.rule == best.rule and edit.rule in _AMBIGUOUS
+    alike = {edit.rule, best.rule} in _AMBIGUOUS
     return (edit.stated is None) != (best.stated is None) or (
         alike and [c.name for c in edit.curves] == [c.name for c in best.curves]
     )

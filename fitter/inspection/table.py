@@ -84,7 +84,7 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             "doubtful",
             "qg",
             f"QGS + QGD = {engineering(q_gs + q_gd, 'C')} is above QG = {engineering(q_g, 'C')}",
-            "one of the three is from another row, or QG is stated at another VGS",
+            f"one of the three is from another row, or QG is stated at another VGS{_tenths(q_g, q_gs, q_gd)}",
         )
     plateau = typical(table.v_plateau)
     if plateau and plateau >= table.v_gs:
@@ -133,6 +133,14 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             )
 
 
+def _tenths(q_g: float, q_gs: float, q_gd: float) -> str:
+    """Which of three charges would fit with its decimal point moved by one."""
+    moved = {"QGS": (q_g, 0.1 * q_gs, q_gd), "QGD": (q_g, q_gs, 0.1 * q_gd), "QG": (10.0 * q_g, q_gs, q_gd)}
+    figures = {"QGS": 0.1 * q_gs, "QGD": 0.1 * q_gd, "QG": 10.0 * q_g}
+    fits = [f"{name} = {engineering(figures[name], 'C')}" for name, (g, s, d) in moved.items() if s + d <= g]
+    return f"; {' or '.join(fits)} would fit" if fits else ""
+
+
 def _power_of_ten(factor: float, what: str) -> str:
     for power in (-3, -2, -1, 1, 2, 3):
         if 0.7 <= factor / 10.0**power <= 1.4:
@@ -153,6 +161,7 @@ def _output_charge(part: Part) -> Iterator[Finding]:
             f"Co(er) = {engineering(er, 'F')} is above Co(tr) = {engineering(tr, 'F')}; where Coss falls it cannot be",
             "exchange coss_er_pF and coss_tr_pF: datasheets have printed their footnotes exchanged",
         )
+        er, tr = tr, er
     capacitance = part.stated.capacitance
     c_oss = None if capacitance is None or capacitance.v_ds != o.v_ds else typical(capacitance.c_oss)
     if er and c_oss and er < c_oss / (1.0 + _ROUNDING):

@@ -17,6 +17,7 @@ __all__ = [
     "mirror",
     "redivide",
     "relabel",
+    "reread",
     "scale",
     "scale_axis",
     "scale_points",
@@ -98,6 +99,16 @@ def redivide(curve: Curve, along: Along) -> Curve | None:
             return None
         values, axis = a + (b - a) * np.log(values / a) / np.log(b / a), replace(axis, scale="linear")
     return replace(curve, x=values, x_axis=axis) if along == "x" else replace(curve, y=values, y_axis=axis)
+
+
+def reread(curve: Curve, along: Along) -> Curve | None:
+    """The curve with its points read as its axis is declared, where they were read as if it were divided otherwise."""
+    declared = curve.x_axis if along == "x" else curve.y_axis
+    other = relabel(curve, along)
+    turned = None if other is None else redivide(other, along)
+    if turned is None:
+        return None
+    return replace(turned, x_axis=declared) if along == "x" else replace(turned, y_axis=declared)
 
 
 def mirror(curve: Curve, along: Along) -> Curve | None:

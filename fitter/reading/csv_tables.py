@@ -275,6 +275,8 @@ class _Rows:
             expected += f"; columns are separated by {_SEPARATORS[self._separator]} here, as in the header"
         elif "," in cell and self._separator == ",":
             expected += "; where decimals are written with a comma, separate columns by semicolons"
+        elif cell[-1:].isalpha() and cell[:1].isdigit():
+            expected += "; write units into the column's name only, as in 'ciss_pF'"
         elif "," in cell or "'" in cell or " " in cell:
             expected += "; write no marks between thousands"
         self._problems.add(self._file, f"found {quoted(cell)}", expected, line=line, place=column)
@@ -380,6 +382,8 @@ def _judge_sizes(column: CsvColumn, lines: Sequence[int], file: str, problems: P
                 wrong |= column.values < limits.smallest
     low, high = (f"{end:g} C" if signed else engineering(end, column.base) for end in (limits.smallest, limits.largest))
     expected = f"expected {limits.noun} " + (f"from {low} to {high}" if signed or positive else f"up to {high}")
+    if not column.base:
+        expected += ", not percent"
     for row in np.flatnonzero(wrong).tolist():
         if problems.full(file):
             break
