@@ -193,6 +193,13 @@ def _figure(part: Part, curve: Curve, factors: tuple[float, ...]) -> Iterator[Ed
                 curves=tuple(scale(c, along, factor) for c in all_curves),
                 cost=0.1,
             )
+            yield Edit(
+                rule="slip",
+                text=f"{verb} the {along} values {how}{_read_unit(curve, along, factor)}, in all curves of the figure; "
+                f"each {along}_axis' from and to stay",
+                curves=tuple(scale_points(c, along, factor) for c in all_curves),
+                cost=0.15,
+            )
 
 
 def _unit(curve: Curve, along: Along, factor: float) -> str:

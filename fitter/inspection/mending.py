@@ -70,8 +70,14 @@ def _best(part: Part) -> _Trial | None:
     values = dict.fromkeys(c.stated for c in wrong if c.stated)
     for rare in (False, True):
         trials: list[_Trial] = []
+        tried: set[tuple[str, frozenset[str]]] = set()
         for curve in suspects:
-            found = [_try(part, drawn, edit) for edit in edits(part, curve, rare=rare)]
+            # An edit of a whole figure is proposed by each of its curves.
+            fresh = {
+                (edit.text, frozenset(c.name for c in edit.curves)): edit for edit in edits(part, curve, rare=rare)
+            }
+            found = [_try(part, drawn, edit) for key, edit in fresh.items() if key not in tried]
+            tried |= fresh.keys()
             trials += [trial for trial in found if trial is not None]
             if any(trial.explains_all for trial in trials):
                 break
