@@ -37,7 +37,7 @@ _CONDITIONS = {
     "capacitance.c_rss": ("v_ds",),
     "gate_charge.q_g": ("v_gs",),
     "gate_charge.v_plateau": ("i_d",),
-    "on_resistance.r_ds_on": ("v_gs", "i_d"),
+    "on_resistance.r_ds_on": ("i_d",),
     "transconductance.g_fs": ("i_d",),
     "output_charge.q_oss": ("v_ds",),
     "output_charge.e_oss": ("v_ds",),
