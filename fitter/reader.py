@@ -14,6 +14,8 @@ from collections.abc import Collection
 from dataclasses import dataclass
 from typing import Any, Literal, cast
 
+import numpy as np
+
 from fitter.errors import Problem
 from fitter.part import Curve, Load, Notice, Package, Part, Quantity, Stated, StatedValues
 from fitter.reading.csv_tables import CsvTable, csv_table
@@ -59,14 +61,43 @@ def read_part(folder: str | os.PathLike[str]) -> Part:
         If anything in the folder cannot be used as it stands. It carries all problems of all files.
     """
     problems = Problems()
+    read = _read(folder, problems)
+    if read.part is not None:
+        return read.part
+    # Where the folder can be read as a p-channel part's, one word is wrong and not every figure.
+    if problems.signs:
+        turned = _read(folder, Problems(), p_channel=True)
+        if turned.part is not None and turned.negative > 0.5:
+            problems = Problems()
+            problems.add(
+                PART_FILE,
+                "found 'n', but most voltages and currents of the folder are negative",
+                'expected "p", as which the folder can be read: write channel = "p"; or the values without their signs',
+                line=read.channel_line,
+                place="part.channel",
+            )
+    raise problems.error()
+
+
+@dataclass(frozen=True, kw_only=True)
+class _Read:
+    """What became of a folder: the part, the line of its channel's type, the share of negative columns."""
+
+    part: Part | None = None
+    channel_line: int | None = None
+    negative: float = 0.0
+
+
+def _read(folder: str | os.PathLike[str], problems: Problems, *, p_channel: bool = False) -> _Read:
+    """Read a folder as it says, or as a p-channel part's; what is wrong is noted in the problems."""
     files = InputFolder(folder, problems)
     data = files.read(PART_FILE, largest=MAX_TOML_BYTES)
     text = None if data is None else decoded(data, PART_FILE, problems)
     root = None if text is None else toml_document(text, PART_FILE, problems)
     if root is None:
-        raise problems.error()
+        return _Read()
     notices: list[Notice] = []
-    heading = _heading(root)
+    heading = _heading(root, p_channel)
     # Where the channel's type is not known, signs are not judged either.
     reverse = heading.channel != "n"
     package = _package(root)
@@ -84,8 +115,11 @@ def read_part(folder: str | os.PathLike[str]) -> Part:
     read = [curves.read(entry, number) for number, entry in enumerate(entries, start=1)]
     curves.note_unused_columns()
     if problems or heading.name is None or heading.channel is None:
-        raise problems.error()
-    return Part(
+        return _Read(channel_line=heading.channel_line)
+    negative = curves.share_of_negative()
+    if heading.channel == "p" and not negative:
+        notices.append(_without_signs())
+    part = Part(
         name=heading.name,
         channel=heading.channel,
         notes=heading.notes,
@@ -96,6 +130,7 @@ def read_part(folder: str | os.PathLike[str]) -> Part:
         notices=tuple(notices + _stand_ins(quantities, stated)),
         **heading.ratings,
     )
+    return _Read(part=part, channel_line=heading.channel_line, negative=negative)
 
 
 def missing_data(quantities: Collection[Quantity], stated: StatedValues) -> list[Problem]:
@@ -157,29 +192,39 @@ def _stand_ins(quantities: Collection[Quantity], stated: StatedValues) -> list[N
     ]
 
 
+def _without_signs() -> Notice:
+    return Notice(
+        topic="channel",
+        text="The part is entered as p-channel, and its curves have no signs: their values are taken as magnitudes. If "
+        'it is an n-channel part, write channel = "n".',
+    )
+
+
 @dataclass(frozen=True, kw_only=True)
 class _Heading:
     """The [part] table; None for what could not be read."""
 
     name: str | None
     channel: Literal["n", "p"] | None
+    channel_line: int | None
     notes: str
     ratings: dict[str, float]
 
 
-def _heading(root: TomlTable) -> _Heading:
+def _heading(root: TomlTable, p_channel: bool) -> _Heading:
     expected = "expected a table [part] with name, channel, vds_max_V and vgs_max_V"
     if "part" not in root:
         root.report("", "the table [part] is missing", expected)
     table = root.table("part", expected)
     if table is None:
-        return _Heading(name=None, channel=None, notes="", ratings={})
+        return _Heading(name=None, channel=None, channel_line=None, notes="", ratings={})
     expected = "expected a letter, then letters, digits or underscores, at most 32; it names the subcircuit"
     name = table.text("name", expected)
     if name is not None and not _NAME.fullmatch(name):
         table.report_value("name", name, expected)
         name = None
     channel = cast('Literal["n", "p"] | None', table.choice("channel", ("n", "p"), "the channel's type"))
+    channel = "p" if p_channel and channel == "n" else channel
     notes = _notes(table)
     ratings: dict[str, float] = {}
     keys = table.match(RATINGS)
@@ -191,7 +236,8 @@ def _heading(root: TomlTable) -> _Heading:
         if value is not None:
             ratings[figure.name] = value
     table.close(" of [part]")
-    return _Heading(name=name, channel=channel, notes=notes, ratings=ratings)
+    line = table.line_of("channel")
+    return _Heading(name=name, channel=channel, channel_line=line, notes=notes, ratings=ratings)
 
 
 def _notes(table: TomlTable) -> str:
@@ -345,7 +391,8 @@ class _Curves:
 
     def _table(self, file: str) -> CsvTable | None:
         if file not in self._tables:
-            data = self._files.read(file, largest=MAX_CSV_BYTES)
+            full = self._problems.full(file)
+            data = None if full else self._files.read(file, largest=MAX_CSV_BYTES)
             self._tables[file] = None if data is None else csv_table(data, file, self._problems)
         return self._tables[file]
 
@@ -366,6 +413,12 @@ class _Curves:
                     f"{' and '.join(guessed)}. Reading errors go by an axis' length: enter them as printed.",
                 )
             )
+
+    def share_of_negative(self) -> float:
+        """The share of the columns of voltages and currents whose values are mostly negative."""
+        tables = [table for table in self._tables.values() if table is not None]
+        columns = [column for table in tables for column in table.columns.values() if column.figure.base in ("V", "A")]
+        return float(np.mean([np.nansum(column.values) < 0.0 for column in columns])) if columns else 0.0
 
     def note_unused_columns(self) -> None:
         """Note columns that hold points but belong to no curve."""

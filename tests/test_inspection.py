@@ -13,7 +13,7 @@ from test_inspection_mutations import demo_part, with_curves
 from fitter.inspection import Finding, inspect
 from fitter.inspection.finding import ratio
 from fitter.inspection.rules import comparisons
-from fitter.inspection.transforms import exchange_curves, redivide, scale, scale_axis, scale_points
+from fitter.inspection.transforms import exchange_curves, mirror, redivide, relabel, scale, scale_axis, scale_points
 from fitter.part import Quantity, Stated
 from fitter.reader import read_part
 
@@ -54,6 +54,11 @@ def exchanged(first, second):
 
 def other_division(name, along):
     return lambda part: with_curves(part, redivide(named(part, name), along))
+
+
+def declared(name, along):
+    """Only the axis' scale is entered wrong."""
+    return lambda part: with_curves(part, relabel(named(part, name), along))
 
 
 def stated(group, **values):
@@ -126,7 +131,11 @@ COMPARED = [
     ("forward current", "body diode 25 C", "cargo_80v", stated("body_diode", v_sd=0.6)),
     ("junction voltage", "body diode 150 C", "cargo_80v", scaled("body diode 150 C", "x", 100.0)),
     ("drift", "body diode 150 C", "cargo_80v", exchanged("body diode 25 C", "body diode 150 C")),
-    ("junction law", "body diode 25 C", "cargo_80v", other_division("body diode 25 C", "y")),
+    ("junction law", "body diode 25 C", "cargo_80v", shaped("body diode 25 C", lambda x, y: y**3)),
+    ("range", "transfer 25 C", "cargo_80v", shaped("transfer 25 C", lambda x, y: 0.6 + 0.4 * y)),
+    ("range", "crss", "wall_box_650v", shaped("crss", lambda x, y: 0.9 + 0.1 * y)),
+    ("spread along x", "crss", "wall_box_650v", declared("crss", "x")),
+    ("spread along y", "body diode 25 C", "camper_van_p40v", declared("body diode 25 C", "y")),
     ("temperatures", "rds_on(Tj)", "cargo_80v", scaled("rds_on(Tj)", "x", 10.0)),
     ("at 25 C", "rds_on(Tj)", "cargo_80v", scaled("rds_on(Tj)", "y", 1.3)),
     ("at 25 C", "rds_on(Tj)", "ferry_charger_1200v", scaled("rds_on(Tj)", "y", 10.0)),
@@ -152,7 +161,7 @@ def misclick(part):
 
 #: Rule, topic, what is made wrong in the 80 V part.
 FOUND = [
-    ("order", "stated.threshold.v_gs_th", stated("threshold", v_gs_th=Stated(min=3.0, typ=2.9))),
+    ("order", "stated.threshold.vgs_th", stated("threshold", v_gs_th=Stated(min=3.0, typ=2.9))),
     ("charge sum", "qg", stated("gate_charge", q_gs=60e-9)),
     ("plateau", "v_plateau", stated("gate_charge", v_plateau=11.0)),
     ("plateau above threshold", "v_plateau", stated("gate_charge", v_plateau=2.8)),
@@ -163,6 +172,17 @@ FOUND = [
     ("co definition", "qoss", stated("output_charge", q_oss=50e-9)),
     ("co definition", "eoss", stated("output_charge", e_oss=0.5e-6)),
     ("rating", "stated.gate_charge vdd", stated("gate_charge", v_dd=100.0)),
+    ("rating", "part.vds_max_V", lambda part: replace(part, v_ds_max=800.0)),
+    ("rating", "part.vds_max_V", lambda part: replace(part, v_ds_max=8.0)),
+    ("rating", "part.vgs_max_V", lambda part: replace(part, v_gs_max=200.0)),
+    ("rating", "part.vgs_max_V", lambda part: replace(part, v_gs_max=2.0)),
+    ("stated current", "stated.on_resistance.id", stated("on_resistance", i_d=500.0)),
+    ("supply", "stated.gate_charge vdd", stated("gate_charge", v_dd=4.0)),
+    ("gate-charge test", "gate charge, stated.gate_charge", stated("gate_charge", v_dd=6.0)),
+    ("drive", "stated.on_resistance vgs", stated("on_resistance", v_gs=1.0)),
+    ("threshold current", "stated.threshold id", stated("threshold", i_d=25.0)),
+    ("level", "ciss", shaped("ciss", lambda x, y: np.full_like(y, 0.5))),
+    ("level", "body diode 25 C", shaped("body diode 25 C", lambda x, y: np.full_like(y, 0.5))),
     ("few points", "transfer 25 C", only("transfer 25 C", lambda x, y: np.arange(x.size) % 6 == 0)),
     ("gap", "coss", only("coss", lambda x, y: (y > 0.6) | (y < 0.1))),
     ("mis-click", "ciss", misclick),
@@ -181,7 +201,64 @@ def test_misclick_names_its_line_and_the_decade():
     part = demo_part("cargo_80v")
     (found,) = (f for f in inspect(misclick(part)) if f.rule == "mis-click")
     assert found.line == named(part, "ciss").lines[10]
-    assert "divide it by 10" in found.remedy
+    assert "divide its y by 10" in found.remedy
+
+
+@pytest.mark.parametrize(
+    ("name", "at", "along", "factor", "remedy"),
+    [
+        ("coss", 15, "y", 10.0, "divide its y by 10"),
+        ("transfer 25 C", 15, "y", 0.1, "multiply its y by 10"),
+        ("gate charge", 20, "y", 0.1, "multiply its y by 10"),
+        ("ciss", 30, "y", 0.01, "multiply its y by 100"),
+    ],
+)
+def test_a_decade_slip_of_one_click_is_one_finding(name, at, along, factor, remedy):
+    """What the point spoils besides, such as the order of a curve or its straight line, is not reported again."""
+    part = demo_part("cargo_80v")
+    curve = named(part, name)
+    values = getattr(curve, along).copy()
+    values[at] *= factor
+    (found,) = inspect(with_curves(part, replace(curve, **{along: values})))
+    assert (found.rule, found.line) == ("mis-click", curve.lines[at])
+    assert remedy in found.remedy
+
+
+def test_a_decade_slip_along_x_names_x():
+    part = demo_part("wall_box_650v")
+    curve = named(part, "coss")
+    x = curve.x.copy()
+    x[15] *= 10.0
+    order = np.argsort(x, kind="stable")
+    wrong = replace(curve, x=x[order], y=curve.y[order], lines=curve.lines[order])
+    (found,) = (f for f in inspect(with_curves(part, wrong)) if f.severity != "note")
+    assert (found.rule, found.line) == ("mis-click", curve.lines[15])
+    assert "divide its x by 10" in found.remedy
+
+
+def test_rows_of_the_table_in_each_others_places():
+    values = demo_part("cargo_80v").stated.capacitance
+    part = stated("capacitance", c_iss=values.c_rss, c_rss=values.c_iss)(demo_part("cargo_80v"))
+    (found,) = inspect(part)
+    assert found.rule == "table exchange"
+    assert "exchange stated.capacitance.ciss and stated.capacitance.crss" in found.remedy
+
+
+def test_a_table_slip_is_not_reported_by_every_rule_that_it_breaks():
+    """Ten times the threshold lies above the plateau and the gate drive, too."""
+    (found,) = inspect(stated("threshold", v_gs_th=29.0)(demo_part("cargo_80v")))
+    assert "divide stated.threshold.vgs_th by 10" in found.remedy
+
+
+def test_exchanged_effective_capacitances_are_one_finding():
+    part = stated("output_charge", c_oss_er=2790e-12, c_oss_tr=2040e-12)(demo_part("cargo_80v"))
+    (found,) = inspect(part)
+    assert "exchange coss_er_pF and coss_tr_pF" in found.remedy
+
+
+def test_a_charge_with_its_point_in_the_wrong_place():
+    found = [f for f in inspect(stated("gate_charge", q_gd=147e-9)(demo_part("cargo_80v"))) if f.rule == "charge sum"]
+    assert ["QGD = 14.7 nC or QG = 680 nC would fit" in f.remedy for f in found] == [True]
 
 
 @pytest.mark.parametrize("name", DEMO_PARTS)
@@ -217,6 +294,88 @@ def test_a_unit_slip_names_the_column():
     part = demo_part("cargo_80v")
     (found,) = inspect(scaled("ciss", "y", 1e-3, scale)(part))
     assert "the column should be ciss_nF, not ciss_pF" in found.remedy
+
+
+@pytest.mark.parametrize(("factor", "remedy"), [(10.0, "divide vds_max_V by 10"), (0.01, "multiply vds_max_V by 100")])
+def test_no_curve_is_blamed_for_a_rating(factor, remedy):
+    for name in DEMO_PARTS:
+        part = demo_part(name)
+        (found,) = (f for f in inspect(replace(part, v_ds_max=factor * part.v_ds_max)) if f.severity != "note")
+        assert found.topic == "part.vds_max_V"
+        assert remedy in found.remedy
+
+
+@pytest.mark.parametrize("name", ["coss", "crss", "transfer 25 C"])
+def test_a_constant_that_the_fit_needs_stops_it(name):
+    part = shaped(name, lambda x, y: np.full_like(y, 0.5))(demo_part("cargo_80v"))
+    (found,) = (f for f in inspect(part) if f.severity != "note")
+    assert (found.rule, found.severity, found.topic) == ("level", "stop", name)
+    assert "the same at all" in found.found
+
+
+def with_conditions_of(part, name, other):
+    """A curve entered with the conditions of another one of its quantity."""
+    same = named(part, other)
+    return with_curves(part, replace(named(part, name), t_j=same.t_j, v_gs=same.v_gs, v_ds=same.v_ds))
+
+
+@pytest.mark.parametrize(
+    ("demo_name", "name", "other", "key"),
+    [
+        ("cargo_80v", "transfer 150 C", "transfer 25 C", "tj_C"),
+        ("wall_box_650v", "transfer 150 C", "transfer 25 C", "tj_C"),
+        ("cargo_80v", "output 5 V", "output 6 V", "vgs_V"),
+        ("ferry_charger_1200v", "output 18 V", "output 7 V", "vgs_V"),
+        ("camper_van_p40v", "body diode 150 C", "body diode 25 C", "tj_C"),
+    ],
+)
+def test_two_curves_with_the_same_conditions(demo_name, name, other, key):
+    part = with_conditions_of(demo_part(demo_name), name, other)
+    (found,) = (f for f in inspect(part) if f.severity != "note")
+    assert (found.rule, found.severity, found.file) == ("same conditions", "doubtful", "part.toml")
+    assert set(found.topic.split(", ")) == {name, other}
+    assert f"mend {key}" in found.remedy
+    assert named(part, name).file in found.remedy
+
+
+def test_one_curve_clicked_twice_is_a_note(tmp_path):
+    first, second = (read_part(write_part_folder(device_scenarios.shielded_80v(), tmp_path / s, int(s))) for s in "34")
+    again = replace(named(second, "transfer 25 C"), name="transfer 25 C (2)")
+    (found,) = inspect(replace(first, curves=(*first.curves, again)))
+    assert (found.rule, found.severity) == ("same conditions", "note")
+
+
+@pytest.mark.parametrize(("name", "other"), [("transfer 150 C", "transfer 25 C"), ("crss", "coss"), ("ciss", "coss")])
+def test_points_of_another_curve(name, other):
+    part = demo_part("cargo_80v")
+    source = named(part, other)
+    copied = replace(named(part, name), x=source.x, y=source.y, lines=source.lines)
+    (found,) = (f for f in inspect(with_curves(part, copied)) if f.severity != "note")
+    assert (found.rule, found.severity) == ("same points", "doubtful")
+    assert set(found.topic.split(", ")) == {name, other}
+
+
+def test_either_axis_may_be_the_reversed_one():
+    part = demo_part("cargo_80v")
+    (found,) = inspect(with_curves(part, mirror(named(part, "body diode 150 C"), "x")))
+    assert "its x axis was calibrated from the wrong end" in found.remedy
+    assert "or its y axis was calibrated from the wrong end" in found.remedy or found.remedy.startswith("its y axis")
+
+
+def test_a_condition_that_is_off_is_named_beside_the_curves():
+    """A tenth of the VDS at which the capacitances are stated, or ten times that of all their points."""
+    (found,) = inspect(stated("capacitance", v_ds=4.0)(demo_part("cargo_80v")))
+    assert "divide the x values by 10" in found.remedy
+    assert "multiply stated.capacitance.vds by 10" in found.remedy
+
+
+def test_output_charges_at_another_voltage():
+    part = demo_part("cargo_80v")
+    (found,) = inspect(stated("output_charge", v_ds=4.0)(part))
+    assert "multiply stated.output_charge.vds by 10" in found.remedy
+    found = [f for f in inspect(stated("output_charge", v_ds=20.0)(part)) if f.rule == "co definition"]
+    assert [f.topic for f in found] == ["qoss", "eoss"]
+    assert all("40.1 V would fit all four" in f.remedy for f in found)
 
 
 def test_two_slips_are_both_named():
@@ -321,3 +480,46 @@ def test_ratio_in_a_column_of_ohms_stops_the_fit(fitted):
     curves = tuple(renamed if c is curve else c for c in part.curves)
     found = [f for f in inspect(replace(part, curves=curves)) if f.severity == "stop"]
     assert any("rds_on_ratio" in f.remedy for f in found)
+
+
+ODD = (0.0, -1.0, np.nan, np.inf, 1e300, 1e-300)
+
+
+def odd_curves(curve):
+    for value in ODD:
+        yield replace(curve, x=np.full_like(curve.x, value))
+        yield replace(curve, y=np.full_like(curve.y, value))
+        yield replace(curve, y=np.where(np.arange(curve.y.size) == 3, value, curve.y))
+        yield replace(curve, axis_error=value)
+    yield replace(curve, x=curve.x[:0], y=curve.y[:0], lines=curve.lines[:0])
+    yield replace(curve, x_axis=replace(curve.x_axis, end=curve.x_axis.start))
+
+
+@pytest.mark.parametrize(
+    "name", ["coss", "transfer 25 C", "output 5 V", "gate charge", "body diode 25 C", "rds_on(Tj)"]
+)
+def test_parts_made_by_hand_are_judged_without_a_crash(name):
+    part = demo_part("cargo_80v")
+    for odd in odd_curves(named(part, name)):
+        assert all(isinstance(f, Finding) for f in inspect(with_curves(part, odd)))
+
+
+@pytest.mark.parametrize("group", [f.name for f in dataclasses.fields(demo_part("cargo_80v").stated)])
+def test_tables_made_by_hand_are_judged_without_a_crash(group):
+    part = demo_part("cargo_80v")
+    values = getattr(part.stated, group)
+    for field in dataclasses.fields(values):
+        old = getattr(values, field.name)
+        for value in ODD if isinstance(old, float | Stated) else ():
+            new = replace(values, **{field.name: Stated(typ=value) if isinstance(old, Stated) else value})
+            found = inspect(replace(part, stated=replace(part.stated, **{group: new})))
+            assert all(isinstance(f, Finding) for f in found)
+
+
+def test_what_no_rule_can_work_with_stops_the_fit():
+    part = demo_part("cargo_80v")
+    empty = replace(named(part, "coss"), x=np.array([]), y=np.array([]), lines=np.array([], dtype=np.int64))
+    (found,) = (f for f in inspect(with_curves(part, empty)) if f.severity != "note")
+    assert (found.rule, found.severity, found.topic) == ("soundness", "stop", "coss")
+    (found,) = inspect(replace(part, v_ds_max=0.0))
+    assert (found.rule, found.topic) == ("soundness", "part.vds_max_V")

@@ -1,8 +1,9 @@
 """Every slip in every curve of every demo part: the inspection names the edit that mends it.
 
 Decade and unit slips of either axis (a wrong unit or calibration takes the printed axis with it; or points alone, or
-the axis alone), exchanged columns, exchanged curves, axes taken for linear that were logarithmic, the same slip in a
-whole figure, slips of table values. The usual run tries every seventh, ``slow`` all of them.
+the axis alone), exchanged columns, exchanged curves, axes taken for linear that were logarithmic, or only read or
+declared so, axes calibrated from the wrong end, the same slip in a whole figure, slips of table values. The usual run
+tries every seventh, ``slow`` all of them.
 """
 
 from __future__ import annotations
@@ -18,7 +19,16 @@ from conftest import DEMO_PARTS, ROOT
 
 from fitter.inspection import inspect
 from fitter.inspection.reading import CAPACITANCES
-from fitter.inspection.transforms import exchange_columns, exchange_curves, redivide, scale, scale_axis, scale_points
+from fitter.inspection.transforms import (
+    exchange_columns,
+    exchange_curves,
+    mirror,
+    redivide,
+    relabel,
+    scale,
+    scale_axis,
+    scale_points,
+)
 from fitter.part import Part, Quantity
 from fitter.reader import read_part
 
@@ -180,7 +190,59 @@ def table_values(part):
             )  # fmt: skip
 
 
-MAKERS = (slips, columns, exchanges, divisions, axis_slips, figures, table_values)
+def reversals(part):
+    """Axes calibrated from the wrong end, of one curve and of a whole figure."""
+    for curve in part.curves:
+        for along in ("x", "y"):
+            if curve.quantity is Quantity.OUTPUT and along == "x" and curve.y.max() < 0.1 * curve.y_axis.end:
+                continue  # level all along: the same from either end
+            yield Mutation(
+                f"reversed {along}", f"{curve.name} {along} from the other end",
+                with_curves(part, mirror(curve, along)),
+                re.compile(f"its {along} axis was calibrated from the wrong end"), (curve.name,),
+            )  # fmt: skip
+    three = [part.curves_of(q)[0] for q in CAPACITANCES]
+    for along in ("x", "y"):
+        yield Mutation(
+            f"reversed {along}", f"figure of capacitances {along} from the other end",
+            with_curves(part, *(mirror(c, along) for c in three)),
+            re.compile(f"its {along} axis was calibrated from the wrong end.*in all curves of the figure"),
+            tuple(c.name for c in three),
+        )  # fmt: skip
+
+
+def declarations(part):
+    """Points as they should be, on a logarithmic axis that is declared linear."""
+    for curve in part.curves:
+        for along, axis in (("x", curve.x_axis), ("y", curve.y_axis)):
+            if axis.scale == "log":
+                yield Mutation(
+                    "declared", f"{curve.name} {along} axis declared linear",
+                    with_curves(part, relabel(curve, along)),
+                    re.compile(f'write scale = "log" for its {along}_axis'), (curve.name,),
+                )  # fmt: skip
+
+
+def rereads(part):
+    """Points of a logarithmic axis read as on a linear one, the axis entered as printed.
+
+    Of a level Ciss, and of a single diode curve at another temperature than the table's, nothing tells.
+    """
+    for curve in part.curves:
+        if curve.quantity is Quantity.CISS or (curve.quantity is Quantity.BODY_DIODE and curve.t_j != 25.0):
+            continue
+        for along, axis in (("x", curve.x_axis), ("y", curve.y_axis)):
+            wrong = redivide(curve, along) if axis.scale == "log" else None
+            if wrong is not None:
+                yield Mutation(
+                    "reread", f"{curve.name} {along} read as linear",
+                    with_curves(part, replace(wrong, x_axis=curve.x_axis, y_axis=curve.y_axis)),
+                    re.compile(f"click it again with a log {along} axis: its points were read as on a linear one"),
+                    (curve.name,),
+                )  # fmt: skip
+
+
+MAKERS = (slips, columns, exchanges, divisions, declarations, rereads, reversals, axis_slips, figures, table_values)
 #: The usual run's stride: no divisor of the numbers of factors and axes, so that all of them have their turn.
 STRIDE = 7
 

@@ -428,3 +428,11 @@ def test_guess_of_a_transfer_curve_s_y_axis(tmp_path, lowest, scale):
     files = {"part.toml": without_axes(PART), "transfer.csv": f"vgs_V,id_A\n2,{lowest}\n4,20\n5,120\n"}
     part = read_part(make_folder(tmp_path, files=files))
     assert (part.curves[3].x_axis.scale, part.curves[3].y_axis.scale) == ("linear", scale)
+
+
+@pytest.mark.parametrize(("sign", "noted"), [("", True), ("-", False)])
+def test_a_p_channel_part_without_signs_is_noted(tmp_path, sign, noted):
+    transfer = f"vgs_V,id_A\n{sign}3.5,{sign}2\n{sign}4,{sign}20\n{sign}5,{sign}120\n"
+    edits = {'channel = "n"': 'channel = "p"'}
+    part = read_part(make_folder(tmp_path / "part", edits, files={"transfer.csv": transfer}))
+    assert any('If it is an n-channel part, write channel = "n"' in n.text for n in part.notices) == noted

@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+import shutil
 import time
 
 import pytest
+from conftest import ROOT
 from part_folders import CAPACITANCE, PART, check, curve, make_folder, messages, problems_of
 
 from fitter.reader import MAX_CURVES, MAX_NOTES
 from fitter.reading.csv_tables import MAX_COLUMNS, MAX_CSV_LINE, MAX_ROWS
-from fitter.reading.problems import MAX_PROBLEMS_PER_FILE, quoted
+from fitter.reading.problems import MAX_PROBLEMS, MAX_PROBLEMS_PER_FILE, quoted
 from fitter.reading.toml_tables import MAX_KEYS, MAX_LINE
 
 # The part file's tables and keys
@@ -318,11 +320,52 @@ def test_all_problems_of_all_files_are_listed_at_once(tmp_path):
     ]
 
 
-def test_very_many_problems_are_counted(tmp_path):
+def test_a_p_channel_part_entered_as_n_is_one_problem(tmp_path):
+    folder = shutil.copytree(ROOT / "digitized_curves" / "camper_van_p40v", tmp_path / "part")
+    text = (folder / "part.toml").read_text().replace('channel = "p"', 'channel = "n"')
+    (folder / "part.toml").write_text(text)
+    check(folder, ("part.toml:7 [part.channel]: found 'n', but most voltages", 'write channel = "p"'))
+
+
+def test_a_p_channel_part_with_another_slip_gets_every_message(tmp_path):
+    folder = shutil.copytree(ROOT / "digitized_curves" / "camper_van_p40v", tmp_path / "part")
+    text = (folder / "part.toml").read_text().replace('channel = "p"', 'channel = "n"').replace("vgs_max_V", "vgs_max")
+    (folder / "part.toml").write_text(text)
+    found = messages(folder)
+    assert sum('for a p-channel part, say so in [part]: channel = "p"' in message for message in found) > 40
+
+
+def test_the_article_before_the_name_of_a_curve(tmp_path):
+    append = curve("output", "o.csv", "vgs_V = 5", "vds_V = 3")
+    folder = make_folder(tmp_path, append=append, files={"o.csv": "vds_V,id_A\n0,0\n1,20\n"})
+    check(folder, "'vds_V' is no condition of an output curve")
+
+
+def test_of_very_many_problems_the_first_are_shown(tmp_path):
     text = "vgs_V,id_A\n" + "x,1\n" * 1000
     found = [p for p in problems_of(make_folder(tmp_path, files={"transfer.csv": text})) if p.file == "transfer.csv"]
     assert len(found) == MAX_PROBLEMS_PER_FILE + 1
-    assert found[-1].found == f"{1000 - MAX_PROBLEMS_PER_FILE} more problems"
+    assert found[-1].found == "there may be more problems"
+
+
+def test_the_problems_of_all_files_are_bounded(tmp_path):
+    names = [f"o{n}.csv" for n in range(20)]
+    append = "".join(curve("output", name, f"vgs_V = {n + 3}") for n, name in enumerate(names))
+    files = dict.fromkeys(names, "vds_V,id_A\n" + "x,y\n" * 1000)
+    found = problems_of(make_folder(tmp_path, append=append, files=files))
+    assert MAX_PROBLEMS <= len(found) <= MAX_PROBLEMS + len(names)
+    assert str(found[-1]) == "o3.csv: there may be more problems; mend those above first"
+
+
+def test_large_bad_tables_are_rejected_in_seconds(tmp_path):
+    """Every cell of 20 MiB is wrong; a complaint about each would take a minute."""
+    header = "vds_V,id_A,vgs_V,qg_nC,vsd_V,tj_C,ciss_pF,coss_pF,crss_pF,is_A,rds_on_mohm,vgs_th_V\n"
+    table = header + ("bad cell," * 11 + "bad cell\n") * 19_000
+    append = "".join(curve("output", f"o{n}.csv", f"vgs_V = {n + 3}") for n in range(10))
+    folder = make_folder(tmp_path, append=append, files={f"o{n}.csv": table for n in range(10)})
+    began = time.process_time()
+    assert problems_of(folder)
+    assert time.process_time() - began < 5.0
 
 
 # CSV files

@@ -4,15 +4,16 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fitter.inspection.finding import Comparison
-from fitter.inspection.reading import CAPACITANCES, coordinates, sisters
+from fitter.inspection.reading import CAPACITANCES, as_printed, coordinates, sisters
 from fitter.part import Axis, Curve, Part, Quantity
 
-__all__ = ["corner", "inside", "leaves", "same_figure"]
+__all__ = ["corner", "division", "inside", "leaves", "same_figure"]
 
 Array = NDArray[np.float64]
 
@@ -30,8 +31,12 @@ _LEAVES = 0.5
 _LEAVING = (Quantity.OUTPUT, Quantity.BODY_DIODE)
 #: Output curves may leave the figure early; capacitances are level on axes of many decades.
 _FREE = {(Quantity.OUTPUT, "x"), *((c, "y") for c in CAPACITANCES)}
-#: Nobody prints an output curve that lies on the axis: at its highest it is well over a line's width above it.
-_LINE = 0.02
+#: Nobody prints an output curve that lies on the axis: at its highest it is well over a line's width above it. Where a
+#: body diode's current axis is linear, the voltage hardly changes along the curve.
+_LEAST = {Quantity.OUTPUT: 0.02, Quantity.BODY_DIODE: 0.1}
+#: Half of a curve's points lie near the middle of their range on an axis divided as it was when they were clicked, and
+#: crowd at one end of it divided the other way; the two differ enough from this factor between the ends on.
+_TELLING, _MIDDLE, _ASIDE = 30.0, 0.2, 0.36
 
 
 def _places(values: Array, axis: Axis) -> Array:
@@ -39,9 +44,13 @@ def _places(values: Array, axis: Axis) -> Array:
     return np.asarray((coordinates(values, axis) - start) / axis.length)
 
 
+def _along(curve: Curve) -> tuple[tuple[Literal["x", "y"], Array, Axis], ...]:
+    return ("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)
+
+
 def inside(part: Part, curve: Curve) -> Iterator[Comparison]:
     """Points lie on the printed axes."""
-    for name, values, axis in (("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)):
+    for name, values, axis in _along(curve):
         if not axis.printed:
             continue
         place = np.nan_to_num(_places(values, axis), nan=-1.0)
@@ -52,15 +61,16 @@ def inside(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=curve,
             at=worst,
             off=outside.size / (_MANY * values.size) if outside.size > _MANY * values.size else 0.0,
-            says=f"{outside.size} of {values.size} points lie outside the {name} axis of {axis.start:g} to "
-            f"{axis.end:g} (SI), the farthest at {values[worst]:g}",
+            says=f"{outside.size} of {values.size} points lie outside the {name} axis of "
+            f"{as_printed(curve, name, axis.start)} to {as_printed(curve, name, axis.end)}"
+            + (f", the farthest at {as_printed(curve, name, values[worst])}" if outside.size else ""),
             remedy="look at the axis' from, to and scale, and at the column's unit",
         )
 
 
 def corner(part: Part, curve: Curve) -> Iterator[Comparison]:
     """A curve is not confined to one end of its axes."""
-    for name, values, axis in (("x", curve.x, curve.x_axis), ("y", curve.y, curve.y_axis)):
+    for name, values, axis in _along(curve):
         place = _places(values, axis)
         place = place[np.isfinite(place)]
         if not axis.printed or (curve.quantity, name) in _FREE or place.size < 2:
@@ -68,7 +78,7 @@ def corner(part: Part, curve: Curve) -> Iterator[Comparison]:
         # Level curves lie anywhere on a y axis, but a linear one is chosen to fit the highest point.
         level = name == "y" and axis.scale == "linear"
         covered = float(np.max(place) if level else np.ptp(place))
-        least = _LINE if curve.quantity is Quantity.OUTPUT else _COVERS
+        least = _LEAST.get(curve.quantity, _COVERS)
         yield Comparison(
             rule=f"one corner along {name}",
             curve=curve,
@@ -92,6 +102,27 @@ def leaves(part: Part, curve: Curve) -> Iterator[Comparison]:
         says=f"the curve covers at most {100.0 * covered:.2g} % of its axes: it reaches neither the right nor the top",
         remedy="click the whole curve, or look at the axes' from, to and scale",
     )
+
+
+def division(part: Part, curve: Curve) -> Iterator[Comparison]:
+    """Clicks are spread along a curve as its axes are divided."""
+    for name, values, axis in _along(curve):
+        low, high = float(np.min(values)), float(np.max(values))
+        # Where an axis could be divided either way, and the points tell the two apart.
+        if not axis.printed or axis.start <= 0.0 or low <= 0.0 or values.size < 7 or high < _TELLING * low:
+            continue
+        middle = float(np.median(values))
+        linear, log = (middle - low) / (high - low), math.log(middle / low) / math.log(high / low)
+        own, other = (log, linear) if axis.scale == "log" else (linear, log)
+        yield Comparison(
+            rule=f"spread along {name}",
+            curve=curve,
+            at=values.size // 2,
+            off=abs(own - 0.5) / _ASIDE if abs(other - 0.5) < _MIDDLE else 0.0,
+            says=f"half of the points lie within {100.0 * min(own, 1.0 - own):.2g} % of their range along its "
+            f"{axis.scale} {name} axis",
+            remedy="look at the axis' scale",
+        )
 
 
 def same_figure(part: Part, curve: Curve) -> Iterator[Comparison]:

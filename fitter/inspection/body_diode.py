@@ -7,9 +7,10 @@ from collections.abc import Iterator
 import numpy as np
 
 from fitter.inspection.finding import Comparison, ratio
-from fitter.inspection.reading import error_at, is_cold, read_at, typical, x_where
+from fitter.inspection.reading import error_at, is_cold, read_at, smallest_readable, typical, x_where
 from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part
+from fitter.units import engineering
 
 __all__ = ["current", "currents", "drift", "slope", "voltage"]
 
@@ -39,7 +40,7 @@ def voltage(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="forward voltage",
         curve=curve,
         off=ratio(read / stated, 1.0 / _VOLTAGE, _VOLTAGE, slack=slack),
-        says=f"VSD at {group.i_s:g} A is {read:.3g} V, stated is {stated:g} V",
+        says=f"VSD at {engineering(group.i_s, 'A')} is {read:.3g} V, stated is {stated:g} V",
         remedy="look at the curve's axes and at the row of VSD",
         stated="body_diode.v_sd",
     )
@@ -68,7 +69,7 @@ def current(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="forward current",
         curve=curve,
         off=ratio(factor, 1.0 / _CURRENT, _CURRENT, slack=2.0 * error_at(curve, stated)),
-        says=f"at the stated VSD of {stated:g} V the curve carries {factor:.3g} times {group.i_s:g} A",
+        says=f"at the stated VSD of {stated:g} V the curve carries {factor:.3g} times {engineering(group.i_s, 'A')}",
         remedy="look at the curve's axes and at the row of VSD",
         stated="body_diode.v_sd",
     )
@@ -84,11 +85,14 @@ def currents(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=curve,
             at=int(np.argmax(curve.y)),
             off=max(ratio(top / largest, _LEAST, _MOST), ratio(float(np.min(curve.y)) / largest, 0.0, 1.5)),
-            says=f"the curve runs to {top:.3g} A, {top / largest:.3g} times the largest stated {largest:g} A",
+            says=f"the curve runs to {engineering(top, 'A')}, {top / largest:.3g} times the largest stated "
+            f"{engineering(largest, 'A')}",
             remedy="look at the current axis and column, and at is_A",
         )
     # Between a germanium-like 0.1 V at the least current and ten times a silicon carbide junction's.
-    v_low, v_high = float(curve.x[0]), float(curve.x[-1])
+    # Points that lie on a linear axis say nothing of the voltage.
+    v_low = float(curve.x[np.argmax(curve.y >= min(smallest_readable(curve), top))])
+    v_high = float(curve.x[-1])
     yield Comparison(
         rule="junction voltage",
         curve=curve,
@@ -97,6 +101,10 @@ def currents(part: Part, curve: Curve) -> Iterator[Comparison]:
         says=f"VSD runs from {v_low:.3g} to {v_high:.3g} V; a junction with its resistance has about one to five",
         remedy="look at the VSD axis and column",
     )
+
+
+def _ends(curve: Curve) -> str:
+    return f"{engineering(float(np.min(curve.y)), 'A')} to {engineering(float(np.max(curve.y)), 'A')}"
 
 
 def drift(part: Part, curve: Curve) -> Iterator[Comparison]:
@@ -108,6 +116,7 @@ def drift(part: Part, curve: Curve) -> Iterator[Comparison]:
         cold, hot = (curve, other) if t < u else (other, curve)
         low = max(float(np.min(cold.y)), float(np.min(hot.y)))
         high = min(float(np.max(cold.y)), float(np.max(hot.y)))
+        low = max(low, smallest_readable(cold), smallest_readable(hot))
         level = float(np.sqrt(max(low, 1e-300) * max(low, np.sqrt(max(low * high, 0.0)))))
         v_cold, v_hot = x_where(cold, level), x_where(hot, level)
         if v_cold is None or v_hot is None:
@@ -116,8 +125,8 @@ def drift(part: Part, curve: Curve) -> Iterator[Comparison]:
                 curve=hot,
                 other=cold,
                 off=2.0,
-                says=f"{hot.name} runs from {np.min(hot.y):.3g} to {np.max(hot.y):.3g} A, {cold.name} from "
-                f"{np.min(cold.y):.3g} to {np.max(cold.y):.3g} A: they have no current in common",
+                says=f"{hot.name} runs from {_ends(hot)}, {cold.name} from {_ends(cold)}: they have no current in "
+                "common",
                 remedy="look at the current axes of both",
             )
             continue
@@ -129,15 +138,15 @@ def drift(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=hot,
             other=cold,
             off=abs(slope - middle) / (0.5 * (_FLATTEST - _STEEPEST) + error),
-            says=f"at {level:.3g} A VSD changes by {slope * 1e3:.3g} mV/C from {cold.name} to {hot.name}; it falls "
-            "by one to a few",
+            says=f"at {engineering(level, 'A')} VSD changes by {slope * 1e3:.3g} mV/C from {cold.name} to "
+            f"{hot.name}; it falls by one to a few",
             remedy="exchange the two curves' tj_C, or look at the axes of both",
         )
 
 
 def slope(part: Part, curve: Curve) -> Iterator[Comparison]:
     """A decade of current takes kT/q ln 10 or more."""
-    low = float(curve.y[0])
+    low = max(float(curve.y[0]), smallest_readable(curve))
     if low <= 0.0 or curve.y[-1] < 10.0 * low:
         return
     first, then = x_where(curve, 1.01 * low), x_where(curve, 10.0 * low)
@@ -149,7 +158,8 @@ def slope(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="junction law",
         curve=curve,
         off=max((0.9 * least - (then - first)) / error, 0.0) if error > 0.0 else 0.0,
-        says=f"from {low:.3g} to {10.0 * low:.3g} A VSD rises by {(then - first) * 1e3:.3g} mV; a junction needs "
+        says=f"from {engineering(low, 'A')} to {engineering(10.0 * low, 'A')} VSD rises by "
+        f"{(then - first) * 1e3:.3g} mV; a junction needs "
         f"{least * 1e3:.3g} mV for a decade of current",
         remedy="look at the division of the current axis: logarithmic or linear",
     )

@@ -7,16 +7,18 @@ from collections.abc import Iterator
 import numpy as np
 
 from fitter.inspection.finding import Comparison, Finding, ratio
-from fitter.inspection.reading import error_at, first_curve, log_error, read_at, typical
+from fitter.inspection.reading import error_at, extreme_before, first_curve, log_error, read_at, typical
 from fitter.part import Curve, Part, Quantity, Stated
+from fitter.units import engineering
 
 __all__ = ["definitions", "notes", "rating", "readable", "rising", "stated_charge", "table", "table_reach"]
 
 #: A typical curve and a typical table value differ by less than this factor: max over typ of Ciss is 1.2 to 1.3
 #: (common practice, no source).
 _FACTOR = 1.5
-#: Capacitances are not measured beyond the rating; a log axis may run on to its next decade's end.
-_BEYOND_RATING = 2.0
+#: Capacitances are not measured beyond the rating; a log axis may run on to its next decade's end. Where they are not
+#: measured up to it, they are up to some tens of volts (common practice, no source).
+_BEYOND_RATING, _BELOW_RATING = 2.0, 0.02
 #: A curve reaches at least half the voltage that its table value is stated at.
 _REACH = 0.5
 #: Reading errors from zero that a point read on a linear axis lies off it.
@@ -47,7 +49,8 @@ def table(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="off table",
         curve=curve,
         off=ratio(read / value, 1.0 / _FACTOR, _FACTOR, slack=4.0 * error_at(curve, group.v_ds)),
-        says=f"at {group.v_ds:g} V the curve is {read / value:.3g} times its table value of {value * 1e12:.4g} pF",
+        says=f"at {group.v_ds:g} V the curve is {read / value:.3g} times its table value of "
+        f"{engineering(value, 'F', 4)}",
         remedy="one of the two is wrong: look at the curve's axes, the column's unit, and the table's row and condition"
         + _trap(read / value),
         stated=f"capacitance.{_VALUES[curve.quantity]}",
@@ -79,13 +82,13 @@ def table_reach(part: Part, curve: Curve) -> Iterator[Comparison]:
 
 
 def rating(part: Part, curve: Curve) -> Iterator[Comparison]:
-    """The curve does not run far beyond the rated VDS."""
+    """The curve does not end far beyond the rated VDS, nor at a small part of it."""
     factor = float(curve.x[-1]) / part.v_ds_max
     yield Comparison(
         rule="beyond rating",
         curve=curve,
         at=curve.x.size - 1,
-        off=ratio(factor, 0.0, _BEYOND_RATING),
+        off=ratio(factor, _BELOW_RATING, _BEYOND_RATING),
         says=f"the curve runs to {factor:.3g} times the rated {part.v_ds_max:g} V",
         remedy="look at the VDS axis and at vds_max_V",
     )
@@ -93,9 +96,13 @@ def rating(part: Part, curve: Curve) -> Iterator[Comparison]:
 
 def readable(part: Part, curve: Curve) -> Iterator[Comparison]:
     """On a linear axis nothing can be read that is small against a click's error."""
-    if curve.y_axis.scale != "linear" or not curve.y_axis.printed:
+    if not curve.y_axis.printed:
         return
     lowest = int(np.argmin(curve.y))
+    if curve.y_axis.scale == "log":
+        says = "the lowest point can be read on a log axis"
+        yield Comparison(rule="unreadable", curve=curve, at=lowest, off=0.0, says=says, remedy="")
+        return
     clicks = float(curve.y[lowest]) / (curve.point_error * curve.y_axis.length)
     yield Comparison(
         rule="unreadable",
@@ -138,8 +145,8 @@ def definitions(part: Part, curve: Curve) -> Iterator[Comparison]:
 def _rise(curve: Curve) -> tuple[int, float, float]:
     """Where the curve has risen most above a point before it: its number, ln of the rise, and that in its limit."""
     y, error = np.log(np.maximum(curve.y, 1e-300)), log_error(curve)
-    lowest = np.maximum.accumulate(np.where(y <= np.minimum.accumulate(y), np.arange(y.size), 0))
-    rise = y - y[lowest]
+    lowest, there = extreme_before(curve, -y)
+    rise = np.where(there, y - y[lowest], 0.0)
     # Four standard deviations of the difference of two points.
     limit = np.maximum(4.0 * np.hypot(error, error[lowest]), 1e-9)
     worst = int(np.argmax(rise / limit))
@@ -191,19 +198,18 @@ def stated_charge(part: Part, curve: Curve) -> Iterator[Comparison]:
     v = np.concatenate([[0.0], x[x < group.v_ds], [group.v_ds]])
     c = np.interp(v, x, y)
     for name, unit, stated, integrand in (
-        ("Qoss", "nC", typical(group.q_oss), c),
-        ("Eoss", "uJ", typical(group.e_oss), c * v),
+        ("Qoss", "C", typical(group.q_oss), c),
+        ("Eoss", "J", typical(group.e_oss), c * v),
     ):
         if not stated:
             continue
         integral = float(np.sum(0.5 * (integrand[1:] + integrand[:-1]) * np.diff(v)))
-        figure = stated * (1e9 if unit == "nC" else 1e6)
         yield Comparison(
             rule=name,
             curve=curve,
             off=ratio(integral / stated, 1.0 / _CHARGE, _CHARGE),
             says=f"the curve's integral up to {group.v_ds:g} V is {integral / stated:.3g} times the stated {name} of "
-            f"{figure:.3g} {unit}",
+            f"{engineering(stated, unit)}",
             remedy=f"one of the two is wrong: look at the curve's axes and at the row of {name}",
             stated="output_charge.q_oss" if name == "Qoss" else "output_charge.e_oss",
         )

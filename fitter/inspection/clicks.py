@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fitter.inspection.finding import Finding
-from fitter.inspection.reading import CAPACITANCES, coordinates
+from fitter.inspection.reading import CAPACITANCES, as_printed, coordinates
 from fitter.part import Curve, Part, Quantity
 
-__all__ = ["inspect"]
+__all__ = ["judge"]
 
 Array = NDArray[np.float64]
 
@@ -23,14 +24,38 @@ _GAP = 0.25
 _INTEGRALS = (*CAPACITANCES, Quantity.GATE_CHARGE)
 #: A point this many standard deviations off the line through its neighbours is a mis-click.
 _FAR = 8.0
+#: A point this near to the line, as a share of the axis, lies on it.
+_NEAR = 0.02
+#: At most this share of a curve's points are single slips.
+_MISCLICKED = 0.1
 
 
-def inspect(part: Part) -> Iterator[Finding]:
-    """Findings on each curve's points and axes."""
+def judge(part: Part) -> tuple[list[Finding], Part]:
+    """Find what is wrong with each curve's points.
+
+    Parameters
+    ----------
+    part : Part
+        As read.
+
+    Returns
+    -------
+    findings : list of Finding
+        Few points, gaps, mis-clicks.
+    part : Part
+        Without the mis-clicked points, which would spoil other comparisons.
+    """
+    findings: list[Finding] = []
+    curves: list[Curve] = []
     for curve in part.curves:
-        yield from _spread(curve)
-        yield from _gaps(curve)
-        yield from _misclicks(curve)
+        off = [*_misclicks(curve)]
+        kept = ~np.isin(curve.lines, [finding.line or 0 for finding in off])
+        # Many of them are no mis-clicks but a curve of another shape.
+        if off and np.count_nonzero(~kept) <= max(1, _MISCLICKED * kept.size):
+            curve = replace(curve, x=curve.x[kept], y=curve.y[kept], lines=curve.lines[kept])
+        findings += [*_spread(curve), *_gaps(curve), *off]
+        curves.append(curve)
+    return findings, replace(part, curves=tuple(curves))
 
 
 def _spread(curve: Curve) -> Iterator[Finding]:
@@ -54,6 +79,8 @@ def _gaps(curve: Curve) -> Iterator[Finding]:
         return
     across = np.diff(x[good]) / curve.x_axis.length
     up = np.abs(np.diff(y[good])) / curve.y_axis.length
+    # Where clicks lie so close along x that they may have been sorted in another order, a step is no gap.
+    up[across < 4.0 * np.sqrt(2.0) * curve.point_error] = 0.0
     widest = int(np.argmax(np.hypot(across, up) * (up > 0.0)))
     if up[widest] > _GAP and np.hypot(across[widest], up[widest]) > 3.0 * float(np.median(np.hypot(across, up))):
         yield Finding(
@@ -62,7 +89,8 @@ def _gaps(curve: Curve) -> Iterator[Finding]:
             topic=curve.name,
             file=curve.file,
             line=int(curve.lines[good][widest]),
-            found=f"between {curve.x[good][widest]:.3g} and {curve.x[good][widest + 1]:.3g} (SI) the curve crosses "
+            found=f"between {as_printed(curve, 'x', curve.x[good][widest])} and "
+            f"{as_printed(curve, 'x', curve.x[good][widest + 1])} the curve crosses "
             f"{100.0 * up[widest]:.0f} % of its y axis without a point",
             remedy="click more points there",
         )
@@ -85,15 +113,14 @@ def _misclicks(curve: Curve) -> Iterator[Finding]:
         near = off[max(i - 2, 0) : i + 3]
         if np.abs(off[i]) < np.max(np.abs(near)):
             continue
-        value = curve.y[good][i]
         yield Finding(
             rule="mis-click",
             severity="doubtful",
             topic=curve.name,
             file=curve.file,
             line=int(lines[i]),
-            found=f"the point ({curve.x[good][i]:g}, {value:g}) (SI) lies {abs(off[i]):.0f} standard deviations "
-            f"off its neighbours",
+            found=f"the point ({as_printed(curve, 'x', curve.x[good][i])}, {as_printed(curve, 'y', curve.y[good][i])}) "
+            f"lies {abs(off[i]):.0f} standard deviations off its neighbours",
             remedy=_slip(x, y, int(i), curve) or "look at the point again",
         )
 
@@ -106,7 +133,12 @@ def _slip(x: Array, y: Array, i: int, curve: Curve) -> str:
     factor = float(np.exp(found - expected)) if curve.y_axis.scale == "log" else found / expected if expected else 1.0
     for power in (-2, -1, 1, 2):
         if factor > 0.0 and abs(np.log(factor / 10.0**power)) < 0.35:
-            return f"a decade slip: divide it by {10.0**power:g}"
+            return f"a decade slip: {'divide' if power > 0 else 'multiply'} its y by {10 ** abs(power)}"
+        # The same along x: where the point would lie on the line then.
+        step = power * np.log(10.0) / curve.x_axis.length
+        place = x[i] - step if curve.x_axis.scale == "log" else x[i] / 10.0**power
+        if x[0] <= place <= x[-1] and abs(y[i] - float(np.interp(place, x[others], y[others]))) < _NEAR:
+            return f"a decade slip: {'divide' if power > 0 else 'multiply'} its x by {10 ** abs(power)}"
     return ""
 
 

@@ -11,7 +11,10 @@ from fitter.inspection.transforms import (
     Along,
     exchange_columns,
     exchange_curves,
+    mirror,
     redivide,
+    relabel,
+    reread,
     scale,
     scale_axis,
     scale_points,
@@ -27,6 +30,25 @@ _USUAL = (10.0, 0.1, 1e3, 1e-3)
 #: Two decades; a micro for a pico.
 _RARE = (100.0, 0.01, 1e6, 1e-6)
 _TEMPERATURES = (Quantity.RDS_ON_TEMPERATURE, Quantity.VGS_TH_TEMPERATURE)
+#: Conditions that a curve is read at to compare it with a table value.
+_CONDITIONS = {
+    "capacitance.c_iss": ("v_ds",),
+    "capacitance.c_oss": ("v_ds",),
+    "capacitance.c_rss": ("v_ds",),
+    "gate_charge.q_g": ("v_gs",),
+    "gate_charge.v_plateau": ("i_d",),
+    "on_resistance.r_ds_on": ("i_d",),
+    "transconductance.g_fs": ("i_d",),
+    "output_charge.q_oss": ("v_ds",),
+    "output_charge.e_oss": ("v_ds",),
+    "body_diode.v_sd": ("i_s",),
+}
+#: Rows of the table that one can read in each other's places.
+_ROWS = {
+    "capacitance.c_iss": ("c_oss", "c_rss"),
+    "capacitance.c_oss": ("c_iss", "c_rss"),
+    "capacitance.c_rss": ("c_iss", "c_oss"),
+}
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -44,7 +66,7 @@ class Edit:
     stated : StatedValues or None
         The table as it would be then; None where it stays.
     key : str
-        The edited table value's key in the part file.
+        The key in the part file of the edited table value or condition.
     cost : float
         How unlikely the slip is, to choose between edits that explain the data alike.
     """
@@ -73,6 +95,7 @@ def edits(part: Part, curve: Curve, *, rare: bool) -> Iterator[Edit]:
         yield from _figure(part, curve, _USUAL)
         yield from _columns(curve)
         yield from _divisions(curve)
+        yield from _directions(part, curve)
         yield from _exchanges(part, curve)
 
 
@@ -83,11 +106,21 @@ def key_of(value: str) -> str:
 
 
 def table_edits(part: Part, value: str, *, rare: bool) -> Iterator[Edit]:
-    """Decade and unit slips of a table value, named as ``group.value``."""
+    """Slips of a table value, named as ``group.value``, and of its conditions; and its exchange with another row."""
     group_name, _, name = value.partition(".")
     group = getattr(part.stated, group_name)
     stated = getattr(group, name)
     key = key_of(value)
+    for other in () if rare else _ROWS.get(value, ()):
+        taken = getattr(group, other)
+        if taken is not None:
+            both = f"{key}, {key_of(f'{group_name}.{other}')}"
+            yield Edit(
+                rule="table exchange",
+                text=f"exchange {both.replace(', ', ' and ')}",
+                stated=replace(part.stated, **{group_name: replace(group, **{name: taken, other: stated})}),
+                key=both,
+            )
     for factor in _RARE if rare else _USUAL:
         figures = {f: v * factor for f in ("min", "typ", "max") if (v := getattr(stated, f)) is not None}
         changed = replace(group, **{name: replace(stated, **figures)})
@@ -98,6 +131,16 @@ def table_edits(part: Part, value: str, *, rare: bool) -> Iterator[Edit]:
             key=key,
             cost=0.3,
         )
+        for condition in _CONDITIONS.get(value, ()):
+            name_of = condition.replace("_", "", 1)
+            changed = replace(group, **{condition: getattr(group, condition) * factor})
+            yield Edit(
+                rule="table slip",
+                text=f"{_by(factor)[0]} stated.{group_name}.{name_of} {_by(factor)[1]}",
+                stated=replace(part.stated, **{group_name: changed}),
+                key=f"stated.{group_name}.{name_of}",
+                cost=0.3,
+            )
 
 
 def _by(factor: float) -> tuple[str, str]:
@@ -121,7 +164,8 @@ def _scalings(curve: Curve, factors: tuple[float, ...]) -> Iterator[Edit]:
             if axis.printed:
                 yield Edit(
                     rule="slip",
-                    text=f"{verb} the {along} values {how}; its {along}_axis' from and to stay",
+                    text=f"{verb} the {along} values {how}{_read_unit(curve, along, factor)}; its {along}_axis' from "
+                    "and to stay",
                     curves=(scale_points(curve, along, factor),),
                     cost=0.1,
                 )
@@ -149,19 +193,38 @@ def _figure(part: Part, curve: Curve, factors: tuple[float, ...]) -> Iterator[Ed
                 curves=tuple(scale(c, along, factor) for c in all_curves),
                 cost=0.1,
             )
+            yield Edit(
+                rule="slip",
+                text=f"{verb} the {along} values {how}{_read_unit(curve, along, factor)}, in all curves of the figure; "
+                f"each {along}_axis' from and to stay",
+                curves=tuple(scale_points(c, along, factor) for c in all_curves),
+                cost=0.15,
+            )
 
 
 def _unit(curve: Curve, along: Along, factor: float) -> str:
     """Where a thousand is meant: the column's name with the unit that would make it so."""
     column, base = (curve.x_column, curve.x_unit) if along == "x" else (curve.y_column, curve.y_unit)
-    symbol, _, unit = column.rpartition("_")
-    now = PREFIXES.get(unit.removesuffix(base)) if base not in ("", "degC") else None
-    if now is None:
+    if base in ("", "degC"):
         return ""
-    for prefix, value in PREFIXES.items():
-        if abs(value / (now * factor) - 1.0) < 1e-6:
-            return f": the column should be {symbol}_{prefix}{base}, not {column}"
+    unit = _scaled_unit(column, base, factor)
+    if unit:
+        return f": the column should be {column.rpartition('_')[0]}_{unit}, not {column}"
     return ": a slip of its unit, or in the axis' calibration"
+
+
+def _read_unit(curve: Curve, along: Along, factor: float) -> str:
+    """Where a thousand is meant: the unit that the points were read in."""
+    column, base = (curve.x_column, curve.x_unit) if along == "x" else (curve.y_column, curve.y_unit)
+    unit = _scaled_unit(column, base, factor) if base not in ("", "degC") else ""
+    return f": they are in {unit}, not in {column.rpartition('_')[2]}" if unit else ""
+
+
+def _scaled_unit(column: str, base: str, factor: float) -> str:
+    """The unit that is a factor times a column's; empty where there is none."""
+    now = PREFIXES.get(column.rpartition("_")[2].removesuffix(base), 0.0)
+    units = (f"{prefix}{base}" for prefix, value in PREFIXES.items() if abs(value - now * factor) < 1e-6 * value)
+    return next(units, "")
 
 
 def _columns(curve: Curve) -> Iterator[Edit]:
@@ -179,14 +242,52 @@ def _columns(curve: Curve) -> Iterator[Edit]:
 
 def _divisions(curve: Curve) -> Iterator[Edit]:
     for along, axis in _axes(curve):
+        true = "log" if axis.scale == "linear" else "linear"
         other = redivide(curve, along)
         if other is not None:
-            taken, true = (axis.scale, "log") if axis.scale == "linear" else (axis.scale, "linear")
             yield Edit(
                 rule="axis division",
-                text=f"click it again with a {true} {along} axis: it was taken for {taken}",
+                text=f"click it again with a {true} {along} axis: it was taken for {axis.scale}",
                 curves=(other,),
                 cost=0.5,
+            )
+        read = reread(curve, along)
+        if read is not None:
+            yield Edit(
+                rule="axis division",
+                text=f"click it again with a {axis.scale} {along} axis: its points were read as on a {true} one",
+                curves=(read,),
+                cost=0.45,
+            )
+        declared = relabel(curve, along)
+        if declared is not None and axis.printed:
+            yield Edit(
+                rule="axis division",
+                text=f'write scale = "{true}" for its {along}_axis; the points stay',
+                curves=(declared,),
+                cost=0.4,
+            )
+
+
+def _directions(part: Part, curve: Curve) -> Iterator[Edit]:
+    """Axes that were calibrated from the wrong end, of one curve and of a whole figure."""
+    figure = (curve, *sisters(part, curve))
+    for along, axis in _axes(curve):
+        column = curve.x_column if along == "x" else curve.y_column
+        undone = f"from + to - {column}" if axis.scale == "linear" else f"from x to / {column}"
+        text = f"its {along} axis was calibrated from the wrong end: "
+        if axis.printed:
+            text += f"replace each {column} by {undone} (from and to of its {along}_axis), or "
+        text += f"click it again with the ends of the {along} axis exchanged"
+        for curves, where, cost in (((curve,), "", 0.0), (figure, "; so in all curves of the figure", 0.1)):
+            turned = [mirror(c, along) for c in curves]
+            if where and len(curves) == 1:
+                continue
+            yield Edit(
+                rule="reversed axis",
+                text=text + where,
+                curves=tuple(c for c in turned if c is not None),
+                cost=cost,
             )
 
 

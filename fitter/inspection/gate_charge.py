@@ -7,9 +7,10 @@ from collections.abc import Iterator
 import numpy as np
 
 from fitter.inspection.finding import Comparison, ratio
-from fitter.inspection.reading import first_curve, is_cold, read_at, typical
+from fitter.inspection.reading import extreme_before, first_curve, is_cold, read_at, typical
 from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part, Quantity
+from fitter.units import engineering
 
 __all__ = ["end", "first_leg", "from_zero", "plateau", "rising", "start", "total", "transfer"]
 
@@ -26,7 +27,8 @@ _BELOW_ZERO = 0.08
 
 def rising(part: Part, curve: Curve) -> Iterator[Comparison]:
     """VGS only rises."""
-    fall = np.maximum.accumulate(curve.y) - curve.y
+    highest, there = extreme_before(curve, curve.y)
+    fall = np.where(there, curve.y[highest] - curve.y, 0.0)
     worst = int(np.argmax(fall))
     yield Comparison(
         rule="monotone",
@@ -42,7 +44,7 @@ def start(part: Part, curve: Curve) -> Iterator[Comparison]:
     """The first leg, carried on to VGS = 0, begins at no charge."""
     first = curve.y < 0.35 * float(np.max(curve.y))
     slope = _regression(curve, first)
-    if slope is None:
+    if slope is None or not float(np.max(curve.x)) > 0.0:
         return
     begins = float(np.mean(curve.x[first])) - slope * float(np.mean(curve.y[first]))
     share = begins / float(np.max(curve.x))
@@ -50,7 +52,7 @@ def start(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="start",
         curve=curve,
         off=abs(share) / 0.12,
-        says=f"the first leg meets VGS = 0 at {begins * 1e9:.3g} nC, not near 0",
+        says=f"the first leg meets VGS = 0 at {engineering(begins, 'C')}, not near 0",
         remedy="look at the charge axis' from and to",
     )
 
@@ -91,7 +93,7 @@ def total(part: Part, curve: Curve) -> Iterator[Comparison]:
         curve=curve,
         at=curve.x.size - 1,
         off=ratio(factor, _LEAST_TOTAL, _MOST_TOTAL),
-        says=f"QG at {group.v_gs:g} V is {factor:.3g} times the stated {stated * 1e9:.3g} nC",
+        says=f"QG at {group.v_gs:g} V is {factor:.3g} times the stated {engineering(stated, 'C')}",
         remedy="one of the two is wrong: look at the charge axis and at the table's row",
         stated="gate_charge.q_g",
     )
@@ -164,7 +166,8 @@ def _pair(part: Part, charge: Curve, transfer_curve: Curve) -> Iterator[Comparis
         other=transfer_curve,
         at=charge.x.size // 2,
         off=abs(flattest - expected) / slack,
-        says=f"the plateau lies at {flattest:.3g} V; {transfer_curve.name} carries {current:g} A at {expected:.3g} V",
+        says=f"the plateau lies at {flattest:.3g} V; {transfer_curve.name} carries "
+        f"{engineering(current, 'A')} at {expected:.3g} V",
         remedy="look at the test's id_A and at the VGS axes of both curves",
     )
 
@@ -196,7 +199,7 @@ def _leg(part: Part, charge: Curve, c_iss_curve: Curve) -> Iterator[Comparison]:
         curve=charge,
         other=c_iss_curve,
         off=ratio(slope / c_iss, _LEAST_LEG, _MOST_LEG, slack=error),
-        says=f"the first leg of {charge.name} has {slope * 1e12:.3g} pF, {slope / c_iss:.3g} times Ciss at "
+        says=f"the first leg of {charge.name} has {engineering(slope, 'F')}, {slope / c_iss:.3g} times Ciss at "
         f"{charge.v_dd:g} V",
         remedy="they should be alike: look at the units and axes of both curves",
     )

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from fitter.inspection import capacitances, clicks, mending, table
+from fitter.inspection import capacitances, clicks, level, mending, ratings, soundness, table, twins
 from fitter.inspection.finding import SEVERITIES, Finding
 from fitter.part import Part
 
@@ -22,6 +22,23 @@ def inspect(part: Part) -> tuple[Finding, ...]:
     tuple of Finding
         Worst first, then by file and line; nothing is changed.
     """
-    explained, contradictions = mending.mend(part)
-    findings = [*table.inspect(part), *clicks.inspect(part), *capacitances.notes(part), *explained, *contradictions]
+    unsound, part = soundness.judge(part)
+    if any(finding.topic.startswith("part.") for finding in unsound):
+        return tuple(unsound)
+    rating, rated = ratings.judge(part)
+    flat, bent = level.judge(rated)
+    clicked, smooth = clicks.judge(bent)
+    twin, rest = twins.judge(smooth)
+    explained, contradictions, mended = mending.mend(rest)
+    findings = [
+        *unsound,
+        *rating,
+        *flat,
+        *table.inspect(mended),
+        *clicked,
+        *twin,
+        *capacitances.notes(part),
+        *explained,
+        *contradictions,
+    ]
     return tuple(sorted(findings, key=lambda f: (SEVERITIES.index(f.severity), f.file, f.line or 0, f.rule)))

@@ -11,7 +11,7 @@ from fitter.inspection.reading import PART_FILE
 from fitter.inspection.rules import comparisons
 from fitter.part import Part
 
-__all__ = ["mend"]
+__all__ = ["contradiction", "mend"]
 
 #: One part folder hardly holds more slips than this; each needs a search of its own.
 _MOST_EDITS = 4
@@ -24,10 +24,14 @@ _SUSPECTS = 6
 #: Two edits explain the data alike where their gains differ by less than one contradiction's weight.
 _ALIKE = 1.0
 
+#: Either axis may be the reversed one; a wrong division may be in the points or only in the axis' entry, and look like
+#: a slipped decade.
+_AMBIGUOUS = ({"reversed axis"}, {"axis division"}, {"axis division", "slip"})
+
 Key = tuple[str, frozenset[str]]
 
 
-def mend(part: Part) -> tuple[list[Finding], list[Finding]]:
+def mend(part: Part) -> tuple[list[Finding], list[Finding], Part]:
     """Find contradictions and the edits that explain them.
 
     Parameters
@@ -39,6 +43,8 @@ def mend(part: Part) -> tuple[list[Finding], list[Finding]]:
     -------
     edits, contradictions : list of Finding
         What single edits explain, with the comparison as it would be then; and what none explains, after those edits.
+    part : Part
+        With those edits.
     """
     explained: list[Finding] = []
     for _ in range(_MOST_EDITS):
@@ -47,7 +53,12 @@ def mend(part: Part) -> tuple[list[Finding], list[Finding]]:
             break
         explained.append(best.finding())
         part = best.part
-    return explained, [c.finding() for c in _drawn(part).values() if c.contradicts]
+    return explained, [c.finding() for c in _drawn(part).values() if c.contradicts], part
+
+
+def contradiction(part: Part) -> float:
+    """How much the data contradict each other, as the sum of all contradictions' weights."""
+    return sum(_weight(c) for c in _drawn(part).values() if c.contradicts)
 
 
 def _best(part: Part) -> _Trial | None:
@@ -59,8 +70,14 @@ def _best(part: Part) -> _Trial | None:
     values = dict.fromkeys(c.stated for c in wrong if c.stated)
     for rare in (False, True):
         trials: list[_Trial] = []
+        tried: set[tuple[str, frozenset[str]]] = set()
         for curve in suspects:
-            found = [_try(part, drawn, edit) for edit in edits(part, curve, rare=rare)]
+            # An edit of a whole figure is proposed by each of its curves.
+            fresh = {
+                (edit.text, frozenset(c.name for c in edit.curves)): edit for edit in edits(part, curve, rare=rare)
+            }
+            found = [_try(part, drawn, edit) for key, edit in fresh.items() if key not in tried]
+            tried |= fresh.keys()
             trials += [trial for trial in found if trial is not None]
             if any(trial.explains_all for trial in trials):
                 break
@@ -74,11 +91,19 @@ def _best(part: Part) -> _Trial | None:
 def _with_rival(trials: list[_Trial]) -> _Trial:
     """The best trial, with the best of the other kind (table or curve) where the data cannot tell them apart."""
     best = max(trials, key=lambda trial: trial.gain)
-    others = [t for t in trials if (t.edit.stated is None) != (best.edit.stated is None)]
+    others = [t for t in trials if t is not best and _is_rival(t.edit, best.edit)]
     rival = max(others, key=lambda trial: trial.gain, default=None)
     if rival is None or rival.gain < best.gain - _ALIKE:
         return best
     return replace(best, rival=rival.edit.text)
+
+
+def _is_rival(edit: Edit, best: Edit) -> bool:
+    """Whether two edits are worth naming both: one of the table and one of a curve, or two readings of one slip."""
+    alike = {edit.rule, best.rule} in _AMBIGUOUS
+    return (edit.stated is None) != (best.stated is None) or (
+        alike and [c.name for c in edit.curves] == [c.name for c in best.curves]
+    )
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -131,11 +156,16 @@ def _try(part: Part, drawn: dict[Key, Comparison], edit: Edit) -> _Trial | None:
     """The trial of an edit; None where it does not explain what it touches."""
     names = {c.name for c in edit.curves}
     if edit.stated is not None:
-        names = {c.curve.name for c in drawn.values() if c.stated and key_of(c.stated) == edit.key}
+        named = {c.curve.name for c in drawn.values() if c.stated and key_of(c.stated) == edit.key}
+        # A condition may show in any curve's comparisons.
+        names = named or {c.name for c in part.curves}
     before = {key: c for key, c in drawn.items() if key[1] & names}
     wrong = {key: c for key, c in before.items() if c.contradicts}
     edited = edit.applied(part)
     after = _drawn(edited, names)
+    if edit.rule == "axis slip":
+        # A figure that stays is not mended because a longer axis has larger reading errors.
+        after |= {key: c for key, c in wrong.items() if key in after and after[key].says == c.says}
     # A curve that no longer reaches the table's condition is not thereby mended; another curve may be out of its reach.
     after |= {key: c for key, c in wrong.items() if key not in after and c.other is None}
     lost = wrong.keys() - after.keys()

@@ -10,6 +10,7 @@ from fitter.inspection.finding import Comparison, ratio
 from fitter.inspection.reading import error_at, is_cold, log_error, read_at, typical, x_where
 from fitter.inspection.transfer import largest_current
 from fitter.part import Curve, Part, Quantity
+from fitter.units import engineering
 
 __all__ = ["conductance", "on_resistance", "order", "output_currents", "transfer"]
 
@@ -25,15 +26,15 @@ _PLACES = 5
 
 def _neighbours(part: Part, curve: Curve) -> Iterator[tuple[Curve, Curve]]:
     """The curve with the next ones of the same temperature below and above in VGS, the lower first."""
-    if curve.v_gs is None:
+    at = curve.v_gs
+    if at is None:
         return
-    same = [c for c in part.curves_of(Quantity.OUTPUT) if c.v_gs is not None and c.t_j == curve.t_j]
-    same.sort(key=lambda c: c.v_gs or 0.0)
-    at = next(i for i, c in enumerate(same) if c.name == curve.name)
-    if at > 0:
-        yield same[at - 1], curve
-    if at + 1 < len(same):
-        yield curve, same[at + 1]
+    same = {c.v_gs: c for c in part.curves_of(Quantity.OUTPUT) if c.v_gs is not None and c.t_j == curve.t_j}
+    below, above = [v for v in same if v < at], [v for v in same if v > at]
+    if below:
+        yield same[max(below)], curve
+    if above:
+        yield curve, same[min(above)]
 
 
 def order(part: Part, curve: Curve) -> Iterator[Comparison]:
@@ -54,8 +55,8 @@ def order(part: Part, curve: Curve) -> Iterator[Comparison]:
             other=lower,
             at=int(np.argmin(np.abs(upper.x - v[worst]))),
             off=max(off, 0.0),
-            says=f"at VDS = {v[worst]:.3g} V {upper.name} carries {high[worst]:.3g} A and {lower.name} "
-            f"{low[worst]:.3g} A; more VGS carries more",
+            says=f"at VDS = {v[worst]:.3g} V {upper.name} carries {engineering(high[worst], 'A')} and {lower.name} "
+            f"{engineering(low[worst], 'A')}; more VGS carries more",
             remedy="look at the vgs_V and the axes of both",
         )
 
@@ -69,11 +70,11 @@ def _averaged(curve: Curve) -> float:
 def _slope(curve: Curve) -> tuple[float, float] | None:
     """Conductance [S] near VDS = 0 from the points below half the largest current, and its error as a share."""
     first = (curve.y <= 0.5 * np.max(curve.y)) & (curve.x > 0.0)
-    across = float(np.sum(curve.x[first] * curve.y[first]))
-    if across <= 0.0:
+    across, squared = (float(np.sum(z * curve.y[first])) for z in (curve.x[first], curve.y[first]))
+    if not across > 0.0 or not squared > 0.0:
         return None
     error = float(np.hypot(curve.point_error, curve.axis_error)) * curve.x_axis.length / float(np.mean(curve.x[first]))
-    return float(np.sum(curve.y[first] ** 2)) / across, error
+    return squared / across, error
 
 
 def conductance(part: Part, curve: Curve) -> Iterator[Comparison]:
@@ -119,7 +120,7 @@ def on_resistance(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="on resistance",
         curve=curve,
         off=ratio(read / stated, 1.0 / _RESISTANCE, _RESISTANCE if same else np.inf, slack=error),
-        says=f"the curve has {read / stated:.3g} times the stated RDS(on) of {stated * 1e3:.4g} mohm",
+        says=f"the curve has {read / stated:.3g} times the stated RDS(on) of {engineering(stated, 'ohm', 4)}",
         remedy="look at both axes of the curve, its vgs_V, and the unit of rds_on (ohm or milliohm)",
         stated="on_resistance.r_ds_on",
     )
@@ -172,7 +173,7 @@ def output_currents(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=curve,
             at=int(np.argmax(curve.y)),
             off=ratio(top / largest, 0.0, 60.0),
-            says=f"the curve runs to {top:.3g} A, the table is stated at up to {largest:g} A",
+            says=f"the curve runs to {engineering(top, 'A')}, the table is stated at up to {engineering(largest, 'A')}",
             remedy="look at the current axis and column, and at the stated currents",
         )
     factor = float(curve.x[-1]) / part.v_ds_max

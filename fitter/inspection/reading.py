@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Literal
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -13,12 +15,15 @@ __all__ = [
     "PART_FILE",
     "column_factors",
     "coordinates",
+    "as_printed",
     "error_at",
+    "extreme_before",
     "first_curve",
     "is_cold",
     "log_error",
     "read_at",
     "sisters",
+    "smallest_readable",
     "square_root_line",
     "typical",
     "x_where",
@@ -62,6 +67,14 @@ def column_factors(curve: Curve) -> tuple[float, float]:
     units = ((curve.x_column, curve.x_unit), (curve.y_column, curve.y_unit))
     fx, fy = (si_factor(column.rpartition("_")[2], base) if base else 1.0 for column, base in units)
     return fx, fy
+
+
+def as_printed(curve: Curve, along: Literal["x", "y"], value: float) -> str:
+    """A figure of a curve in its column's own unit, as it stands in the file but for a p-channel part's sign."""
+    column, base = (curve.x_column, curve.x_unit) if along == "x" else (curve.y_column, curve.y_unit)
+    factor = column_factors(curve)[0 if along == "x" else 1]
+    figure = np.format_float_positional(float(f"{value / factor:.4g}"), trim="-")
+    return f"{figure} {column.rpartition('_')[2] if base else ''}".strip()
 
 
 def coordinates(values: Array, axis: Axis) -> Array:
@@ -118,6 +131,24 @@ def log_error(curve: Curve) -> Array:
         step = np.maximum(xs[high] - xs[low], 1e-3 * curve.x_axis.length)
         slope[good] = (ys[high] - ys[low]) / step
     return np.asarray(np.hypot(along_y, slope * share * curve.x_axis.length))
+
+
+def extreme_before(curve: Curve, values: Array) -> tuple[NDArray[np.intp], NDArray[np.bool_]]:
+    """The point with the largest of `values` to the left of each point, and whether there is one.
+
+    Only points farther to the left than reading errors explain: closer ones may have been clicked in any order.
+    """
+    x = np.nan_to_num(coordinates(curve.x, curve.x_axis), nan=-np.inf)
+    # Four standard deviations of the difference of two points.
+    count = np.searchsorted(x, x - 4.0 * np.sqrt(2.0) * curve.point_error * curve.x_axis.length)
+    largest = np.maximum.accumulate(np.where(values >= np.maximum.accumulate(values), np.arange(values.size), 0))
+    return largest[np.maximum(count - 1, 0)], count > 0
+
+
+def smallest_readable(curve: Curve) -> float:
+    """The smallest y that a click tells from zero, ten reading errors of a linear axis; zero on a log axis."""
+    share = float(np.hypot(curve.point_error, curve.axis_error))
+    return 0.0 if curve.y_axis.scale == "log" else 10.0 * share * curve.y_axis.length
 
 
 def error_at(curve: Curve, x: float) -> float:

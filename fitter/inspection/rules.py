@@ -7,7 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from fitter.inspection import axes, body_diode, capacitances, gate_charge, output, temperature, transfer
+from fitter.inspection import axes, body_diode, capacitances, gate_charge, level, output, temperature, transfer
 from fitter.inspection.finding import Comparison
 from fitter.part import Curve, Part, Quantity
 
@@ -15,7 +15,7 @@ __all__ = ["comparisons"]
 
 _Rule = Callable[[Part, Curve], Iterator[Comparison]]
 
-_ANY: tuple[_Rule, ...] = (axes.inside, axes.corner, axes.leaves, axes.same_figure)
+_ANY: tuple[_Rule, ...] = (axes.inside, axes.corner, axes.division, axes.leaves, axes.same_figure, level.range_of)
 _CAPACITANCE: tuple[_Rule, ...] = (
     capacitances.table,
     capacitances.table_reach,

@@ -6,9 +6,13 @@ from collections.abc import Iterator
 from dataclasses import fields
 from itertools import pairwise
 
+from fitter.inspection.edits import key_of
 from fitter.inspection.finding import Finding, Severity
 from fitter.inspection.reading import PART_FILE, typical
+from fitter.inspection.transfer import largest_current
 from fitter.part import Part, Quantity, Stated
+from fitter.reading.schema import STATED
+from fitter.units import engineering
 
 __all__ = ["inspect"]
 
@@ -18,6 +22,11 @@ _ROUNDING = 0.03
 _LEAST_TRIANGLE, _MOST_TRIANGLE = 0.1, 1.5
 #: Thresholds are read at one current throughout a datasheet (common practice, no source).
 _LIKE = 30.0
+#: They are read at a few millionths to some thousandths of the currents that the table is stated at (common practice,
+#: no source).
+_SMALL = 0.05
+#: Gate charge is tested at a fifth to four fifths of the rated VDS (common practice, no source).
+_LEAST_SUPPLY, _OTHER_TEST = 0.12, 6.0
 
 
 def inspect(part: Part) -> Iterator[Finding]:
@@ -49,6 +58,7 @@ def _order(part: Part) -> Iterator[Finding]:
             stated = getattr(values, item.name)
             if not isinstance(stated, Stated):
                 continue
+            base = next(f.base for f in STATED[group.name].values if f.name == item.name)
             known = [
                 (n, v) for n, v in (("min", stated.min), ("typ", stated.typ), ("max", stated.max)) if v is not None
             ]
@@ -57,8 +67,8 @@ def _order(part: Part) -> Iterator[Finding]:
                     yield _finding(
                         "order",
                         "doubtful",
-                        f"stated.{group.name}.{item.name}",
-                        f"{low_name} {low:g} is above {high_name} {high:g} (SI)",
+                        key_of(f"{group.name}.{item.name}"),
+                        f"{low_name} {engineering(low, base, 4)} is above {high_name} {engineering(high, base, 4)}",
                         "look at the row again: min, typ and max must rise",
                     )
 
@@ -73,8 +83,8 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             "charge sum",
             "doubtful",
             "qg",
-            f"QGS + QGD = {(q_gs + q_gd) * 1e9:.3g} nC is above QG = {q_g * 1e9:.3g} nC",
-            "one of the three is from another row, or QG is stated at another VGS",
+            f"QGS + QGD = {engineering(q_gs + q_gd, 'C')} is above QG = {engineering(q_g, 'C')}",
+            f"one of the three is from another row, or QG is stated at another VGS{_tenths(q_g, q_gs, q_gd)}",
         )
     plateau = typical(table.v_plateau)
     if plateau and plateau >= table.v_gs:
@@ -105,9 +115,8 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
             "crss below qgd",
             "doubtful",
             "qgd",
-            f"Crss times VDS = {c_rss * capacitance.v_ds * 1e9:.3g} nC is above QGD = {q_gd * 1e9:.3g} nC, yet "
-            f"Crss only grows "
-            "towards low VDS",
+            f"Crss times VDS = {engineering(c_rss * min(capacitance.v_ds, table.v_dd), 'C')} is above QGD = "
+            f"{engineering(q_gd, 'C')}, yet Crss only grows towards low VDS",
             "look at the units of Crss and QGD",
         )
     if q_gs and c_iss and plateau:
@@ -122,6 +131,14 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
                 f"QGS is {ratio:.3g} times Ciss times the plateau voltage; it should be about once",
                 _power_of_ten(ratio, "QGS or Ciss"),
             )
+
+
+def _tenths(q_g: float, q_gs: float, q_gd: float) -> str:
+    """Which of three charges would fit with its decimal point moved by one."""
+    moved = {"QGS": (q_g, 0.1 * q_gs, q_gd), "QGD": (q_g, q_gs, 0.1 * q_gd), "QG": (10.0 * q_g, q_gs, q_gd)}
+    figures = {"QGS": 0.1 * q_gs, "QGD": 0.1 * q_gd, "QG": 10.0 * q_g}
+    fits = [f"{name} = {engineering(figures[name], 'C')}" for name, (g, s, d) in moved.items() if s + d <= g]
+    return f"; {' or '.join(fits)} would fit" if fits else ""
 
 
 def _power_of_ten(factor: float, what: str) -> str:
@@ -141,9 +158,10 @@ def _output_charge(part: Part) -> Iterator[Finding]:
             "co order",
             "doubtful",
             "coss_er, coss_tr",
-            f"Co(er) = {er * 1e12:.3g} pF is above Co(tr) = {tr * 1e12:.3g} pF; where Coss falls it cannot be",
+            f"Co(er) = {engineering(er, 'F')} is above Co(tr) = {engineering(tr, 'F')}; where Coss falls it cannot be",
             "exchange coss_er_pF and coss_tr_pF: datasheets have printed their footnotes exchanged",
         )
+        er, tr = tr, er
     capacitance = part.stated.capacitance
     c_oss = None if capacitance is None or capacitance.v_ds != o.v_ds else typical(capacitance.c_oss)
     if er and c_oss and er < c_oss / (1.0 + _ROUNDING):
@@ -151,23 +169,31 @@ def _output_charge(part: Part) -> Iterator[Finding]:
             "co order",
             "doubtful",
             "coss_er, coss",
-            f"Co(er) = {er * 1e12:.3g} pF is below Coss = {c_oss * 1e12:.3g} pF at {o.v_ds:g} V; where Coss falls with "
-            "VDS it cannot be",
+            f"Co(er) = {engineering(er, 'F')} is below Coss = {engineering(c_oss, 'F')} at {o.v_ds:g} V; where Coss "
+            "falls with VDS it cannot be",
             "one of the two is from another row or in another unit",
         )
-    for what, unit, stated, implied in (
-        ("qoss", 1e9, q, None if tr is None else tr * o.v_ds),
-        ("eoss", 1e6, e, None if er is None else 0.5 * er * o.v_ds**2),
-    ):
-        if stated and implied and not 0.85 <= stated / implied <= 1.18:
+    yield from _charge_definitions(o.v_ds, q, e, tr, er)
+
+
+def _charge_definitions(
+    v_ds: float, q: float | None, e: float | None, tr: float | None, er: float | None
+) -> Iterator[Finding]:
+    """Co(tr) VDS is Qoss, Co(er) VDS^2/2 is Eoss."""
+    of_q = q / (tr * v_ds) if q and tr else 1.0
+    of_e = e / (0.5 * er * v_ds**2) if e and er else 1.0
+    remedy = "one of them is from another row or in another unit"
+    if q and tr and e and er and 0.85 <= of_e / of_q**2 <= 1.18:
+        remedy = f"look at vds_V of stated.output_charge: {engineering(of_q * v_ds, 'V')} would fit all four"
+    for what, unit, stated, factor, name in (("Qoss", "C", q, of_q, "Co(tr)"), ("Eoss", "J", e, of_e, "Co(er)")):
+        if stated and not 0.85 <= factor <= 1.18:
             yield _finding(
                 "co definition",
                 "doubtful",
-                what,
-                f"{what} = {stated * unit:.3g} differs from {implied * unit:.3g}, which "
-                f"Co({'tr' if what == 'qoss' else 'er'}) means at "
-                f"{o.v_ds:g} V",
-                "one of them is from another row or in another unit",
+                what.lower(),
+                f"{what} = {engineering(stated, unit)} differs from {engineering(stated / factor, unit)}, which {name} "
+                f"means at {engineering(v_ds, 'V')}",
+                remedy,
             )
 
 
@@ -191,30 +217,88 @@ def _recovery(part: Part) -> Iterator[Finding]:
 
 
 def _threshold_current(part: Part) -> Iterator[Finding]:
-    """The table's threshold and its temperature curve are read at like currents."""
+    """Thresholds are read at one small current: that of the table is that of the temperature curve."""
     table = part.stated.threshold
+    if table is None:
+        return
     for curve in part.curves_of(Quantity.VGS_TH_TEMPERATURE):
-        if table is None or not curve.i_d or 1.0 / _LIKE <= table.i_d / curve.i_d <= _LIKE:
-            continue
+        if curve.i_d and not 1.0 / _LIKE <= table.i_d / curve.i_d <= _LIKE:
+            yield _finding(
+                "threshold current",
+                "doubtful",
+                "stated.threshold, " + curve.name,
+                f"VGS(th) is stated at {engineering(table.i_d, 'A')}, its temperature curve at "
+                f"{engineering(curve.i_d, 'A')}",
+                "look at both currents: id_mA against id_A",
+            )
+    load = largest_current(part)
+    if load and table.i_d > _SMALL * load:
         yield _finding(
             "threshold current",
             "doubtful",
-            "stated.threshold, " + curve.name,
-            f"VGS(th) is stated at {table.i_d:g} A, its temperature curve at {curve.i_d:g} A",
-            "look at both currents: id_mA against id_A",
+            "stated.threshold id",
+            f"VGS(th) is stated at {engineering(table.i_d, 'A')}, {table.i_d / load:.3g} times the largest current of "
+            "the table; it is read at microamperes to some milliamperes",
+            "look at its unit: id_mA or id_uA instead of id_A",
         )
 
 
 def _conditions(part: Part) -> Iterator[Finding]:
-    """Conditions beyond the ratings."""
+    """Conditions against the ratings, and those of the gate-charge curve against those of its table."""
     s = part.stated
     voltages = [("stated.gate_charge vdd", s.gate_charge.v_dd, part.v_ds_max)] if s.gate_charge else []
     voltages += [("stated.gate_charge vgs", s.gate_charge.v_gs, part.v_gs_max)] if s.gate_charge else []
     voltages += [("stated.capacitance vds", s.capacitance.v_ds, part.v_ds_max)] if s.capacitance else []
     voltages += [("stated.on_resistance vgs", s.on_resistance.v_gs, part.v_gs_max)] if s.on_resistance else []
+    voltages += [("stated.transconductance vds", s.transconductance.v_ds, part.v_ds_max)] if s.transconductance else []
     voltages += [("stated.output_charge vds", s.output_charge.v_ds, part.v_ds_max)] if s.output_charge else []
     for topic, value, rating in voltages:
         if value > rating * 1.001:
+            tenth = f"{topic} of {value / 10.0:g} V would fit: look at the decimal point, and at the rating"
             yield _finding(
-                "rating", "doubtful", topic, f"{value:g} V is above the rating of {rating:g} V", "look at both again"
+                "rating",
+                "doubtful",
+                topic,
+                f"{value:g} V is above the rating of {rating:g} V",
+                tenth if 0.2 * rating <= value / 10.0 <= rating else "look at both again",
             )
+    share = s.gate_charge.v_dd / part.v_ds_max if s.gate_charge else 1.0
+    if s.gate_charge and share < _LEAST_SUPPLY:
+        yield _finding(
+            "supply",
+            "doubtful",
+            "stated.gate_charge vdd",
+            f"VDD of {s.gate_charge.v_dd:g} V is {share:.2g} times the rated VDS; gate charge is tested at a fifth of "
+            "it and more",
+            "look at vdd_V and at vds_max_V",
+        )
+    v_th = typical(s.threshold.v_gs_th) if s.threshold else None
+    if v_th and s.on_resistance and s.on_resistance.v_gs <= v_th:
+        yield _finding(
+            "drive",
+            "doubtful",
+            "stated.on_resistance vgs",
+            f"RDS(on) is stated at VGS = {s.on_resistance.v_gs:g} V, not above VGS(th) = {v_th:g} V",
+            "look at both again",
+        )
+    yield from _same_test(part)
+
+
+def _same_test(part: Part) -> Iterator[Finding]:
+    """A gate-charge curve is measured at the table's current, and at a fifth to four fifths of the rated voltage."""
+    table = part.stated.gate_charge
+    if table is None:
+        return
+    for curve in part.curves_of(Quantity.GATE_CHARGE):
+        for key, own, stated, unit in (
+            ("vdd_V", curve.v_dd, table.v_dd, "V"),
+            ("id_A", curve.i_d, table.i_d, "A"),
+        ):
+            if own and not 1.0 / _OTHER_TEST <= own / stated <= _OTHER_TEST:
+                yield _finding(
+                    "gate-charge test",
+                    "doubtful",
+                    f"{curve.name}, stated.gate_charge",
+                    f"{key} of the curve is {engineering(own, unit)}, that of the table {engineering(stated, unit)}",
+                    f"one of the two is likely wrong: look at {key} of both",
+                )

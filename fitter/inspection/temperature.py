@@ -10,7 +10,7 @@ from fitter.inspection.finding import Comparison, ratio
 from fitter.inspection.reading import read_at, typical
 from fitter.models.temperature import KELVIN
 from fitter.part import Curve, Part
-from fitter.units import si_factor
+from fitter.units import engineering, si_factor
 
 __all__ = ["range_of", "resistance_at_25", "resistance_rise", "threshold_at_25", "threshold_drift"]
 
@@ -79,14 +79,14 @@ def resistance_at_25(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=curve,
             off=2.0,
             says=f"at 25 C the curve is {figure:.3g} {unit}, as a ratio to 25 C would be, and RDS(on) is stated as "
-            f"{stated * 1e3:.4g} mohm",
+            f"{engineering(stated, 'ohm', 4)}",
             remedy=f"name the column rds_on_ratio instead of {curve.y_column}",
             severity="stop",
             stated="on_resistance.r_ds_on",
         )
         return
     yield from _at_25(
-        curve, stated, _RESISTANCE, f"the stated RDS(on) of {stated * 1e3:.4g} mohm", "on_resistance.r_ds_on"
+        curve, stated, _RESISTANCE, f"the stated RDS(on) of {engineering(stated, 'ohm', 4)}", "on_resistance.r_ds_on"
     )
 
 

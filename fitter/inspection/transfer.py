@@ -9,6 +9,7 @@ import numpy as np
 from fitter.inspection.finding import Comparison, ratio
 from fitter.inspection.reading import error_at, is_cold, log_error, read_at, square_root_line, typical, x_where
 from fitter.part import Curve, Part
+from fitter.units import engineering
 
 __all__ = [
     "crossing",
@@ -97,7 +98,8 @@ def current_at_plateau(part: Part, curve: Curve) -> Iterator[Comparison]:
     else:
         factor = read / group.i_d
         off = ratio(factor, 1.0 / _PLATEAU, _PLATEAU, slack=4.0 * error_at(curve, stated))
-        says = f"at the plateau's {stated:g} V the curve carries {factor:.3g} times the test's {group.i_d:g} A"
+        current = engineering(group.i_d, "A")
+        says = f"at the plateau's {stated:g} V the curve carries {factor:.3g} times the test's {current}"
     yield Comparison(
         rule="current at plateau",
         curve=curve,
@@ -123,7 +125,7 @@ def transconductance(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="transconductance",
         curve=curve,
         off=ratio(factor, 1.0 / _GFS, _GFS, slack=error),
-        says=f"the slope at {group.i_d:g} A is {factor:.3g} times the stated gfs of {stated:g} S",
+        says=f"the slope at {engineering(group.i_d, 'A')} is {factor:.3g} times the stated gfs of {stated:g} S",
         remedy="look at both axes of the curve, and at the row of gfs",
         stated="transconductance.g_fs",
     )
@@ -140,8 +142,9 @@ def on_resistance(part: Part, curve: Curve) -> Iterator[Comparison]:
         rule="on resistance",
         curve=curve,
         off=max(ratio(stated / least, 0.2), ratio(stated * group.i_d / (0.1 * part.v_ds_max), 0.0, _DROP)),
-        says=f"the curve's channel alone has {least * 1e3:.3g} mohm at VGS = {group.v_gs:g} V, RDS(on) is stated as "
-        f"{stated * 1e3:.4g} mohm, a drop of {stated * group.i_d:.3g} V at {group.i_d:g} A",
+        says=f"the curve's channel alone has {engineering(least, 'ohm')} at VGS = {group.v_gs:g} V, RDS(on) is stated "
+        f"as {engineering(stated, 'ohm', 4)}, a drop of {engineering(stated * group.i_d, 'V')} at "
+        f"{engineering(group.i_d, 'A')}",
         remedy="look at the unit of rds_on (ohm or milliohm) and at the current axis",
         stated="on_resistance.r_ds_on",
     )
@@ -149,14 +152,15 @@ def on_resistance(part: Part, curve: Curve) -> Iterator[Comparison]:
 
 def currents(part: Part, curve: Curve) -> Iterator[Comparison]:
     """The curve runs to a small multiple of the stated currents, and VGS stays within its rating."""
-    largest, top = largest_current(part), float(np.max(curve.y))
+    largest, least, top = largest_current(part), float(np.min(curve.y)), float(np.max(curve.y))
     if largest:
         yield Comparison(
             rule="currents",
             curve=curve,
             at=int(np.argmax(curve.y)),
-            off=max(ratio(top / largest, _LEAST_CURRENT, _MOST_CURRENT), ratio(curve.y[0] / largest, 0.0, 1.5)),
-            says=f"the curve runs from {curve.y[0]:.3g} to {top:.3g} A, the table is stated at up to {largest:g} A",
+            off=max(ratio(top / largest, _LEAST_CURRENT, _MOST_CURRENT), ratio(least / largest, 0.0, 1.5)),
+            says=f"the curve runs from {engineering(least, 'A')} to {engineering(top, 'A')}, the table is stated at up "
+            f"to {engineering(largest, 'A')}",
             remedy="look at the current axis and column, and at the stated currents",
         )
     factor = float(curve.x[-1]) / part.v_gs_max
@@ -212,8 +216,8 @@ def hot_and_cold(part: Part, curve: Curve) -> Iterator[Comparison]:
             curve=hot,
             other=cold,
             off=max((v_hot - v_cold) / error, 0.0) if error > 0.0 else 0.0,
-            says=f"at {level:.3g} A {hot.name} needs {v_hot:.3g} V and {cold.name} {v_cold:.3g} V; the threshold falls "
-            "with temperature",
+            says=f"at {engineering(level, 'A')} {hot.name} needs {v_hot:.3g} V and {cold.name} {v_cold:.3g} V; the "
+            "threshold falls with temperature",
             remedy="exchange the two curves' tj_C, or look at the VGS axes",
         )
 

@@ -1,4 +1,4 @@
-"""What a slip makes of a curve, and what undoes it: scaling, exchanging, another division of an axis."""
+"""What a slip makes of a curve, and what undoes it: scaling, exchanging, an axis divided or directed otherwise."""
 
 from __future__ import annotations
 
@@ -14,7 +14,10 @@ __all__ = [
     "Along",
     "exchange_columns",
     "exchange_curves",
+    "mirror",
     "redivide",
+    "relabel",
+    "reread",
     "scale",
     "scale_axis",
     "scale_points",
@@ -96,3 +99,41 @@ def redivide(curve: Curve, along: Along) -> Curve | None:
             return None
         values, axis = a + (b - a) * np.log(values / a) / np.log(b / a), replace(axis, scale="linear")
     return replace(curve, x=values, x_axis=axis) if along == "x" else replace(curve, y=values, y_axis=axis)
+
+
+def reread(curve: Curve, along: Along) -> Curve | None:
+    """The curve with its points read as its axis is declared, where they were read as if it were divided otherwise."""
+    declared = curve.x_axis if along == "x" else curve.y_axis
+    other = relabel(curve, along)
+    turned = None if other is None else redivide(other, along)
+    if turned is None:
+        return None
+    return replace(turned, x_axis=declared) if along == "x" else replace(turned, y_axis=declared)
+
+
+def mirror(curve: Curve, along: Along) -> Curve | None:
+    """The curve with an axis counted from its other end; None where a point has no place on it.
+
+    A point at the value v of an axis from a to b is then at a + b - v where it is linear, at a b/v where it is
+    logarithmic.
+    """
+    axis, values = (curve.x_axis, curve.x) if along == "x" else (curve.y_axis, curve.y)
+    if axis.scale == "linear":
+        values = axis.start + axis.end - values
+    elif np.all(values > 0.0):
+        values = axis.start * axis.end / values
+    else:
+        return None
+    if along == "y":
+        return replace(curve, y=values)
+    order = np.argsort(values, kind="stable")
+    return replace(curve, x=values[order], y=curve.y[order], lines=curve.lines[order])
+
+
+def relabel(curve: Curve, along: Along) -> Curve | None:
+    """The curve with an axis declared the other way, its points as they are; None where it cannot be logarithmic."""
+    axis, values = (curve.x_axis, curve.x) if along == "x" else (curve.y_axis, curve.y)
+    if axis.scale == "linear" and (axis.start <= 0.0 or np.any(values <= 0.0)):
+        return None
+    axis = replace(axis, scale="log" if axis.scale == "linear" else "linear")
+    return replace(curve, x_axis=axis) if along == "x" else replace(curve, y_axis=axis)

@@ -209,6 +209,10 @@ class _Rows:
         ragged: list[tuple[int, str, int]] = []
         whole = True
         for line, text in lines:
+            # Of a file with very many problems the rest need not be looked at.
+            if self._problems.full(self._file):
+                whole = False
+                break
             cells = self.cells(line, text)
             if cells is None:
                 whole = False
@@ -223,6 +227,8 @@ class _Rows:
             del ragged[1:]
         hint = f"columns are separated by {_SEPARATORS[self._separator]} here"
         for line, text, count in ragged:
+            if self._problems.full(self._file):
+                break
             commas = self._separator == "," and count > len(header)
             self._problems.add(
                 self._file,
@@ -246,7 +252,7 @@ class _Rows:
 
     def number(self, line: int, column: str, cell: str) -> float:
         """Read a cell as a number; nan where it is blank, or is none, which is noted."""
-        if not cell:
+        if not cell or self._problems.full(self._file):
             return math.nan
         comma = self._separator != "," and "," in cell
         pattern = _COMMA_NUMBER if comma else _NUMBER
@@ -269,6 +275,8 @@ class _Rows:
             expected += f"; columns are separated by {_SEPARATORS[self._separator]} here, as in the header"
         elif "," in cell and self._separator == ",":
             expected += "; where decimals are written with a comma, separate columns by semicolons"
+        elif cell[-1:].isalpha() and cell[:1].isdigit():
+            expected += "; write units into the column's name only, as in 'ciss_pF'"
         elif "," in cell or "'" in cell or " " in cell:
             expected += "; write no marks between thousands"
         self._problems.add(self._file, f"found {quoted(cell)}", expected, line=line, place=column)
@@ -374,7 +382,11 @@ def _judge_sizes(column: CsvColumn, lines: Sequence[int], file: str, problems: P
                 wrong |= column.values < limits.smallest
     low, high = (f"{end:g} C" if signed else engineering(end, column.base) for end in (limits.smallest, limits.largest))
     expected = f"expected {limits.noun} " + (f"from {low} to {high}" if signed or positive else f"up to {high}")
+    if not column.base:
+        expected += ", not percent"
     for row in np.flatnonzero(wrong).tolist():
+        if problems.full(file):
+            break
         problems.add(
             file,
             f"found {quoted(column.texts[row])}",

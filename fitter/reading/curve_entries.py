@@ -8,7 +8,7 @@ from typing import Literal, cast
 
 from fitter.part import Load, Quantity
 from fitter.reading.input_files import file_name
-from fitter.reading.problems import quoted
+from fitter.reading.problems import quoted, with_article
 from fitter.reading.schema import CONDITIONS, CURVES, Condition, CurveSchema
 from fitter.reading.toml_tables import PLACEHOLDER, TomlTable
 from fitter.units import engineering
@@ -223,7 +223,7 @@ def _conditions(
     belonging = {condition.figure.symbol for condition in schema.conditions}
     for symbol, (key, _) in keys.items():
         if symbol not in belonging:
-            table.report(key, f"'{key}' is no condition of a {quantity} curve", _belongs(schema))
+            table.report(key, f"'{key}' is no condition of {with_article(f'{quantity} curve')}", _belongs(schema))
     found: dict[str, float] = {}
     for condition in schema.conditions:
         figure = condition.figure
@@ -267,7 +267,7 @@ def _load(table: TomlTable, quantity: Quantity | None, stated: StatedConditions,
     schema = CURVES[quantity]
     if not schema.has_load:
         if "load" in table:
-            table.report("load", f"'load' is no condition of a {quantity} curve", _belongs(schema))
+            table.report("load", f"'load' is no condition of {with_article(f'{quantity} curve')}", _belongs(schema))
         return None
     if load is None and "load" not in table and stated.load is not None:
         assumed.append(f"The curve's 'load' is not given; '{stated.load}' is taken from stated.gate_charge.")

@@ -79,6 +79,8 @@ def curve_points(table: CsvTable, quantity: Quantity, file: str, problems: Probl
     x_given = np.array([text != "" for text in x_column.texts], dtype=bool)
     y_given = np.array([text != "" for text in y_column.texts], dtype=bool)
     for row in np.flatnonzero(y_given & ~x_given):
+        if problems.full(file):
+            break
         problems.add(
             file,
             f"the cell is blank, but {y_column.header} is {quoted(y_column.texts[row])}",
@@ -175,6 +177,7 @@ def _upright(
             # Taken from zero, a zero stays the plain one.
             values = 0.0 - values
         else:
+            problems.signs += 1
             problems.add(
                 file,
                 "most values are negative",
@@ -187,6 +190,8 @@ def _upright(
         return values
     for position in np.flatnonzero(values < -small):
         row = rows[position]
+        if problems.full(file):
+            break
         problems.add(
             file,
             f"found {quoted(column.texts[row])}",
@@ -265,6 +270,8 @@ def curve_axis(
     off = np.flatnonzero(values <= 0.0)
     # Of a figure that is never zero, that is the complaint already.
     for position in off if figure.sign != "positive" else ():
+        if problems.full(file):
+            break
         problems.add(
             file,
             f"found {quoted(texts[position])} on a logarithmic axis",

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import difflib
-from collections import Counter
 from collections.abc import Iterable
 
 from fitter.errors import PartFolderError, Problem
 
-__all__ = ["MAX_PROBLEMS_PER_FILE", "Problems", "nearest", "printable", "quoted"]
+__all__ = ["MAX_PROBLEMS", "MAX_PROBLEMS_PER_FILE", "Problems", "nearest", "printable", "quoted", "with_article"]
 
+MAX_PROBLEMS = 200
 MAX_PROBLEMS_PER_FILE = 50
 _LONGEST_QUOTE = 40
 _LONGEST_INTEGER_BITS = 128
@@ -65,13 +65,32 @@ def nearest(word: str, known: Iterable[str]) -> str:
     return by_lower[found[0]] if found else ""
 
 
+def with_article(noun: str) -> str:
+    """Put the indefinite article before a noun.
+
+    Examples
+    --------
+    >>> with_article("output curve"), with_article("transfer curve"), with_article("rds_on_temperature curve")
+    ('an output curve', 'a transfer curve', 'an rds_on_temperature curve')
+    """
+    # Names of curves are spoken: "r" begins with a vowel where it is spelled out.
+    return f"{'an' if noun[:1] in 'aeio' or noun.startswith('rds') else 'a'} {noun}"
+
+
 class Problems:
-    """The problems found so far, by file."""
+    """The problems found so far, by file.
+
+    Attributes
+    ----------
+    signs : int
+        How many of them are voltages or currents of a p-channel part's sign.
+    """
 
     def __init__(self) -> None:
+        self.signs = 0
         # By file, in the order in which they were found; dictionaries, since a file can have very many.
         self._by_file: dict[str, dict[Problem, None]] = {}
-        self._more: Counter[str] = Counter()
+        self._count = 0
 
     def add(self, file: str, found: str, expected: str, *, line: int | None = None, place: str = "") -> None:
         """Note one problem; the arguments are those of `Problem`. The same one twice is noted once."""
@@ -79,19 +98,24 @@ class Problems:
         problems = self._by_file.setdefault(file, {})
         if problem in problems:
             return
-        if len(problems) < MAX_PROBLEMS_PER_FILE:
+        if not self.full(file):
             problems[problem] = None
-        else:
-            self._more[file] += 1
+            self._count += 1
+
+    def full(self, file: str) -> bool:
+        """Whether no more problems of a file are noted: the rest of it need not be looked at."""
+        return self._count >= MAX_PROBLEMS or len(self._by_file.get(file, ())) >= MAX_PROBLEMS_PER_FILE
 
     def __bool__(self) -> bool:
         return bool(self._by_file)
 
     def error(self) -> PartFolderError:
-        """All of them as one error: file by file, each file's by line, and no more of one file than help."""
+        """All of them as one error: file by file, each file's by line, and no more than help."""
         shown: list[Problem] = []
         for file, problems in self._by_file.items():
+            if not problems:
+                break
             shown += sorted(problems, key=lambda problem: problem.line or 0)
-            if more := self._more[file]:
-                shown.append(Problem(file=file, found=f"{more} more problems", expected="mend those above first"))
+            if self.full(file):
+                shown.append(Problem(file=file, found="there may be more problems", expected="mend those above first"))
         return PartFolderError(shown)

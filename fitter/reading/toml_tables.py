@@ -104,8 +104,12 @@ class TomlTable:
         """Note a problem with a key; with the table itself where `key` is empty."""
         path = (*self._path, key) if key else self._path
         place = "".join(f" {p}" if isinstance(p, int) else f".{p}" for p in path).lstrip(".")
-        line = next((self._lines[path[:n]] for n in range(len(path), 0, -1) if path[:n] in self._lines), None)
-        self._problems.add(self._file, found, expected, line=line, place=printable(place, longest=80))
+        self._problems.add(self._file, found, expected, line=self.line_of(key), place=printable(place, longest=80))
+
+    def line_of(self, key: str) -> int | None:
+        """Line of a key, or of what it would stand in; None where that cannot be told."""
+        path = (*self._path, key) if key else self._path
+        return next((self._lines[path[:n]] for n in range(len(path), 0, -1) if path[:n] in self._lines), None)
 
     def report_value(self, key: str, value: object, expected: str) -> None:
         """Note that the value of a key is not what was expected."""
@@ -245,7 +249,11 @@ class TomlTable:
         if (reverse and figure.polar) or figure.sign == "magnitude":
             value = abs(value)
         if excess(figure, value):
-            self.report_value(key, number, expectation(figure))
+            hint = ""
+            if value < 0.0 and figure.polar:
+                self._problems.signs += 1
+                hint = '; for a p-channel part, say so in [part]: channel = "p"'
+            self.report_value(key, number, expectation(figure) + hint)
             return None
         return value
 
