@@ -41,6 +41,7 @@ _TELLS = {
     "alpha": "output curves around the knee", "lambda": "an output curve in saturation",
     "r_s": _LOW_OUTPUT, "r_d": _LOW_OUTPUT,
     "vth_tc": _HOT, "k_exponent": _HOT, "rd_exponent": "RDS(on) over Tj",
+    "w_exponent": "VGS(th) over Tj",
     "is_d": _FORWARD, "n_d": _FORWARD, "r_dio": _FORWARD, "eg_d": _HOT_FORWARD, "rdio_exponent": _HOT_FORWARD,
 }  # fmt: skip
 

@@ -39,7 +39,7 @@ _OUTPUT_WIDENINGS = (1.0, 4.0, 12.0, 36.0, 100.0)
 #: -10 mV/C. Gain factor: mobility that phonons limit, T^-1.5. Drain resistance: RDS(on) at 150 C over 25 C is 2.3
 #: to 2.4
 #: for superjunction parts, 1.2 to 1.9 for silicon carbide ones.
-_ASSUMED_LAWS = {"vth_tc": -6e-3, "k_exponent": 1.5, "rd_exponent": 2.0}
+_ASSUMED_LAWS = {"vth_tc": -6e-3, "k_exponent": 1.5, "rd_exponent": 2.0, "w_exponent": 1.0}
 #: What is taken of the channel where no curve given shows it. Bulk-charge factor: over devices built from doping and
 #: oxides, with output curves, it came out between 1.3 and 3.9.
 UNSEEN_CHANNEL = {"alpha": 2.0, "lambda": 0.0, "r_d": 0.0}
@@ -140,7 +140,8 @@ def fit_temperature(part: Part, channel: Stage) -> Stage | None:
     if groups & {observations.HOT_TRANSFER, observations.HOT_OUTPUT}:
         seen |= {"vth_tc", "k_exponent"}
     if Quantity.VGS_TH_TEMPERATURE in groups:
-        seen.add("vth_tc")
+        # Far below the currents of a transfer curve: the two together show the bend between them.
+        seen |= {"vth_tc", "w_exponent"} if seen else {"vth_tc"}
     if Quantity.RDS_ON_TEMPERATURE in groups:
         seen.add("rd_exponent")
     free = tuple(d.name for d in TEMPERATURE.values() if d.name in seen)

@@ -29,6 +29,9 @@ TEMPERATURE = {
     "c": ParameterDefinition(
         name="rd_exponent", unit="", meaning="drain resistance rises as (T/T0)^rd_exponent",
         lower=-5.0, upper=8.0, scale="linear"),
+    "d": ParameterDefinition(
+        name="w_exponent", unit="", meaning="width of the bend at threshold rises as (T/T0)^w_exponent",
+        lower=-2.0, upper=3.0, scale="linear"),
 }  # fmt: skip
 
 
@@ -44,18 +47,21 @@ class TemperatureLaws:
         Exponent of the gain factor.
     c : array_like
         Exponent of the drain resistance.
+    d : array_like
+        Exponent of the width of the bend at threshold: 1 where that is the thermal voltage's alone.
     """
 
     a: Value
     b: Value
     c: Value
+    d: Value = 1.0
 
 
 def channel_at(t_j: ArrayLike, channel: Channel, laws: TemperatureLaws) -> Channel:
     """The channel at another junction temperature.
 
-    VTH + a (T - T0), K (T/T0)^-b, RS (T/T0)^b, RD (T/T0)^c, w T/T0, with T in kelvin. RS follows 1/K because it
-    carries the mobility reduction, theta/K.
+    VTH + a (T - T0), K (T/T0)^-b, RS (T/T0)^b, RD (T/T0)^c, w (T/T0)^d, with T in kelvin. RS follows 1/K because
+    it carries the mobility reduction, theta/K.
 
     Parameters
     ----------
@@ -85,5 +91,5 @@ def channel_at(t_j: ArrayLike, channel: Channel, laws: TemperatureLaws) -> Chann
         k=np.asarray(channel.k) * ratio ** -np.asarray(laws.b),
         r_s=np.asarray(channel.r_s) * ratio ** np.asarray(laws.b),
         r_d=np.asarray(channel.r_d) * ratio ** np.asarray(laws.c),
-        w=np.asarray(channel.w) * ratio,
+        w=np.asarray(channel.w) * ratio ** np.asarray(laws.d),
     )
