@@ -31,6 +31,8 @@ Model = TypeVar("Model", bound=FittedModel)
 
 #: A misfit of more than this many times the reading errors is worth a notice.
 _WORTH_SAYING = 1.5
+#: A current that lambda raises by more than this share at VDD is worth a notice, where no curve reaches that far.
+_DRAWN_OUT = 0.2
 
 _PACKAGE = {
     "r_g": ("ohm", "internal gate resistance"),
@@ -132,13 +134,13 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
 
 _FIXED_AS: dict[str, Origin] = {"lambda": "fixed"}
 _WHY_FIXED = {
-    "alpha": "shows on no curve given but output curves; taken as over typical devices",
+    "alpha": "only output curves show it; taken as 2, which is typical",
     "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
     "r_d": "is taken as 0: the stated RDS(on), or an output curve at low VDS, would tell",
 }
 _WHY_ASSUMED = {
     "c_ch": "shows on no curve at VGS = 0; the on-state input capacitance is taken as 1.5 (1.0 to 2.3) Ciss(VDD)",
-    "s_gs": "shows on no curve at VGS = 0; over published tables QGS is 0.93 to 1 of Ciss times the plateau",
+    "s_gs": "shows on no curve at VGS = 0; taken so that QGS is about 0.97 (0.93 to 1) of Ciss times the plateau",
     "c_acc": "shows on no curve at VGS = 0; taken as Crss at the lowest digitized VDS",
 }
 
@@ -176,6 +178,7 @@ def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter])
     said = [(p.name, f"{p.name} {p.note}") for p in worth_saying]
     open_ones = [p.name for p in parameters.values() if p.origin in ("fitted", "not determined")]
     said += [(u.names[0], u.text) for u in undetermined(result.estimate, open_ones)]
+    said += _drawn_out(part, parameters)
     curves = {c.name: c for c in part.curves}
     said += [(o.curve, _left_aside(curves[o.curve], o.index, o.sigmas)) for o in result.outliers]
     for group in dict.fromkeys(b.group for b in result.solution.blocks if b.group):
@@ -191,6 +194,16 @@ def _notices(part: Part, result: FitResult, parameters: Mapping[str, Parameter])
     if not result.solution.converged:
         said.append(("fit", "the fit stopped before it reached its tolerance; do not trust it unseen"))
     return [Notice(topic=topic, text=text) for topic, text in said]
+
+
+def _drawn_out(part: Part, parameters: Mapping[str, Parameter]) -> list[tuple[str, str]]:
+    """Where the rise of the current with VDS is drawn out far beyond the curves that show it."""
+    v_dd, seen = part.supply, part.highest_v_ds
+    rise = parameters["lambda"].value * v_dd
+    if rise < _DRAWN_OUT or seen >= v_dd:
+        return []
+    how = f"digitized up to {seen:.3g} V and drawn out to {v_dd:.3g} V, adds {100.0 * rise:.0f} % to it there"
+    return [("lambda", f"the rise of ID with VDS, {how}: a real drift zone ends that rise earlier")]
 
 
 def _left_aside(curve: Curve, index: int, sigmas: float) -> str:

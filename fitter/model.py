@@ -318,7 +318,7 @@ class FittedModel:
         table = self.part.stated.gate_charge
         if table is not None:
             return OperatingPoint(v_dd=table.v_dd, i_d=table.i_d, v_gs=table.v_gs, load=table.load)
-        v_dd, v_gs = 0.5 * self.part.v_ds_max, 0.5 * self.part.v_gs_max
+        v_dd, v_gs = self.part.supply, 0.5 * self.part.v_gs_max
         transistor = self.transistor()
         half_way = 0.5 * (v_gs + scalar(transistor.channel.v_th))
         curves = self.part.curves_of(Quantity.TRANSFER)

@@ -291,3 +291,15 @@ class Part:
     def curves_of(self, quantity: Quantity) -> tuple[Curve, ...]:
         """The curves of one quantity, in the order of the part file; empty where there are none."""
         return tuple(curve for curve in self.curves if curve.quantity is quantity)
+
+    @property
+    def supply(self) -> float:
+        """VDD of the gate-charge test, or half the voltage rating where none is stated [V]."""
+        table = self.stated.gate_charge
+        return 0.5 * self.v_ds_max if table is None else table.v_dd
+
+    @property
+    def highest_v_ds(self) -> float:
+        """Highest VDS at which a drain current was digitized; 0 where none was [V]."""
+        transfer, output = self.curves_of(Quantity.TRANSFER), self.curves_of(Quantity.OUTPUT)
+        return max([c.v_ds or 0.0 for c in transfer] + [float(c.x[-1]) for c in output], default=0.0)

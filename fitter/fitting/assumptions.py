@@ -35,9 +35,9 @@ _RATIO, _RATIO_LOW, _RATIO_HIGH = 1.5, 1.0, 2.3
 _SIGMA_RATIO = math.log(_RATIO_HIGH / _RATIO_LOW) / (2.0 * 1.96)
 #: 1-sigma of ln(Cacc/Cgd(lowest VDS)): a factor of 1.5 either way at 95 % (a judgement, no source).
 _SIGMA_ACCUMULATION = math.log(1.5) / 1.96
-#: Share of Cgs over the body, and its 1-sigma: over published tables QGS/(Ciss Vplateau) runs from 0.93 to 1, which is
-#: a share of 0 to 0.3.
-BODY_SHARE, BODY_SHARE_SPREAD = 0.1, 0.08
+#: Share of Cgs over the body, and its 1-sigma. QGS/(Ciss Vplateau) is 0.98 to 1.00 over some published tables, a share
+#: of 0 to 0.1, and 0.93 to 0.97 over devices built from oxides and doping, a share of 0.1 to 0.3.
+BODY_SHARE, BODY_SHARE_SPREAD = 0.13, 0.08
 #: Cch tends to 0 over this share of Ciss.
 _BEND = 0.1
 
@@ -63,10 +63,9 @@ class GateAssumption:
     @classmethod
     def of(cls, part: Part) -> GateAssumption:
         """The assumption for a part."""
-        table = part.stated.gate_charge
         curves = part.curves_of(Quantity.CRSS) or part.curves_of(Quantity.CISS)
         return cls(
-            v_dd=0.5 * part.v_ds_max if table is None else table.v_dd,
+            v_dd=part.supply,
             v_low=max(0.0, min((float(c.x[0]) for c in curves), default=0.0)),
         )
 

@@ -59,9 +59,9 @@ TABLE_ERROR = {
 #: no point at low VDS was digitized: there it keeps the capacitance at 0 V from running away.
 _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
 
-#: How far a current may be expected to rise by channel-length modulation up to the gate-charge test's VDD, 1-sigma: the
-#: drift zone takes what VDS rises by beyond a few volts (a judgement, no source). It matters where output curves bend
-#: otherwise than a square law does, and a straight rise over some volts would be drawn out to hundreds.
+#: By what share a current may be expected to rise with VDS up to the gate-charge test's VDD, 1-sigma: the drift zone
+#: takes what VDS rises by beyond some volts (a judgement, no source). Without it a rise over the few volts of output
+#: curves is drawn out to hundreds.
 _MODULATION_SPREAD = 0.5
 
 _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
@@ -292,9 +292,7 @@ def _expected(name: str, value: float, spread: float, function: Callable[[Values
 
 def modulation_block(part: Part) -> ScalarBlock:
     """What is known of channel-length modulation before any point is seen, for fits in which lambda is free."""
-    table = part.stated.gate_charge
-    v_dd = 0.5 * part.v_ds_max if table is None else table.v_dd
-    return _expected("lambda", 0.0, _MODULATION_SPREAD / v_dd, lambda values: values["lambda"])
+    return _expected("lambda", 0.0, _MODULATION_SPREAD / part.supply, lambda values: values["lambda"])
 
 
 def channel_blocks(part: Part) -> list[Block]:
