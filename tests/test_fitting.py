@@ -259,7 +259,7 @@ def test_whole_fit_recovers_the_gate_charge_of_its_own_curves(form):
         gate_charge_curve(Transistor.from_values(v), POINT).reading for v in (truth, result.estimate.values)
     )  # fmt: skip
     for name in ("total", "q_gs", "q_gd", "v_plateau"):
-        assert float(getattr(found, name)) == pytest.approx(float(getattr(true, name)), rel=2e-3), name
+        assert float(getattr(found, name)) == pytest.approx(float(getattr(true, name)), rel=3e-3), name
 
 
 # Choice of form
