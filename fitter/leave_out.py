@@ -19,6 +19,7 @@ from fitter.fitting.observations import TABLE_ERROR
 from fitter.fitting.solve import solve
 from fitter.fitting.space import ParameterSpace, Values
 from fitter.fitting.stages import UNSEEN_CHANNEL
+from fitter.fitting.turns import solve_in_turn
 from fitter.models.types import Numbers, scalar
 from fitter.part import Curve, Part, Quantity, Stated
 
@@ -144,8 +145,12 @@ def _without(part: Part, result: FitResult, gone: Collection[Block]) -> Estimate
     unseen = [name for name in own if name not in seen]
     fitted = [name for name in own if name in seen]
     held = {**fixed, **{name: scalar(before[name]) for name in unseen}}
-    space = model_space(fitted, held, blocks)
-    solution = solve(blocks, space, {name: scalar(before[name]) for name in space.names if name in before}, rough=True)
+    if any(b.group == Quantity.TRANSFER for b in gone):
+        # Without it hot curves may be all that is left to tell the channel.
+        solution = solve(blocks, model_space(fitted, held, blocks), before, rough=True)
+    else:
+        solution = solve_in_turn(blocks, fitted, held, before, rough=True)
+    space = solution.space
     # What only this fit drove onto a bound is not known for that.
     bounded = {n for n, at in zip(result.solution.space.names, result.solution.on_bound, strict=True) if at}
     solution = replace(solution, on_bound=solution.on_bound & np.array([name in bounded for name in space.names]))

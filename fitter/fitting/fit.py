@@ -9,12 +9,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.fitting.assumptions import GATE_CHARGE_ONLY, GateAssumption, assumed_space
-from fitter.fitting.blocks import Block, model_space
+from fitter.fitting.blocks import Block
 from fitter.fitting.forms import FormTrial, fit_capacitances
 from fitter.fitting.intervals import Estimate
 from fitter.fitting.misfit import BlockStatistics, block_statistics
 from fitter.fitting.outliers import Outlier
-from fitter.fitting.solve import Solution, solve
+from fitter.fitting.solve import Solution
 from fitter.fitting.space import ParameterSpace, Values
 from fitter.fitting.stages import (
     Stage,
@@ -24,6 +24,7 @@ from fitter.fitting.stages import (
     fit_temperature,
     recovery_transit_time,
 )
+from fitter.fitting.turns import solve_in_turn
 from fitter.models.diode import TRANSIT_TIME
 from fitter.models.types import scalar
 from fitter.part import Part
@@ -106,8 +107,7 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
     else:
         # They stand in no residual; what is assumed of them is added after the fit.
         fixed |= GATE_CHARGE_ONLY
-    space = model_space(free, fixed, blocks)
-    solution, statistics = _widened(blocks, space, start, [stage.solution for stage in done])
+    solution, statistics = _widened(blocks, free, fixed, start, [stage.solution for stage in done])
     result = _result(solution, free, fixed)
     recovery = recovery_transit_time(part)
     if recovery is not None and "is_d" in free:
@@ -116,7 +116,7 @@ def fit(part: Part, *, use_gate_charge: bool = False) -> FitResult:
         result = assumed_space(GateAssumption.of(part), *result)
     return FitResult(
         estimate=Estimate(space=result[0], coordinates=result[1], covariance=result[2]),
-        on_bound=tuple(n for n, at in zip(space.names, solution.on_bound, strict=True) if at and n in free),
+        on_bound=tuple(n for n, at in zip(solution.space.names, solution.on_bound, strict=True) if at and n in free),
         solution=solution, trials=capacitances.trials, statistics=statistics, outliers=tuple(outliers),
         used_gate_charge=use_gate_charge,
     )  # fmt: skip
@@ -128,17 +128,22 @@ def _found(stage: Stage) -> dict[str, float]:
 
 
 def _widened(
-    blocks: Sequence[Block], space: ParameterSpace, start: Values, before: Sequence[Solution]
+    blocks: Sequence[Block],
+    free: Sequence[str],
+    fixed: Mapping[str, float],
+    start: Values,
+    before: Sequence[Solution],
 ) -> tuple[Solution, tuple[BlockStatistics, ...]]:
     """Least squares with standard deviations widened by the misfit that earlier fits left, and again by its own."""
     statistics = tuple(s for solution in before for s in block_statistics(solution))
     for last in (False, True):
         widths = {s.name: s.inflation for s in statistics}
         widened = [b if b.held else replace(b, inflation=widths.get(b.name, 1.0)) for b in blocks]
-        solution = solve(widened, space, start, rough=not last, evaluations=_LAST_LOOK if last else _FIRST_LOOK)
+        looks = _LAST_LOOK if last else _FIRST_LOOK
+        solution = solve_in_turn(widened, free, fixed, start, rough=not last, evaluations=looks)
         if last and not solution.converged:
             # Along a flat valley with a bound in it steps stay small; the looser tolerance is met there all the same.
-            solution = solve(widened, space, solution.values, rough=True)
+            solution = solve_in_turn(widened, free, fixed, solution.values, rough=True)
         start, statistics = solution.values, block_statistics(solution)
     return solution, statistics
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import lmfit
 import numpy as np
@@ -53,6 +53,8 @@ class Solution:
         What was minimised: half of `chi_square`, or its robust counterpart.
     converged : bool
         Whether the fit reached its tolerance.
+    followers : tuple of str
+        Parameters of a second fit in which all the others were held; none in a single fit.
     """
 
     space: ParameterSpace
@@ -64,6 +66,44 @@ class Solution:
     chi_square: float
     cost: float
     converged: bool
+    followers: tuple[str, ...] = ()
+
+    def followed_by(self, second: Solution) -> Solution:
+        """Both this fit and a second one, in which this one's parameters were held.
+
+        Parameters
+        ----------
+        second : Solution
+            With other free parameters and other blocks.
+
+        Returns
+        -------
+        Solution
+            Its covariance carries what is uncertain in the first fit on to the second one's parameters.
+        """
+        fixed = {name: value for name, value in self.space.fixed.items() if name not in second.space.names}
+        space = replace(self.space, free=(*self.space.free, *second.space.free), fixed=fixed)
+        coordinates = np.concatenate([self.coordinates, second.coordinates])
+        blocks = (*self.blocks, *second.blocks)
+        return Solution(
+            space=space,
+            coordinates=coordinates,
+            blocks=blocks,
+            residuals={**self.residuals, **second.residuals},
+            jacobian=_jacobian(blocks, space, coordinates),
+            on_bound=np.concatenate([self.on_bound, second.on_bound]),
+            chi_square=self.chi_square + second.chi_square,
+            cost=self.cost + second.cost,
+            converged=self.converged and second.converged,
+            followers=second.space.names,
+        )
+
+    def _second(self) -> tuple[int, int]:
+        """Row and column at which a second fit begins."""
+        columns = len(self.space.free) - len(self.followers)
+        names = set(self.followers)
+        rows = sum(self.residuals[b.name].size for b in self.blocks if names.isdisjoint(b.parameters))
+        return rows, columns
 
     @property
     def values(self) -> Values:
@@ -76,27 +116,45 @@ class Solution:
 
         Rows and columns of those on a bound are zero; directions that the data leave open have a huge variance.
         """
-        inside = ~self.on_bound
-        result = np.zeros((inside.size, inside.size))
-        information = self.jacobian[:, inside].T @ self.jacobian[:, inside]
-        # Scaled to a unit diagonal first: the information spans many decades otherwise.
-        seen = np.diag(information)
-        scale = np.sqrt(np.where(seen > 0.0, seen, 1.0))
-        scaled = information / np.outer(scale, scale) + _LEAST_INFORMATION * np.eye(scale.size)
-        inverse = np.linalg.inv(scaled)
-        result[np.ix_(inside, inside)] = inverse / np.outer(scale, scale)
+        row, column = self._second()
+        result = np.zeros((self.on_bound.size, self.on_bound.size))
+        first = _inverse(self.jacobian[:row, :column], self.on_bound[:column])
+        result[:column, :column] = first
+        if self.followers:
+            by_first, by_second = self.jacobian[row:, :column], self.jacobian[row:, column:]
+            own = _inverse(by_second, self.on_bound[column:])
+            # By how much the second fit's parameters move with the first one's.
+            moves = -own @ by_second.T @ by_first
+            result[column:, :column] = moves @ first
+            result[:column, column:] = result[column:, :column].T
+            result[column:, column:] = own + moves @ first @ moves.T
         return result
 
     def leverage(self) -> Mapping[str, float]:
         """How many parameters' worth of freedom each block's data took: the trace of its part of the hat matrix."""
-        inside = ~self.on_bound
-        hat = np.linalg.qr(self.jacobian[:, inside])[0] ** 2
+        row, column = self._second()
+        parts = [self.jacobian[:row, :column][:, ~self.on_bound[:column]]]
+        parts += [self.jacobian[row:, column:][:, ~self.on_bound[column:]]] if self.followers else []
+        hat = np.concatenate([np.sum(np.linalg.qr(part)[0] ** 2, axis=1) for part in parts])
         taken, row = {}, 0
         for block in self.blocks:
             rows = self.residuals[block.name].size
             taken[block.name] = float(np.sum(hat[row : row + block.points]))
             row += rows
         return taken
+
+
+def _inverse(jacobian: Array, on_bound: NDArray[np.bool_]) -> Array:
+    """Inverse of the information that derivatives carry; zero for what is on a bound."""
+    inside = ~on_bound
+    result = np.zeros((inside.size, inside.size))
+    information = jacobian[:, inside].T @ jacobian[:, inside]
+    # Scaled to a unit diagonal first: the information spans many decades otherwise.
+    seen = np.diag(information)
+    scale = np.sqrt(np.where(seen > 0.0, seen, 1.0))
+    scaled = information / np.outer(scale, scale) + _LEAST_INFORMATION * np.eye(scale.size)
+    result[np.ix_(inside, inside)] = np.linalg.inv(scaled) / np.outer(scale, scale)
+    return result
 
 
 def solve(
@@ -106,7 +164,7 @@ def solve(
     *,
     robust: bool = False,
     rough: bool = False,
-    evaluations: int = _MOST_EVALUATIONS,
+    evaluations: int | None = None,
 ) -> Solution:
     """Fit the free parameters to the blocks.
 
@@ -122,8 +180,8 @@ def solve(
         Whether far-off points count by their distance instead of its square (soft L1), for a first pass.
     rough : bool
         Whether a tolerance of 1e-4 will do, for a fit from which only another one starts.
-    evaluations : int
-        How often the residuals may be computed.
+    evaluations : int, optional
+        How often the residuals may be computed; 400 times by default.
 
     Returns
     -------
@@ -168,7 +226,7 @@ def solve(
         )
     tolerance = _ROUGH_TOLERANCE if rough else _TOLERANCE
     with np.errstate(invalid="ignore", divide="ignore"):  # of lmfit's own covariance, which is not used
-        result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations).minimize(
+        result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations or _MOST_EVALUATIONS).minimize(
             method="least_squares", jac=jacobian, x_scale="jac", ftol=tolerance, xtol=tolerance, gtol=tolerance,
             loss="soft_l1" if robust else "linear", f_scale=_ROBUST_SCALE,
         )  # fmt: skip

@@ -150,9 +150,6 @@ def fit_temperature(part: Part, channel: Stage) -> Stage | None:
     rough = solve(blocks, model_space(free, held, blocks), _ASSUMED_LAWS, robust=True, rough=True)
     marked, outliers = set_aside(rough)
     solution = solve(marked, model_space(free, held, marked), rough.values, rough=True)
-    # What the laws cannot follow must not bend the channel at 25 degC.
-    widths = {block.group: widening(solution, block.group) for block in marked}
-    marked = tuple(replace(b, inflation=widths[b.group], held=True) for b in marked)
     return Stage(blocks=marked, free=free, fixed=fixed, outliers=outliers, solution=solution)
 
 
