@@ -62,7 +62,7 @@ _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
 #: By what share a current may be expected to rise with VDS up to the gate-charge test's VDD, 1-sigma: the drift zone
 #: takes what VDS rises by beyond some volts (a judgement, no source). Without it a rise over the few volts of output
 #: curves is drawn out to hundreds.
-_MODULATION_SPREAD = 0.25
+_MODULATION_SPREAD = 0.5
 
 _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
 _DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
