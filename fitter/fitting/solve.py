@@ -81,7 +81,9 @@ class Solution:
         Solution
             Its covariance carries what is uncertain in the first fit on to the second one's parameters.
         """
-        fixed = {name: value for name, value in self.space.fixed.items() if name not in second.space.names}
+        moved = {*self.space.names, *second.space.names}
+        every = {**second.space.fixed, **self.space.fixed}
+        fixed = {name: value for name, value in every.items() if name not in moved}
         space = replace(self.space, free=(*self.space.free, *second.space.free), fixed=fixed)
         coordinates = np.concatenate([self.coordinates, second.coordinates])
         blocks = (*self.blocks, *second.blocks)
@@ -100,10 +102,9 @@ class Solution:
 
     def _second(self) -> tuple[int, int]:
         """Row and column at which a second fit begins."""
-        columns = len(self.space.free) - len(self.followers)
         names = set(self.followers)
-        rows = sum(self.residuals[b.name].size for b in self.blocks if names.isdisjoint(b.parameters))
-        return rows, columns
+        second = sum(self.residuals[b.name].size for b in self.blocks if not names.isdisjoint(b.parameters))
+        return len(self.jacobian) - second, len(self.space.free) - len(names)
 
     @property
     def values(self) -> Values:

@@ -48,13 +48,12 @@ def solve_in_turn(
     laws = [name for name in free if name in _LAWS]
     hot = [block for block in blocks if not _LAWS.isdisjoint(block.parameters)]
     leading = [block for block in blocks if _LAWS.isdisjoint(block.parameters)]
-    space = model_space([name for name in free if name not in _LAWS], fixed, leading)
+    known = {name: value for name, value in fixed.items() if not hot or name not in _LAWS}
+    space = model_space([name for name in free if name not in _LAWS], known, leading)
     solution = solve(leading, space, start, rough=rough, evaluations=evaluations)
     if not hot:
         return solution
-    found = {name: scalar(value) for name, value in solution.values.items() if name not in (*laws, *_shifts(leading))}
+    shifts = {name for block in leading for name in block.nuisances}
+    found = {name: scalar(value) for name, value in solution.values.items() if name not in shifts}
+    found |= {name: value for name, value in fixed.items() if name in _LAWS}
     return solution.followed_by(solve(hot, model_space(laws, found, hot), start, rough=rough, evaluations=evaluations))
-
-
-def _shifts(blocks: Sequence[Block]) -> list[str]:
-    return [name for block in blocks for name in block.nuisances]
