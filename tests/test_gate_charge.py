@@ -432,11 +432,12 @@ def reachable(draw):
     k, overdrive, v_dd = draw(logarithmic(0.1, 1000.0)), draw(st.floats(0.2, 4.0)), draw(logarithmic(10.0, 1000.0))
     i_d, share = 0.5 * k * overdrive**2, st.floats(0.0, 1.0)
     values = {
-        "c_gs": c, "c_ch": c * draw(share), "c_acc": c * draw(st.floats(0.1, 1.0)),
+        "c_gs": c, "s_gs": 0.8 * draw(share), "c_ch": c * draw(share), "c_acc": c * draw(st.floats(0.1, 1.0)),
         "c0_gd": c * draw(st.floats(0.1, 1.0)), "phi_gd": draw(logarithmic(0.3, 5.0)),
         "m_gd": draw(st.floats(0.3, 0.8)), "cf_gd": 1e-3 * c * draw(share),
         "c0_ds": c, "phi_ds": 0.8, "m_ds": 0.5, "cf_ds": 0.0,
-        "v_th": v_th, "k": k, "w": w, "lambda": draw(st.one_of(st.just(0.0), logarithmic(1e-4, 0.02))),
+        "v_th": v_th, "k": k, "w": w, "alpha": draw(st.floats(0.7, 4.0)),
+        "lambda": draw(st.one_of(st.just(0.0), logarithmic(1e-4, 0.02))),
         "r_s": min(0.02 * v_dd, 1.0) * draw(share) / i_d, "r_d": 0.2 * v_dd * draw(share) / i_d,
     }  # fmt: skip
     for n in range(1, draw(st.integers(0, 2)) + 1):

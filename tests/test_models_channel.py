@@ -42,7 +42,7 @@ STEP = 1e-30
 EXAMPLES = settings(derandomize=True, deadline=None, max_examples=100)
 K_OVER_Q = physical_constants["Boltzmann constant in eV/K"][0]
 
-POWER = Channel(v_th=3.0, k=120.0, w=0.09, lam=0.004, r_s=1.2e-3, r_d=3.1e-3)
+POWER = Channel(v_th=3.0, k=120.0, w=0.09, alpha=1.3, lam=0.004, r_s=1.2e-3, r_d=3.1e-3)
 
 
 def ideal(**changes):
@@ -65,6 +65,7 @@ def channels(v_th=(-5.0, 8.0), w=2.0, most_ohms=100.0):
         v_th=st.floats(*v_th),
         k=logarithmic(1e-2, 1e4),
         w=logarithmic(0.05, w),
+        alpha=st.one_of(st.just(1.0), logarithmic(0.5, 10.0)),
         lam=or_zero(logarithmic(1e-4, 1.0)),
         r_s=or_zero(logarithmic(1e-5, most_ohms)),
         r_d=or_zero(logarithmic(1e-5, most_ohms)),
@@ -72,9 +73,11 @@ def channels(v_th=(-5.0, 8.0), w=2.0, most_ohms=100.0):
 
 
 def law(v_gs, v_ds, c):
-    """The channel's equation, written a second time."""
-    source, drain = (c.w * np.logaddexp(0.0, (x - c.v_th) / c.w) for x in (v_gs, v_gs - v_ds))
-    return 0.5 * c.k * (source - drain) * (source + drain) * (1.0 + c.lam * abs(v_ds))
+    """The channel's equation, written a second time: in reverse, source and drain change places."""
+    if v_ds < 0.0:
+        return -law(v_gs - v_ds, -v_ds, c)
+    source, drain = (c.w * np.logaddexp(0.0, (x - c.v_th) / c.w) for x in (v_gs, v_gs - c.alpha * v_ds))
+    return 0.5 * c.k * (source - drain) * (source + drain) * (1.0 + c.lam * v_ds)
 
 
 def solved(v_gs, v_ds, c):
@@ -360,6 +363,29 @@ def test_softplus_has_an_inverse(x, w):
 LAWS = TemperatureLaws(a=-6.5e-3, b=1.6, c=2.2)
 
 
+@pytest.mark.parametrize("alpha", [1.0, 1.7, 4.0])
+def test_channel_saturates_at_the_overdrive_over_alpha(alpha):
+    c = ideal(alpha=alpha)
+    knee, v_ds = 2.0 / alpha, np.array([0.5, 0.98, 1.02, 30.0])
+    current = channel_current(5.0, v_ds * knee, c)
+    assert current[2:] == pytest.approx(0.5 * 100.0 * 2.0**2)
+    # Half way the square law has three quarters of the saturated current.
+    assert float(current[0]) == pytest.approx(0.75 * float(current[3]), rel=1e-4)
+    assert float(current[1]) < float(current[2])
+
+
+@pytest.mark.parametrize("alpha", [1.0, 3.0])
+def test_a_closed_gate_lets_reverse_current_through_once_the_drain_is_a_threshold_below_it(alpha):
+    c = ideal(alpha=alpha)
+    assert abs(float(channel_current(0.0, -2.8, c))) < 1e-6
+    assert float(channel_current(0.0, -3.5, c)) < -10.0
+
+
+def test_bend_at_threshold_follows_its_own_exponent():
+    hot = channel_at(150.0, POWER, replace(LAWS, d=1.5))
+    assert float(hot.w) == pytest.approx(0.09 * (423.15 / 298.15) ** 1.5)
+
+
 def test_channel_at_the_reference_temperature_is_the_channel():
     same = channel_at(25.0, POWER, LAWS)
     assert [float(getattr(same, f.name)) for f in fields(Channel)] == [getattr(POWER, f.name) for f in fields(Channel)]
@@ -410,7 +436,7 @@ def transistor():
         "c_gs": 2e-9, "c_ch": 5e-10, "c_acc": 1.4e-9,
         "c0_gd": 1e-9, "phi_gd": 0.8, "m_gd": 0.5, "cf_gd": 5e-12,
         "c0_ds": 2e-9, "phi_ds": 0.7, "m_ds": 0.4, "cf_ds": 1e-11,
-        "v_th": 3.0, "k": 120.0, "w": 0.09, "lambda": 0.004, "r_s": 1.2e-3, "r_d": 3.1e-3,
+        "v_th": 3.0, "k": 120.0, "w": 0.09, "alpha": 1.3, "lambda": 0.004, "r_s": 1.2e-3, "r_d": 3.1e-3,
     }  # fmt: skip
     return Transistor.from_values(values)
 

@@ -38,6 +38,7 @@ def transistors(most_ohms=1.0):
         c_gs=logarithmic(1e-12, 1e-7),
         c_ch=st.one_of(st.just(0.0), logarithmic(1e-13, 1e-8)),
         c_acc=logarithmic(1e-12, 1e-7),
+        s_gs=st.one_of(st.just(0.0), st.floats(0.0, 0.8)),
         gate_drain=junctions(most_s=0.999),
         drain_source=junctions(most_s=0.999),
         channel=channels(most_ohms=most_ohms),
@@ -47,7 +48,8 @@ def transistors(most_ohms=1.0):
 
 def c_gs(t, v_gs):
     """Gate-source capacitance, written a second time."""
-    return t.c_gs + t.c_ch * expit((v_gs - t.channel.v_th) / t.channel.w)
+    over_body = 1.0 / np.sqrt(1.0 + np.maximum(v_gs, 0.0) / 2.0)
+    return t.c_gs * (1.0 - t.s_gs + t.s_gs * over_body) + t.c_ch * expit((v_gs - t.channel.v_th) / t.channel.w)
 
 
 def slope(law, v):
