@@ -28,12 +28,13 @@ _LOW_COSS = "points of coss at lower VDS"
 _BEND = "more points where the curve bends"
 _LOW_OUTPUT = "an output curve at low VDS"
 _GATE_CHARGE = "a gate-charge curve, fitted with --use-gate-charge,"
+_LOW_GATE_CHARGE = "gate-charge points below threshold"
 _HOT = "a transfer curve at another junction temperature"
 _FORWARD = "a body-diode curve over more decades of current"
 _HOT_FORWARD = "a hot body-diode curve"
 #: What would tell a parameter, by its name.
 _TELLS = {
-    "c_gs": "a ciss curve", "s_gs": _GATE_CHARGE, "c_ch": _GATE_CHARGE, "c_acc": _GATE_CHARGE,
+    "c_gs": "a ciss curve", "s_gs": _LOW_GATE_CHARGE, "c_ch": _GATE_CHARGE, "c_acc": _GATE_CHARGE,
     "c0_gd": _LOW_CRSS, "phi_gd": _LOW_CRSS, "m_gd": _LOW_CRSS, "cf_gd": "points of crss at higher VDS",
     "c0_ds": _LOW_COSS, "phi_ds": _LOW_COSS, "m_ds": _LOW_COSS, "cf_ds": "points of coss at higher VDS",
     "v_th": "transfer points at small currents", "k": "transfer points at higher currents",
