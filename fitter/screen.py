@@ -215,7 +215,7 @@ def show_gate_charge(model: Model, found: Mapping[str, Interval], where: str) ->
     console = _console()
     console.print(f"[bold]{model.part.name}[/bold]: gate charge at {where}", soft_wrap=True)
     if not model.used_gate_charge:
-        console.print("[dim]note[/dim] c_acc and c_ch are assumed: the model was not fitted to gate-charge data")
+        console.print("[dim]note[/dim] c_acc, c_ch and s_gs are assumed: the model was not fitted to gate-charge data")
     table = _table("figure", "value", "95 % interval", right=("value", "95 % interval"))
     for name, label, unit in (
         ("qg", "QG", "C"),

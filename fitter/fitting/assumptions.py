@@ -89,7 +89,7 @@ class GateAssumption:
 def assumed_space(
     assumption: GateAssumption, space: ParameterSpace, coordinates: Array, covariance: Array
 ) -> tuple[ParameterSpace, Array, Array]:
-    """Add the two ratios as parameters with the spread assumed of them, so that every interval shows it.
+    """Add the share of Cgs over the body and the two ratios, with the spread assumed of them: every interval shows it.
 
     Parameters
     ----------
@@ -101,7 +101,7 @@ def assumed_space(
     Returns
     -------
     space, coordinates, covariance
-        With on_state_ratio and accumulation_ratio added.
+        With s_gs, on_state_ratio and accumulation_ratio added.
     """
     wider = np.zeros((coordinates.size + 3, coordinates.size + 3))
     wider[:-3, :-3] = covariance

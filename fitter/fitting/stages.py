@@ -154,7 +154,7 @@ def fit_temperature(part: Part, channel: Stage) -> Stage | None:
 
 
 def fit_gate_charge(part: Part, found: Values, untold: Sequence[str]) -> Stage:
-    """What only the gate charge shows, Cacc and Cch, with all that the other stages found held.
+    """What only the gate charge shows (Cacc, Cch, the share of Cgs over the body), with all else held as found.
 
     Parameters
     ----------

@@ -89,7 +89,7 @@ def _fitted_to(model: FittedModel) -> list[str]:
     if model.used_gate_charge:
         lines.append(_item("the gate charge: fitted, and no check of the model any more"))
     else:
-        lines.append(_item("the gate charge: not fitted; c_acc and c_ch, which only it shows, are assumed"))
+        lines.append(_item("the gate charge: not fitted; c_acc, c_ch and s_gs, which only it shows, are assumed"))
     if model.transistor().diode is None:
         lines.append(
             _item("the body diode is not modelled: reverse current flows in the channel only, when that is on")
