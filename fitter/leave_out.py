@@ -15,7 +15,7 @@ from fitter.fitting.assumptions import GATE_CHARGE_ONLY, GateAssumption, assumed
 from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock, model_space
 from fitter.fitting.fit import FitResult
 from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, intervals
-from fitter.fitting.observations import TABLE_ERROR
+from fitter.fitting.observations import STATED_ERROR, TABLE_ERROR
 from fitter.fitting.solve import solve
 from fitter.fitting.space import ParameterSpace, Values
 from fitter.fitting.stages import UNSEEN_CHANNEL
@@ -34,12 +34,6 @@ _PREDICTS_NOTHING = 3.0
 #: Condition of a curve's row: its mean over the points.
 MEAN = "mean"
 _GATE_CHARGE = ("qg", "qgs", "qgd", "v_plateau")
-#: Relative standard error of a table value by its quantity (common practice, no source).
-_ERRORS = {
-    "qg": TABLE_ERROR["q_g"], "qgs": TABLE_ERROR["q_gs"], "qgd": TABLE_ERROR["q_gd"],
-    "v_plateau": TABLE_ERROR["v_plateau"], "vgs_th": TABLE_ERROR["v_gs_th"], "rds_on": TABLE_ERROR["r_ds_on"],
-    "vsd": TABLE_ERROR["v_sd"], "gfs": 0.05, "trr": 0.05,
-}  # fmt: skip
 _EXPECTED = " (expected)"
 
 
@@ -197,7 +191,7 @@ def _stand_ins(part: Part, gone: Collection[str]) -> list[Block]:
 def _table_rows(part: Part, estimate: Estimate, left_out: str, names: Sequence[str]) -> list[LeftOut]:
     """Rows for stated typical values."""
     return [
-        _row(left_out, c, c.stated.typ, _ERRORS.get(c.quantity, TABLE_ERROR["capacitance"]))
+        _row(left_out, c, c.stated.typ, STATED_ERROR.get(c.quantity, TABLE_ERROR["capacitance"]))
         for c in compare(part, estimate, (), False)
         if c.quantity in names and c.stated.typ
     ]

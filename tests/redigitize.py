@@ -7,9 +7,8 @@ import numpy as np
 from fitter.comparison import compare
 from fitter.fitting.blocks import PathBlock
 from fitter.fitting.intervals import Estimate
-from fitter.fitting.observations import curve_block, from_axis, to_axis
+from fitter.fitting.observations import STATED_ERROR, curve_block, from_axis, to_axis
 from fitter.fitting.space import ParameterSpace
-from fitter.leave_out import _ERRORS
 from fitter.models.types import scalar
 from fitter.part import Stated
 
@@ -39,6 +38,8 @@ def inside(values):
         elif name.startswith("ws"):
             values[name] = min(max(value, 0.08), 1.0)
     values["lambda"] = max(values["lambda"], 2e-4)
+    for name in ("m_gd", "m_ds"):
+        values[name] = min(max(values[name], 0.25), 0.85)
     values["r_s"] = max(values["r_s"], 0.15 * values["r_d"])
     return values
 
@@ -71,7 +72,7 @@ def redigitize(part, values, seed):
         if check.quantity not in _FIELDS or check.fitted is None:
             continue
         group, name = _FIELDS[check.quantity]
-        typ = check.fitted * (1.0 + _ERRORS[check.quantity] * rng.normal())
+        typ = check.fitted * (1.0 + STATED_ERROR[check.quantity] * rng.normal())
         table = replace(getattr(stated, group), **{name: Stated(typ=typ)})
         stated = replace(stated, **{group: table})
     return replace(part, curves=tuple(curves), stated=stated)

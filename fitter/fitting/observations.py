@@ -26,6 +26,7 @@ __all__ = [
     "HOT_DIODE",
     "HOT_OUTPUT",
     "HOT_TRANSFER",
+    "STATED_ERROR",
     "TABLE_ERROR",
     "body_diode_blocks",
     "body_diode_curves",
@@ -52,6 +53,13 @@ TABLE_ERROR = {
     "v_sd": 0.02,
     "recovery": 0.05,
 }
+
+#: The same by the names of the comparison; a stated figure without an entry counts as a capacitance.
+STATED_ERROR = {
+    "qg": TABLE_ERROR["q_g"], "qgs": TABLE_ERROR["q_gs"], "qgd": TABLE_ERROR["q_gd"],
+    "v_plateau": TABLE_ERROR["v_plateau"], "vgs_th": TABLE_ERROR["v_gs_th"], "rds_on": TABLE_ERROR["r_ds_on"],
+    "vsd": TABLE_ERROR["v_sd"], "gfs": 0.05, "trr": TABLE_ERROR["recovery"],
+}  # fmt: skip
 
 #: Built-in potential of a junction, and how far the fitted one may be expected from it, as a natural logarithm:
 #: 0.6 to 3 V is
