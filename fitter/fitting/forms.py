@@ -44,7 +44,7 @@ __all__ = ["CapacitanceFit", "FormTrial", "corrected_akaike", "fit_capacitances"
 Array = NDArray[np.float64]
 
 #: How many starts are followed, of all those that would suit a curve.
-_FOLLOWED = 28
+_FOLLOWED = 36
 
 _TOO_FEW = "too few capacitance data: digitize ciss, coss and crss, or two of them and state the third's table value"
 

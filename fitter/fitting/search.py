@@ -28,7 +28,7 @@ _DAMPING, _DOWN, _UP = 1e-2, 0.2, 5.0
 #: Keeps a coordinate that nothing depends on where it is.
 _LEAST_CURVATURE = 1e-9
 #: Steps, and how many of the starts are followed after them.
-_ROUNDS = ((4, 14), (6, 7), (10, 4))
+_ROUNDS = ((4, 18), (6, 9), (10, 5))
 #: Most steps of those that are left, and by what share of its cost the lowest must still fall in four of them.
 _LAST_STEPS, _SETTLED = 60, 1e-5
 

@@ -109,7 +109,7 @@ def two_shield_starts(one: Mapping[str, float], v: Array, c: Array) -> list[dict
     places = _fallen(v, c, _TWO_SHIELDS_AT)
     starts = [{**one, "s_2": 0.5, "v_2": v_2, "w_2": w_2} for v_2 in places for w_2 in _WIDTHS]
     # A single shield that stands for two bends the junction itself, too: to its bounds, at times.
-    bases = (dict(one), {**one, "phi": max(one["phi"], 0.5), "m": min(one["m"], 0.5)})
+    bases = (dict(one), {**one, "phi": 0.7, "m": 0.35}, {**one, "phi": 0.7, "m": 0.5}, {**one, "phi": 0.7, "m": 0.65})
     for (v_2, v_1), w_1, w_2 in product(combinations_with_replacement(places, 2), _WIDTHS, _WIDTHS):
         if v_1 > v_2 or w_1 < w_2:
             starts += [{**base, "s_2": 0.5, "v_1": v_1, "w_1": w_1, "v_2": v_2, "w_2": w_2} for base in bases]
