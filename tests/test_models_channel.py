@@ -34,6 +34,7 @@ from fitter.models.diode import (
     transit_time_from_charge,
     transit_time_from_time,
 )
+from fitter.models.roots import increasing_root
 from fitter.models.smooth import inverse_softplus, logistic, softplus
 from fitter.models.temperature import TEMPERATURE, TemperatureLaws, channel_at
 from fitter.models.transistor import Transistor
@@ -173,6 +174,16 @@ def test_resistance_of_the_source_carries_mobility_reduction():
 
 
 # The terminal current
+
+
+def test_a_root_is_found_where_newton_steps_go_to_and_fro_for_ever():
+    # From 1 to the left of the root of sign(x) sqrt|x|, a Newton step leads to 1 to the right of it, and back.
+    def function(x):
+        off = x - np.array([0.3, 0.5])
+        return np.sign(off) * np.sqrt(np.abs(off)), 0.5 / np.sqrt(np.maximum(np.abs(off), 1e-300))
+
+    found = increasing_root(function, np.array([1.3, 1.5]), np.full(2, -2.0), np.full(2, 2.0))
+    np.testing.assert_allclose(found, [0.3, 0.5], rtol=1e-12)
 
 
 @EXAMPLES

@@ -6,19 +6,26 @@ C. M. Hurvich and C.-L. Tsai, Biometrika 76 (1989) 297.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fitter.errors import FitError
 from fitter.fitting import observations
-from fitter.fitting.blocks import Block, PointsBlock, model_space
+from fitter.fitting.blocks import Block, model_space
 from fitter.fitting.outliers import set_aside
-from fitter.fitting.solve import Solution, solve
-from fitter.fitting.space import ParameterSpace
+from fitter.fitting.search import lowest
+from fitter.fitting.solve import solve
 from fitter.fitting.stages import Stage
-from fitter.fitting.start_values import junction_start, second_shield_starts, shield_starts, sorted_curve
+from fitter.fitting.start_values import (
+    gate_source_start,
+    junction_start,
+    shield_starts,
+    sized,
+    sorted_curve,
+    two_shield_starts,
+)
 from fitter.models.capacitance import (
     DRAIN_SOURCE,
     GATE_DRAIN,
@@ -36,9 +43,8 @@ __all__ = ["CapacitanceFit", "FormTrial", "corrected_akaike", "fit_capacitances"
 
 Array = NDArray[np.float64]
 
-#: Evaluations that sort the starts, before the better ones are followed to their end.
-_FIRST_LOOK = 10
-_FOLLOWED = 2
+#: How many starts are followed, of all those that would suit a curve.
+_FOLLOWED = 36
 
 _TOO_FEW = "too few capacitance data: digitize ciss, coss and crss, or two of them and state the third's table value"
 
@@ -158,14 +164,14 @@ def fit_capacitances(part: Part) -> CapacitanceFit:
         fixed = {n: x for n, x in drain_source.values.items() if n not in drain_source.free}
 
     if iss is not None:
-        c_gs = float(np.median(iss[1] - np.minimum(capacitance(iss[0], c_gd), 0.9 * iss[1])))
+        gate_source = gate_source_start(*iss, c_gd)
     elif table is not None:
-        c_gs = _figure(table.c_iss)
+        gate_source = {"c_gs": _figure(table.c_iss)}
     else:
         raise FitError(_TOO_FEW)
 
     free = ("c_gs", *gate_drain.free, *drain_source.free)
-    start = {"c_gs": c_gs, **gate_drain.values, **drain_source.values}
+    start = {**gate_source, **gate_drain.values, **drain_source.values}
     rough = solve(blocks, model_space(free, fixed, blocks), start, robust=True, rough=True)
     marked, outliers = set_aside(rough)
     points = sum(b.used_points for b in marked)
@@ -224,20 +230,19 @@ def _choose(
     starts = [junction_start(*points)]
     for shields in range(MOST_SHIELDS + 1):
         free = junction_names(definitions, shields)
-        if n <= len(free) + 1:
+        # A form that would lose even if it met every point need not be tried.
+        if corrected_akaike(0.0, len(free), n) >= min((trial.aicc for trial, _ in ends), default=np.inf):
             break
         if shields:
             one = {fields[name]: x for name, x in ends[-1][1].items()}
-            starts = shield_starts(*points) if shields == 1 else second_shield_starts(one)
-        space = model_space(free, others, blocks)
-        named = [{definitions[f].name: x for f, x in start.items()} for start in starts]
-        best = _best(blocks, named, space)
-        chi_square = 2.0 * best.cost
+            starts = shield_starts(*points) if shields == 1 else two_shield_starts(one, *points)
+        named = [{definitions[f].name: x for f, x in start.items()} for start in sized(starts, *points)[:_FOLLOWED]]
+        values, cost = lowest(blocks, model_space(free, others, blocks), named)
         trial = FormTrial(
             capacitance=name, shields=shields, parameters=len(free), points=n,
-            chi_square=chi_square, aicc=corrected_akaike(chi_square, len(free), n),
+            chi_square=2.0 * cost, aicc=corrected_akaike(2.0 * cost, len(free), n),
         )  # fmt: skip
-        ends.append((trial, {name: scalar(best.values[name]) for name in free}))
+        ends.append((trial, {name: scalar(values[name]) for name in free}))
     if not ends:
         least = len(junction_names(definitions, 0))
         raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {least} parameters")
@@ -261,12 +266,3 @@ def _ordered(definitions: Mapping[str, ParameterDefinition], values: Mapping[str
         first, second = name[f"{letter}_1"], name[f"{letter}_2"]
         result[first], result[second] = values[second], values[first]
     return result
-
-
-def _best(blocks: Sequence[Block], starts: Sequence[Mapping[str, float]], space: ParameterSpace) -> Solution:
-    """The lowest of the minima that the better starts lead to."""
-    if len(starts) > _FOLLOWED:
-        quick = [replace(b, looks=0) if isinstance(b, PointsBlock) else b for b in blocks]
-        looks = [solve(quick, space, start, robust=True, rough=True, evaluations=_FIRST_LOOK) for start in starts]
-        starts = [look.values for look in sorted(looks, key=lambda look: look.cost)[:_FOLLOWED]]  # type: ignore[misc]
-    return min((solve(blocks, space, start, robust=True, rough=True) for start in starts), key=lambda end: end.cost)

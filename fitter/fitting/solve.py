@@ -13,7 +13,7 @@ from fitter.errors import FitError, OperatingPointError
 from fitter.fitting.blocks import Block
 from fitter.fitting.space import ParameterSpace, Values, derivatives
 
-__all__ = ["Solution", "solve"]
+__all__ = ["ROBUST_SCALE", "Solution", "solve"]
 
 Array = NDArray[np.float64]
 
@@ -24,7 +24,7 @@ _NOWHERE = 1e6
 #: Information added to every scaled coordinate: where the data give none, the variance comes out huge, not zero.
 _LEAST_INFORMATION = 1e-12
 #: Residuals up to about this many standard deviations count by their square in a robust pass, too.
-_ROBUST_SCALE = 3.0
+ROBUST_SCALE = 3.0
 #: Relative change of cost and coordinates that ends a fit; a look that only prepares the next fit takes the second.
 _TOLERANCE, _ROUGH_TOLERANCE = 1e-7, 1e-4
 
@@ -229,7 +229,7 @@ def solve(
     with np.errstate(invalid="ignore", divide="ignore"):  # of lmfit's own covariance, which is not used
         result = lmfit.Minimizer(residual, parameters, max_nfev=evaluations or _MOST_EVALUATIONS).minimize(
             method="least_squares", jac=jacobian, x_scale="jac", ftol=tolerance, xtol=tolerance, gtol=tolerance,
-            loss="soft_l1" if robust else "linear", f_scale=_ROBUST_SCALE,
+            loss="soft_l1" if robust else "linear", f_scale=ROBUST_SCALE,
         )  # fmt: skip
     found = coordinates(result.params)
     slopes = _jacobian(blocks, space, found)
@@ -256,7 +256,7 @@ def solve(
 
 def _robust_cost(residuals: Array) -> float:
     """Half the sum of the soft L1 measure, as scipy.optimize.least_squares defines it."""
-    return float(np.sum(_ROBUST_SCALE**2 * (np.sqrt(1.0 + (residuals / _ROBUST_SCALE) ** 2) - 1.0)))
+    return float(np.sum(ROBUST_SCALE**2 * (np.sqrt(1.0 + (residuals / ROBUST_SCALE) ** 2) - 1.0)))
 
 
 def _jacobian(blocks: Sequence[Block], space: ParameterSpace, coordinates: Array) -> Array:

@@ -83,7 +83,7 @@ def fit_channel(part: Part) -> Stage:
     blocks = observations.channel_blocks(part)
     outputs = [block for block in blocks if block.group == Quantity.OUTPUT]
     leading = [block for block in blocks if block.group != Quantity.OUTPUT]
-    begin = start_values.channel_start(part)
+    begin = start_values.carrying(start_values.channel_start(part), part)
     start: Values = {CHANNEL[field].name: value for field, value in begin.items()}
     fixed = dict(UNSEEN_CHANNEL)
     if "rds_on (table)" in {block.name for block in blocks}:

@@ -34,17 +34,22 @@ def increasing_root(function: Function, start: Numbers, lower: Numbers, upper: N
         Where the function crosses zero, to about 1e-13 of itself; the bracket's end where it does not cross inside.
     """
     x, low, high = (np.array(a, dtype=float) for a in np.broadcast_arrays(start, lower, upper))
+    before = last = np.full((), np.inf)
+    done = np.zeros((), dtype=bool)
     for _ in range(_MOST_STEPS):
         value, slope = function(x)
         low = np.where(value < 0.0, x, low)
         high = np.where(value > 0.0, x, high)
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             new = x - value / slope
-        inside = (new >= low) & (new <= high)
+            # Over a bend Newton's method can go to and fro between two points for ever, both inside the bracket.
+            inside = (new >= low) & (new <= high) & (np.abs(new - x) <= 0.5 * before)
         new = np.where(inside, new, 0.5 * (low + high))
         new = np.where(value == 0.0, x, new)
-        done = np.abs(new - x) <= np.where(inside, _NEWTON, _BISECTION) * np.abs(new) + 1e-300
-        x = new
+        before, last = last, np.abs(new - x)
+        settled = last <= np.where(inside, _NEWTON, _BISECTION) * np.abs(new) + 1e-300
+        x = np.where(done, x, new)
+        done = done | settled
         if done.all():
             break
     return x
