@@ -3,8 +3,9 @@
 Run as ``python tests/benchmarks/starts.py [--count 100] [demo part ...]``. For each part: it is fitted, gate charge
 included, and then again and again from starts each value of which is multiplied by 3^u, u uniform over -1 to 1. An end
 is the same minimum where the same forms were chosen, the same points left aside, and where chi-squared of all but the
-hot curves differs by less than 0.5 from the reference's. Both are taken at the reference's standard deviations, since those that a fit ends with
-are widened by its own misfit. An end that lies lower than the reference counts as another minimum; it is printed, too.
+hot curves differs by less than 0.5 from the reference's. Both are taken at the reference's standard deviations, since
+those that a fit ends with are widened by its own misfit. An end that lies lower than the reference counts as another
+minimum; it is printed, too.
 """
 
 import argparse
