@@ -256,6 +256,15 @@ def test_exchanged_effective_capacitances_are_one_finding():
     assert "exchange coss_er_pF and coss_tr_pF" in found.remedy
 
 
+@pytest.mark.parametrize("name", ["cargo_80v", "wall_box_650v"])
+def test_exchanged_gate_charges_are_named(name):
+    part = demo_part(name)
+    table = part.stated.gate_charge
+    exchanged = stated("gate_charge", q_gs=table.q_gd, q_gd=table.q_gs)(part)
+    (found,) = [f for f in inspect(exchanged) if f.rule == "charges exchanged"]
+    assert (found.severity, found.topic, found.remedy) == ("doubtful", "qgs, qgd", "exchange qgs_nC and qgd_nC")
+
+
 def test_a_charge_with_its_point_in_the_wrong_place():
     found = [f for f in inspect(stated("gate_charge", q_gd=147e-9)(demo_part("cargo_80v"))) if f.rule == "charge sum"]
     assert ["QGD = 14.7 nC or QG = 680 nC would fit" in f.remedy for f in found] == [True]
