@@ -132,8 +132,8 @@ def _gate_charge(part: Part) -> Iterator[Finding]:
                 "charges exchanged",
                 "doubtful",
                 "qgs, qgd",
-                f"QGS is {ratio:.3g} times Ciss times the plateau voltage and QGD {other:.3g} times; QGS should be about "
-                "once",
+                f"QGS is {ratio:.3g} times Ciss times the plateau voltage, where it should be about once; QGD is "
+                f"{other:.3g} times",
                 "exchange qgs_nC and qgd_nC",
             )
         elif not 0.6 <= ratio <= 1.6:
