@@ -19,7 +19,7 @@ from fitter.gate_charge import gate_charge_curve
 from fitter.model import CurveRow, FittedModel
 from fitter.models.channel import on_resistance, threshold_voltage
 from fitter.models.diode import forward_voltage
-from fitter.models.temperature import REFERENCE
+from fitter.models.temperature import REFERENCE, junction_temperature
 from fitter.part import Curve, Quantity
 from fitter.units import engineering
 
@@ -140,7 +140,7 @@ def plot_capacitances(model: FittedModel, ax: Axes | None = None) -> Axes:
 
 def _temperatures(curves: Sequence[Curve]) -> list[float]:
     """Junction temperatures of some curves, 25 degC first."""
-    found = dict.fromkeys(REFERENCE if c.t_j is None else c.t_j for c in curves)
+    found = dict.fromkeys(junction_temperature(c.t_j) for c in curves)
     return sorted(found, key=lambda t: (t != REFERENCE, -t))
 
 
@@ -177,7 +177,7 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
         ax.fill_between(v[shown], low, high, color=colour, alpha=0.18, linewidth=0.0)
         ax.plot(v[shown], i[shown], color=colour, linestyle=style, linewidth=1.1, label=_celsius(t_j))
         for curve in curves:
-            if (REFERENCE if curve.t_j is None else curve.t_j) == t_j:
+            if junction_temperature(curve.t_j) == t_j:
                 points = _points(model, curve.name)
                 _draw_points(ax, [p for p in points if scale == "linear" or p.y > 1e-6 * top], colour, marker)
     if scale == "log":
@@ -217,7 +217,7 @@ def plot_output(model: FittedModel, ax: Axes | None = None) -> Axes:
     ax = _axes(ax)
     every = [c for c in model.part.curves_of(Quantity.OUTPUT) if _points(model, c.name)]
     t_j = (_temperatures(every) or [REFERENCE])[0]
-    curves = [c for c in every if (REFERENCE if c.t_j is None else c.t_j) == t_j]
+    curves = [c for c in every if junction_temperature(c.t_j) == t_j]
     transistor = model.transistor(t_j)
     for k, curve in enumerate(sorted(curves, key=lambda c: -(c.v_gs or 0.0))):
         colour, marker, style = COLOURS[k % 7], _MARKERS[k % 7], _STYLES[k % 7]
@@ -330,7 +330,7 @@ def plot_body_diode(model: FittedModel, ax: Axes | None = None) -> Axes:
             v = np.asarray(forward_voltage(i, diode, t_j))
             ax.plot(v, i, color=colour, linestyle=style, linewidth=1.1, label=_celsius(t_j))
             for curve in curves:
-                if (REFERENCE if curve.t_j is None else curve.t_j) == t_j:
+                if junction_temperature(curve.t_j) == t_j:
                     _draw_points(ax, _points(model, curve.name), colour, marker)
         ax.set_yscale("log")
         ax.set_ylim(top=4.0 * i[-1])  # room for the legend above the curves

@@ -176,7 +176,7 @@ def _draw_head(figure: Figure, model: FittedModel) -> None:
     how = (
         "gate charge fitted"
         if model.used_gate_charge
-        else "gate charge not fitted: Cacc and Cch assumed, QG is a check"
+        else "gate charge not fitted: Cacc, Cch, s_gs assumed, QG is a check"
     )
     figure.text(_RIGHT, 0.967, f"fetwright {model.version}: {how}", fontsize=7, ha="right", va="baseline", color="0.3")
     notes = _shortened(part.notes, 150).replace("$", r"\$")  # which would begin a formula

@@ -17,7 +17,7 @@ from fitter.gate_charge import OperatingPoint, gate_charge_curve
 from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN
 from fitter.models.channel import CHANNEL, on_resistance, threshold_voltage
 from fitter.models.diode import BODY_DIODE, forward_current, forward_voltage
-from fitter.models.temperature import REFERENCE, TEMPERATURE
+from fitter.models.temperature import REFERENCE, TEMPERATURE, junction_temperature
 from fitter.models.transistor import GATE, Transistor
 from fitter.models.types import Numbers, Value
 from fitter.part import Axis, Curve, Part, Quantity, Stated, StatedGateCharge
@@ -175,12 +175,12 @@ def _condition(curve: Curve, name: str) -> float:
 
 
 def _transfer(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    v_ds, t_j = _condition(curve, "v_ds"), curve.t_j if curve.t_j is not None else REFERENCE
+    v_ds, t_j = _condition(curve, "v_ds"), junction_temperature(curve.t_j)
     return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v, v_ds)
 
 
 def _output(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    v_gs, t_j = _condition(curve, "v_gs"), curve.t_j if curve.t_j is not None else REFERENCE
+    v_gs, t_j = _condition(curve, "v_gs"), junction_temperature(curve.t_j)
     return _channel_parameters(t_j), lambda t, v: t.at(t_j).i_d(v_gs, v)
 
 
@@ -200,7 +200,7 @@ def _v_gs_th_temperature(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
 
 
 def _body_diode(curve: Curve) -> tuple[tuple[str, ...], Evaluate]:
-    t_j = curve.t_j if curve.t_j is not None else REFERENCE
+    t_j = junction_temperature(curve.t_j)
 
     def evaluate(t: Transistor, v: Numbers) -> Numbers:
         if t.diode is None:
@@ -244,7 +244,7 @@ def _of(part: Part, *quantities: Quantity) -> list[PointsBlock | PathBlock]:
 
 def _hot(curve: Curve) -> bool:
     """Whether a curve belongs to another junction temperature than that of the parameters."""
-    return curve.t_j not in (None, REFERENCE)
+    return junction_temperature(curve.t_j) != REFERENCE
 
 
 def _typical(stated: Stated | None) -> float | None:

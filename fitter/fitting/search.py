@@ -15,14 +15,12 @@ from numpy.typing import NDArray
 
 from fitter.fitting.blocks import Block, PointsBlock
 from fitter.fitting.solve import ROBUST_SCALE
-from fitter.fitting.space import ParameterSpace, Values
+from fitter.fitting.space import STEP, ParameterSpace, Values
 
 __all__ = ["lowest"]
 
 Array = NDArray[np.float64]
 
-#: Imaginary step of the derivatives, as in `space.derivatives`.
-_STEP = 1e-30
 #: Damping at the start, and what a step that leads down or up makes of it.
 _DAMPING, _DOWN, _UP = 1e-2, 0.2, 5.0
 #: Keeps a coordinate that nothing depends on where it is.
@@ -126,7 +124,7 @@ def _quadratic(blocks: Sequence[Block], space: ParameterSpace, at: Array) -> tup
     """Robust cost at k points, shape (k,), infinite where there is none, its gradient (k, n) and J'J (k, n, n)."""
     k, n = at.shape
     # For each point as many rows as coordinates, each with an imaginary step along its own.
-    stepped = (at[:, None, :] + 1j * _STEP * np.eye(n)).reshape(k * n, n)
+    stepped = (at[:, None, :] + 1j * STEP * np.eye(n)).reshape(k * n, n)
     values = space.values(stepped.T[:, :, None])
     cost, gradient, curvature = np.zeros(k), np.zeros((k, n)), np.zeros((k, n, n))
     for block in blocks:
@@ -134,7 +132,7 @@ def _quadratic(blocks: Sequence[Block], space: ParameterSpace, at: Array) -> tup
         rows = np.broadcast_to(rows, (k * n, rows.shape[-1])).reshape(k, n, -1)
         sound = np.all(np.isfinite(rows), axis=(1, 2))
         rows = np.where(sound[:, None, None], rows, 0.0)
-        residual, slope = rows[:, 0].real, rows.imag / _STEP
+        residual, slope = rows[:, 0].real, rows.imag / STEP
         root = np.sqrt(1.0 + (residual / ROBUST_SCALE) ** 2)
         cost += np.where(sound, ROBUST_SCALE**2 * np.sum(root - 1.0, axis=-1), np.inf)
         weighed = slope / root[:, None, :]

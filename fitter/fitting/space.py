@@ -11,13 +11,13 @@ from numpy.typing import NDArray
 from fitter.models.types import Numbers, Value, scalar
 from fitter.parameters import ParameterDefinition
 
-__all__ = ["ParameterSpace", "Values", "derivatives"]
+__all__ = ["STEP", "ParameterSpace", "Values", "derivatives"]
 
 Values = Mapping[str, Value]
 Array = NDArray[np.float64]
 
 #: Imaginary step: far below rounding, so that its square vanishes and the derivative is exact.
-_STEP = 1e-30
+STEP = 1e-30
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -105,8 +105,8 @@ def derivatives(
     points: list[Numbers] = [np.asarray(u) for u in coordinates]
     for row, name in enumerate(names):
         column = np.full((len(names), 1), coordinates[place[name]], dtype=complex)
-        column[row, 0] += 1j * _STEP
+        column[row, 0] += 1j * STEP
         points[place[name]] = column
     every = space.values(points)  # type: ignore[arg-type]
-    result = np.imag(function(every)) / _STEP
+    result = np.imag(function(every)) / STEP
     return np.asarray(np.broadcast_to(result, (len(names), result.shape[-1])))

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from fitter.errors import FitError
 from fitter.models.capacitance import GATE_DRAIN, MOST_SHIELDS, Junction, Shield, capacitance
-from fitter.models.temperature import REFERENCE
+from fitter.models.temperature import REFERENCE, junction_temperature
 from fitter.part import Curve, Part, Quantity
 
 __all__ = [
@@ -262,7 +262,7 @@ def carrying(start: Mapping[str, float], part: Part) -> dict[str, float]:
 
 def _transfer_points(part: Part) -> tuple[str, Array, Array]:
     """Name of the transfer curve at 25 degC, and all points of such curves."""
-    curves = [c for c in part.curves_of(Quantity.TRANSFER) if c.t_j in (None, REFERENCE)]
+    curves = [c for c in part.curves_of(Quantity.TRANSFER) if junction_temperature(c.t_j) == REFERENCE]
     if not curves:
         raise FitError("no transfer curve at 25 C: give one with tj_C = 25")
     return curves[0].name, np.concatenate([c.x for c in curves]), np.concatenate([c.y for c in curves])
@@ -287,7 +287,7 @@ def body_diode_start(part: Part) -> dict[str, float]:
         i_s [A], n, r [ohm], e_g [V], r_exponent.
     """
     thermal = 0.0257
-    curves = sorted(part.curves_of(Quantity.BODY_DIODE), key=lambda c: abs((c.t_j or REFERENCE) - REFERENCE))
+    curves = sorted(part.curves_of(Quantity.BODY_DIODE), key=lambda c: abs(junction_temperature(c.t_j) - REFERENCE))
     n, v, i, r = 1.1, 0.8, 1.0, 0.0
     if curves:
         x, y = curves[0].x, np.maximum(curves[0].y, 1e-12)

@@ -9,6 +9,7 @@ import numpy as np
 from fitter.inspection.finding import Comparison, ratio
 from fitter.inspection.reading import error_at, is_cold, read_at, smallest_readable, typical, x_where
 from fitter.inspection.transfer import largest_current
+from fitter.models.temperature import KELVIN, junction_temperature
 from fitter.part import Curve, Part
 from fitter.units import engineering
 
@@ -152,7 +153,7 @@ def slope(part: Part, curve: Curve) -> Iterator[Comparison]:
     first, then = x_where(curve, 1.01 * low), x_where(curve, 10.0 * low)
     if first is None or then is None:
         return
-    least = _DECADE * ((25.0 if curve.t_j is None else curve.t_j) + 273.15)
+    least = _DECADE * (junction_temperature(curve.t_j) + KELVIN)
     error = 4.0 * 1.4 * curve.point_error * curve.x_axis.length
     yield Comparison(
         rule="junction law",

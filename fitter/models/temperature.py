@@ -11,7 +11,7 @@ from fitter.models.channel import Channel
 from fitter.models.types import Value
 from fitter.parameters import ParameterDefinition
 
-__all__ = ["KELVIN", "REFERENCE", "TEMPERATURE", "TemperatureLaws", "channel_at"]
+__all__ = ["KELVIN", "REFERENCE", "TEMPERATURE", "TemperatureLaws", "channel_at", "junction_temperature"]
 
 #: 0 degC in kelvin.
 KELVIN = 273.15
@@ -55,6 +55,17 @@ class TemperatureLaws:
     b: Value
     c: Value
     d: Value = 1.0
+
+
+def junction_temperature(t_j: float | None) -> float:
+    """Junction temperature of a curve [degC]: the reference where none is given.
+
+    Examples
+    --------
+    >>> junction_temperature(None), junction_temperature(0.0)
+    (25.0, 0.0)
+    """
+    return REFERENCE if t_j is None else t_j
 
 
 def channel_at(t_j: ArrayLike, channel: Channel, laws: TemperatureLaws) -> Channel:
