@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike
 
 from fitter.comparison import compare, explain_gate_charge, explain_recovery
 from fitter.fitting.blocks import PathBlock, PointsBlock
-from fitter.fitting.determination import OPEN, spreads, undetermined
+from fitter.fitting.determination import OPEN, led_by_expectation, spreads, undetermined
 from fitter.fitting.fit import FitResult
 from fitter.fitting.intervals import standard_errors
 from fitter.fitting.observations import from_axis
@@ -88,7 +88,7 @@ def assemble(part: Part, result: FitResult, kind: type[Model], left_out: Sequenc
 
 def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     estimate = result.estimate
-    values, spread = estimate.values, spreads(estimate)
+    values, spread, led = estimate.values, spreads(estimate), led_by_expectation(result.solution, estimate)
     free = {d.name: math.sqrt(v) for d, v in zip(estimate.space.free, np.diag(estimate.covariance), strict=True)}
     table: dict[str, Parameter] = {}
     for name, d in DEFINITIONS.items():
@@ -108,6 +108,8 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
                 note = f"ended on its bound of {value:.3g} {d.unit}".rstrip()
             elif spread[name] > OPEN:
                 origin, note = "not determined", "the data leave it open within a factor of ten or more"
+            elif name in led:
+                origin, note = "not determined", "what is expected of it tells as much as the data"
         elif name in estimate.space.fixed:
             origin = _FIXED_AS.get(name, "assumed")
             note = _WHY_FIXED.get(name, "no curve given shows it")

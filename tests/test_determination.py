@@ -10,9 +10,10 @@ import numpy as np
 import pytest
 from conftest import ROOT
 
-from fitter.fitting.determination import OPEN, spreads, undetermined
+from fitter.fitting.blocks import ScalarBlock
+from fitter.fitting.determination import OPEN, expected_shares, led_by_expectation, spreads, undetermined
 from fitter.fitting.intervals import Estimate, standard_errors
-from fitter.fitting.solve import Solution
+from fitter.fitting.solve import Solution, solve
 from fitter.fitting.space import ParameterSpace
 from fitter.models.transistor import DEFINITIONS
 from fitter.part import StatedValues
@@ -100,9 +101,51 @@ def test_an_open_parameter_is_not_determined(sparse):
 
 def test_exactly_the_parameters_that_are_open_are_not_determined(sparse):
     wide = {name for name, spread in spreads(sparse.estimate).items() if spread > OPEN}
-    marked = {name for name, row in sparse.parameters.items() if row.origin == "not determined"}
+    marked = {name for name, row in sparse.parameters.items() if "factor of ten" in row.note}
     assert marked
     assert marked == wide & {name for name, row in sparse.parameters.items() if row.origin != "fixed"}
+
+
+def told(sigma_of_data, sigma_expected):
+    """C0 of the gate-drain junction told by a datum and by an expectation, RD by a datum alone."""
+
+    def block(name, stated, sigma, function, parameters, expected=False):
+        return ScalarBlock(
+            name=name, parameters=parameters, stated=stated, sigma=sigma, function=function, expected=expected
+        )
+
+    c0 = DEFINITIONS["c0_gd"]
+    space = ParameterSpace(free=(c0, DEFINITIONS["r_d"]), fixed={"r_s": 1e-3})
+    blocks = [
+        block("datum", -20.0, sigma_of_data, lambda v: np.log(v["c0_gd"]), ("c0_gd",)),
+        block("c0_gd (expected)", -20.0, sigma_expected, lambda v: np.log(v["c0_gd"]), ("c0_gd",), expected=True),
+        block("other", 2e-3, 1e-4, lambda v: 2.0 * v["r_d"], ("r_d",)),
+    ]
+    solution = solve(blocks, space, {"c0_gd": 3e-9, "r_d": 2e-3})
+    estimate = Estimate(space=space, coordinates=solution.coordinates, covariance=solution.covariance)
+    return solution, estimate
+
+
+def test_an_expectation_as_sure_as_the_datum_gives_half_of_what_is_known():
+    shares = expected_shares(told(0.8, 0.8)[0])
+    assert shares == pytest.approx({"c0_gd": 0.5, "r_d": 0.0}, abs=1e-9)
+
+
+def test_an_expectation_half_as_sure_as_the_datum_gives_a_fifth():
+    assert expected_shares(told(0.4, 0.8)[0])["c0_gd"] == pytest.approx(1.0 / (1.0 + 4.0))
+
+
+def test_an_expectation_leads_only_what_is_loosely_known():
+    assert led_by_expectation(*told(0.8, 0.8)) == {"c0_gd"}
+    assert led_by_expectation(*told(0.08, 0.08)) == set()
+    assert led_by_expectation(*told(0.4, 0.8)) == set()
+
+
+def test_what_an_expectation_leads_is_not_determined(fitted):
+    row = fitted("cargo_80v", use_gate_charge=True).parameters["phi_gd"]
+    assert row.origin == "not determined"
+    assert row.note == "what is expected of it tells as much as the data"
+    assert row.stderr > 0.3 * row.value
 
 
 @pytest.mark.parametrize(

@@ -18,7 +18,6 @@ pytestmark = pytest.mark.simulator
 OPTIONS = ".options ABSTOL=1e-9\n"
 #: Nearly ideal: it clamps at a few millivolts above its supply.
 CLAMP = ".model clamp D(IS=1e-9 N=0.5)\n"
-FREE_WHEEL = ".model wheel D(IS=1e-12 RS=2m CJO=200p)\n"
 SUFFIXES = {"": 1.0, "Meg": 1e6, "G": 1e9, "T": 1e12, "K": 1e3, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12, "f": 1e-15}
 FIGURE = re.compile(r"(?P<digits>[-+.0-9]+(?:E[-+]?\d+)?)(?P<suffix>[A-Za-z]*)")
 
@@ -198,36 +197,3 @@ def test_gate_charge_by_a_constant_gate_current(model, tmp_path, simulator, form
     at_same_charge = np.interp(wanted, charge, v_gs)
     assert np.all(close | np.isclose(at_same_charge, levels, rtol=0.002))
     assert np.max(np.abs(found - wanted)) < 0.02 * expected.total
-
-
-@pytest.mark.parametrize(
-    "r_gate, junction",
-    [(0.5, "warm"), (5.0, "warm"), (50.0, "warm"), (100.0, "warm"), (0.5, "cold"), (5.0, "cold"), (5.0, "hot")],
-)
-def test_clamped_inductive_double_pulse(model, tmp_path, r_gate, junction):
-    s, p = model.sign, model.test_point()
-    known = model.validity.t_j
-    t_j = {"cold": np.ceil(known[0]), "warm": 25.0, "hot": np.floor(known[-1])}[junction]
-    t_switch = max((r_gate + (model.part.package.r_g or 0.0)) * 40 * float(model.ciss(s * p.v_dd)), 0.3e-6)
-    t_on = 20 * t_switch
-    inductance = p.v_dd * t_on / p.i_d
-    gap, second = 6 * t_switch, 6 * t_switch
-    # Two pulses: the first one brings the inductor to the load's current, the second one switches that current.
-    times = [0, 1e-8, t_on, t_on + 1e-8, t_on + gap, t_on + gap + 1e-8, t_on + gap + second, t_on + gap + second + 1e-8]
-    levels = [0, 1, 1, 0, 0, 1, 1, 0]
-    pulses = " ".join(f"{t + 1e-7:.9g} {s * p.v_gs * x:.6g}" for t, x in zip(times, levels, strict=True))
-    end = times[-1] + gap
-    deck = (
-        write(model, tmp_path, t_j) + FREE_WHEEL
-        + f"Vdd vdd 0 {s * p.v_dd}\nLload vdd d {inductance} IC=0\nDwheel {swapped(model, 'd', 'vdd')} wheel\n"
-        + f"Vdrive in 0 PWL(0 0 {pulses})\nRgate in g {r_gate}\nX1 d g 0 {model.part.name}\n"
-        + f".tran {t_switch / 20} {end}\n"
-    )  # fmt: skip
-    rows = ngspice(deck, tmp_path, columns=["v(d)", "i(lload)", "v(g)"])
-    time, v_d, i_l = rows[:, 0], s * rows[:, 1], s * rows[:, 2]
-    assert time[-1] == pytest.approx(end, rel=1e-6)
-    assert np.interp(t_on, time, i_l) == pytest.approx(p.i_d, rel=0.15)
-    assert np.interp(t_on, time, v_d) < 0.25 * p.v_dd + 2.0  # on
-    assert np.interp(t_on + 0.9 * gap, time, v_d) > 0.9 * p.v_dd  # off, the free-wheel diode carries the current
-    assert np.interp(t_on + gap + 0.9 * second, time, v_d) < 0.25 * p.v_dd + 2.0  # on again
-    assert np.interp(end, time, v_d) > 0.9 * p.v_dd

@@ -296,6 +296,16 @@ def test_the_winning_form_is_the_one_of_the_lowest_criterion():
         assert all(t.aicc == corrected_akaike(t.chi_square, t.parameters, t.points) for t in tried)
 
 
+@pytest.mark.parametrize("seed", range(3))
+def test_two_shields_at_about_the_same_voltage_keep_their_names(seed):
+    """The wider one lies a tenth higher."""
+    two = SHIELDED | {"s1_gd": 0.6, "vs1_gd": 20.0, "ws1_gd": 0.05, "s2_gd": 0.98, "vs2_gd": 22.0, "ws2_gd": 0.4}
+    result = fit_capacitances(clicked(drawn_part(two), seed))
+    assert chosen(result)["gate-drain"] == 2
+    values = result.solution.values
+    assert values["ws1_gd"] < values["ws2_gd"]
+
+
 def test_too_few_points_for_the_plain_form_stop_the_fit():
     with pytest.raises(FitError, match="too few for a model of 4 parameters"):
         fit_capacitances(drawn_part(PLAIN, v_ds=np.geomspace(0.1, 80.0, 4)))

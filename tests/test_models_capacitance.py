@@ -435,6 +435,13 @@ def test_gate_source_capacitance_rises_by_the_channels_part_across_threshold():
     np.testing.assert_allclose(slope, [2e-9, 2.25e-9, 2.5e-9], rtol=1e-9)
 
 
+def test_share_over_the_body_falls_until_the_channel_forms():
+    t = transistor(s_gs=0.2)
+    slope = t.q_gs(np.array([-1.0, 0.0, 2.0, 6.0, 12.0]) + STEP * 1j).imag / STEP
+    # 2 nF of which a fifth falls as (1 + V/2 V)^-1/2; above threshold that is gone and the channel is there.
+    np.testing.assert_allclose(slope, [2e-9, 2e-9, 1.6e-9 + 0.4e-9 / np.sqrt(2.0), 2.1e-9, 2.1e-9], rtol=1e-4)
+
+
 def test_output_energy_is_the_integral_of_voltage_times_output_capacitance():
     t, v = transistor(), 60.0
     expected = quad(lambda u: u * float(t.c_oss(u)), 0.0, v, points=[5.0, 12.0, 20.0], epsrel=1e-11)[0]

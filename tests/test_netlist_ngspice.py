@@ -17,7 +17,6 @@ pytestmark = pytest.mark.simulator
 OPTIONS = ".options ABSTOL=1e-9\n"
 #: Nearly ideal: it clamps at a few millivolts above its supply.
 CLAMP = ".model clamp D(IS=1e-9 N=0.1)\n"
-FREE_WHEEL = ".model wheel D(IS=1e-12 RS=2m CJO=200p)\n"
 
 
 @pytest.fixture
@@ -87,35 +86,6 @@ def test_gate_charge_by_a_constant_gate_current(model, tmp_path, load):
     found = np.interp(levels, np.maximum.accumulate(v_gs), charge)
     wanted = np.interp(levels, np.abs(expected.v_gs), expected.q_g)
     np.testing.assert_allclose(found, wanted, rtol=0.005, atol=0.0005 * expected.total)
-
-
-@pytest.mark.parametrize("r_gate", [0.5, 5.0, 50.0, 100.0])
-def test_clamped_inductive_double_pulse(model, tmp_path, r_gate):
-    s, p = model.sign, model.test_point()
-    t_switch = max((r_gate + (model.part.package.r_g or 0.0)) * 40 * float(model.ciss(s * p.v_dd)), 0.3e-6)
-    t_on = 20 * t_switch
-    inductance = p.v_dd * t_on / p.i_d
-    gap, second = 6 * t_switch, 6 * t_switch
-    # Two pulses: the first one brings the inductor to the load's current, the second one switches that current.
-    times = [0, 1e-8, t_on, t_on + 1e-8, t_on + gap, t_on + gap + 1e-8, t_on + gap + second, t_on + gap + second + 1e-8]
-    levels = [0, 1, 1, 0, 0, 1, 1, 0]
-    pulses = " ".join(f"{t + 1e-7:.9g} {s * p.v_gs * x:.6g}" for t, x in zip(times, levels, strict=True))
-    end = times[-1] + gap
-    deck = (
-        write(model, tmp_path) + FREE_WHEEL
-        + f"Vdd vdd 0 {s * p.v_dd}\nLload vdd d {inductance} IC=0\nDwheel {swapped(model, 'd', 'vdd')} wheel\n"
-        + f"Vdrive in 0 PWL(0 0 {pulses})\nRgate in g {r_gate}\nX1 d g 0 {model.part.name}\n"
-        + f".tran {t_switch / 20} {end}\n"
-    )  # fmt: skip
-    rows = ngspice(deck, tmp_path, columns=["v(d)", "i(lload)", "v(g)"])
-    time, v_d, i_l = rows[:, 0], s * rows[:, 1], s * rows[:, 2]
-    assert time[-1] == pytest.approx(end, rel=1e-6)
-    before = np.interp(t_on, time, i_l)
-    assert before == pytest.approx(p.i_d, rel=0.15)
-    assert np.interp(t_on, time, v_d) < 0.25 * p.v_dd + 2.0  # on
-    assert np.interp(t_on + 0.9 * gap, time, v_d) > 0.9 * p.v_dd  # off, the free-wheel diode carries the current
-    assert np.interp(t_on + gap + 0.9 * second, time, v_d) < 0.25 * p.v_dd + 2.0  # on again
-    assert np.interp(end, time, v_d) > 0.9 * p.v_dd
 
 
 @pytest.mark.parametrize("form", [subcircuit, element_subcircuit], ids=["expressions", "elements"])

@@ -48,7 +48,11 @@ def transistors(most_ohms=1.0):
 
 def c_gs(t, v_gs):
     """Gate-source capacitance, written a second time."""
-    over_body = 1.0 / np.sqrt(1.0 + np.maximum(v_gs, 0.0) / 2.0)
+    end = max(t.channel.v_th, 5.0 * t.channel.w)
+    # The depleting voltage follows VGS, and stays behind where the channel forms.
+    depleting = np.where(v_gs > 0.0, expit((end - v_gs) / t.channel.w), 1.0)
+    v = t.channel.w * (np.logaddexp(0.0, end / t.channel.w) - np.logaddexp(0.0, (end - v_gs) / t.channel.w))
+    over_body = depleting / np.sqrt(1.0 + np.where(v_gs > 0.0, v, 0.0) / 2.0)
     return t.c_gs * (1.0 - t.s_gs + t.s_gs * over_body) + t.c_ch * expit((v_gs - t.channel.v_th) / t.channel.w)
 
 

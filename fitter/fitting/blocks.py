@@ -247,6 +247,8 @@ class ScalarBlock:
         The stated figure, in the same unit.
     sigma : float
         Its standard deviation, likewise.
+    expected : bool
+        Whether it is an expectation, known before any point is seen, and no datum.
     """
 
     name: str
@@ -254,6 +256,7 @@ class ScalarBlock:
     function: Callable[[Values], Numbers]
     stated: float
     sigma: float
+    expected: bool = False
     inflation: float = 1.0
     held: bool = False
     group: str = ""

@@ -9,15 +9,20 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from fitter.fitting.blocks import ScalarBlock
 from fitter.fitting.intervals import Estimate
+from fitter.fitting.solve import Solution
 from fitter.models.types import scalar
 
-__all__ = ["OPEN", "Undetermined", "spreads", "undetermined"]
+__all__ = ["OPEN", "Undetermined", "expected_shares", "led_by_expectation", "spreads", "undetermined"]
 
 Array = NDArray[np.float64]
 
 #: A standard error of this much, as a natural logarithm: the 95 % interval reaches a factor of ten either way.
 OPEN = math.log(10.0) / 1.96
+#: An expectation leads a parameter where it gives this share of what is known of it, and where that is little: its
+#: standard error, on the same scale, is at least so large.
+_LEADING_SHARE, _LEADING_SPREAD = 0.25, 0.3
 #: From here on it is worth saying: the 95 % interval reaches a factor of three either way.
 _LOOSE = math.log(3.0) / 1.96
 #: Loosely known parameters that are correlated this much are known together only.
@@ -80,6 +85,51 @@ def spreads(estimate: Estimate) -> dict[str, float]:
         d.name: float(s if d.scale == "log" else s * d.typical / max(sizes[d.name], d.typical))
         for d, s in zip(estimate.space.free, sigma, strict=True)
     }
+
+
+def expected_shares(solution: Solution) -> dict[str, float]:
+    """Share of the information on each free parameter that expectations give, and not data.
+
+    Parameters
+    ----------
+    solution : Solution
+        The fit.
+
+    Returns
+    -------
+    dict of str to float
+        0 to 1 by the parameters' names.
+    """
+    rows = []
+    for block in solution.blocks:
+        is_expected = isinstance(block, ScalarBlock) and block.expected
+        rows += [is_expected] * solution.residuals[block.name].size
+    slopes, covariance = solution.jacobian[np.array(rows, dtype=bool)], solution.covariance
+    # Without their rows the information is less by slopes' slopes: its inverse by the formula of Woodbury.
+    reach = slopes @ covariance
+    left = np.eye(len(slopes)) - reach @ slopes.T
+    more = np.sum(reach * np.linalg.lstsq(left, reach, rcond=None)[0], axis=0)
+    known = np.diag(covariance)
+    shares = np.divide(more, known + more, out=np.zeros(known.size), where=known + more > 0.0)
+    return dict(zip(solution.space.names, shares.tolist(), strict=True))
+
+
+def led_by_expectation(solution: Solution, estimate: Estimate) -> set[str]:
+    """Parameters that the data leave to what is expected of them.
+
+    Parameters
+    ----------
+    solution : Solution
+        The fit.
+    estimate : Estimate
+        Its parameters.
+
+    Returns
+    -------
+    set of str
+    """
+    shares = expected_shares(solution)
+    return {n for n, s in spreads(estimate).items() if s > _LEADING_SPREAD and shares.get(n, 0.0) > _LEADING_SHARE}
 
 
 def undetermined(estimate: Estimate, names: Collection[str]) -> tuple[Undetermined, ...]:

@@ -254,15 +254,19 @@ def _choose(
 
 
 def _ordered(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, float]) -> dict[str, float]:
-    """The same two shields with the one at the higher voltage first: either order says the same."""
+    """The same two shields in the order of voltage over the cube root of their width: either order says the same.
+
+    It tells two shields apart that lie at about the same voltage, and two of about the same width.
+    """
     name = {field: d.name for field, d in definitions.items()}
     result = dict(values)
-    if values[name["v_1"]] >= values[name["v_2"]]:
+    first, second = (values[name[f"v_{n}"]] / np.cbrt(values[name[f"w_{n}"]]) for n in (1, 2))
+    if first >= second:
         return result
     # Shares of all cells: the second shield's is of what the first one left.
     low, high = values[name["s_1"]], (1.0 - values[name["s_1"]]) * values[name["s_2"]]
     result[name["s_1"]], result[name["s_2"]] = high, low / max(1.0 - high, 1e-12)
     for letter in "vw":
-        first, second = name[f"{letter}_1"], name[f"{letter}_2"]
-        result[first], result[second] = values[second], values[first]
+        one, other = name[f"{letter}_1"], name[f"{letter}_2"]
+        result[one], result[other] = values[other], values[one]
     return result

@@ -70,7 +70,7 @@ _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
 #: By what share a current may be expected to rise with VDS up to the gate-charge test's VDD, 1-sigma: the drift zone
 #: takes what VDS rises by beyond some volts (a judgement, no source). Without it a rise over the few volts of output
 #: curves is drawn out to hundreds.
-_MODULATION_SPREAD = 0.5
+_MODULATION_SPREAD = 1.0
 
 _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
 _DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
@@ -294,7 +294,7 @@ def _expected(name: str, value: float, spread: float, function: Callable[[Values
     """What is known of a parameter, or a function of it, before any point is seen."""
     return ScalarBlock(
         name=f"{name} (expected)", parameters=(name,), stated=value, sigma=spread,
-        function=lambda values: np.asarray(function(values)),
+        function=lambda values: np.asarray(function(values)), expected=True,
     )  # fmt: skip
 
 

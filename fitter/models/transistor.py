@@ -14,7 +14,7 @@ from numpy.typing import ArrayLike
 
 from fitter.errors import OperatingPointError
 from fitter.models import capacitance as cap
-from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN, Junction, junction_from
+from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN, Junction, Shield, junction_from
 from fitter.models.channel import CHANNEL, Channel, terminal_current
 from fitter.models.diode import BODY_DIODE, TRANSIT_TIME, BodyDiode
 from fitter.models.smooth import softplus
@@ -44,6 +44,8 @@ GATE = {
 #: C = Cox [1 + 2 Cox^2 (VGS - VFB)/(q eps NA)]^(-1/2) (Sze & Ng, Physics of Semiconductor Devices, 3rd ed., ch. 4),
 #: where q eps NA/(2 Cox^2) - VFB is about 2 V for the oxides and bodies of power transistors (50 nm, 1e17 cm^-3).
 BODY_DEPLETION, BODY_EXPONENT = 2.0, 0.5
+#: Widths of the bend at threshold that depletion takes at the least.
+_LEAST_DEPLETION = 5.0
 
 #: Every fitted parameter's definition by its name, in the order of the tables.
 DEFINITIONS: dict[str, ParameterDefinition] = {
@@ -177,9 +179,18 @@ class Transistor:
 
     @property
     def gate_body(self) -> Junction:
-        """The share of Cgs over the body: constant below VGS = 0, falling above, while the gate depletes the body."""
+        """The share of Cgs over the body: constant below VGS = 0, falling while the gate depletes the body.
+
+        Depletion ends where the channel forms, which from then on holds the charge: as behind a shield at VTH, or at
+        the least where the bend begins above VGS = 0.
+        """
         c_0 = np.asarray(self.s_gs) * np.asarray(self.c_gs)
-        return Junction(c_0=c_0, phi=BODY_DEPLETION, m=BODY_EXPONENT, c_f=0.0)
+        v_th, w = np.asarray(self.channel.v_th), np.asarray(self.channel.w)
+        least = _LEAST_DEPLETION * w
+        end = np.where(v_th.real > least.real, v_th, least)
+        return Junction(
+            c_0=c_0, phi=BODY_DEPLETION, m=BODY_EXPONENT, c_f=0.0, shields=(Shield(s=1.0, v=end, w=w / end),)
+        )
 
     def c_iss(self, v_ds: ArrayLike) -> Numbers:
         """Input capacitance [F] at VDS [V], VGS = 0: Cgs + Cgd."""

@@ -15,6 +15,7 @@ from fitter.models.temperature import REFERENCE
 from fitter.models.types import scalar
 from fitter.version import VERSION
 from fitter.writers.netlist import subcircuit
+from fitter.writers.netlist_frame import RINGING
 from fitter.writers.netlist_text import comment, number, statement
 
 __all__ = ["Deck", "deck_files", "decks"]
@@ -24,6 +25,8 @@ _FREQUENCY = 1e6
 _GATE_CURRENT = 1e-3
 #: Gate resistor of the double pulse [ohm].
 _GATE_RESISTOR = 5.0
+#: Inductance of the loop through the free-wheel diode [H].
+_LOOP = 5e-9
 _CAUTION = (
     "Typical values are no limits; safe operating area, avalanche and short circuit are not modelled. Such circuits "
     "carry hazardous voltage: verify on the bench."
@@ -298,7 +301,9 @@ def _double_pulse(bench: _Bench) -> Deck | None:
     end = times[-1] + gap + delay
     circuit = [
         f"VDD vdd 0 {number(bench.volts(p.v_dd))}", f"L1 vdd d {number(inductance)} IC=0",
-        ".MODEL wheeldiode D(IS=1e-12 RS=2m CJO=200p)", f"DWHEEL {bench.pair('d', 'vdd')} wheeldiode",
+        ".MODEL wheeldiode D(IS=1e-12 RS=2m CJO=200p)", f"DWHEEL {bench.pair('d', 'clamp')} wheeldiode",
+        comment("The loop that commutates; without it rounding noise of L1 in the clamped node may stop a run"),
+        f"LLOOP clamp vdd {number(_LOOP)}", f"RLOOP clamp vdd {number(_LOOP / RINGING)}",
         "VDRIVE in 0 PWL(0 0", *steps, "+ )", f"RGATE in g {number(_GATE_RESISTOR)}", f"X1 d g 0 {bench.device}",
     ]  # fmt: skip
     on = abs(float(m.drain_current(bench.volts(p.v_gs), bench.volts(1e-3), bench.t_j)) / 1e-3)

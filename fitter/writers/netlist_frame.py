@@ -14,7 +14,7 @@ from fitter.models.temperature import KELVIN
 from fitter.models.transistor import Transistor
 from fitter.writers.netlist_text import comment, number, scalar, statement
 
-__all__ = ["DELAY", "NOMINAL", "Frame", "Lead", "Nodes", "body_diode", "frame"]
+__all__ = ["DELAY", "NOMINAL", "RINGING", "Frame", "Lead", "Nodes", "body_diode", "frame"]
 
 #: Time by which a charge's current lags behind it [s]: far below any switching time, yet enough to damp the numerical
 #: oscillation of the trapezoidal rule at a capacitor that a voltage source drives. As a resistance in series with a
@@ -27,7 +27,7 @@ _LEAST_INDUCTANCE = 1e-15
 
 #: Inductance over the resistance beside it [s]. A lead of a power package is no inductance above some hundred
 #: megahertz; as one it rings there with the transistor's capacitances, with hardly a loss, and time steps collapse.
-_RINGING = 5e-10
+RINGING = 5e-10
 
 #: Nominal temperature of circuit simulators [degC].
 NOMINAL = 27.0
@@ -84,7 +84,7 @@ class Lead:
         for name, end, value in self._parts:
             lines.append(f"{name} {node} {end} {number(value)}")
             if name.startswith("L"):
-                lines.append(f"R{name} {node} {end} {number(value / _RINGING)}")
+                lines.append(f"R{name} {node} {end} {number(value / RINGING)}")
             node = end
         return lines
 

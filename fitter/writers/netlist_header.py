@@ -17,6 +17,12 @@ _ABSTOL = (
     "milliohm resistors at tens of volts exceeds the tolerance, and the time step collapses, with any transistor model."
 )
 
+_CLAMPED = (
+    "A clamp diode right across a large inductance may stop a run, with any transistor model: at short time steps the "
+    "rounding noise of L I/h volts appears in the clamped node. Give the diode's leg the nanohenries that it really "
+    "has, and a resistor of L/0.5 ns beside them."
+)
+
 _DAMPED = (
     "Beside each lead inductance lies a resistor of L/0.5 ns: above some 300 MHz the leads damp rather than ring. That "
     "is for the simulator's sake; real leads may damp less."
@@ -54,7 +60,7 @@ def header(model: FittedModel, t_j: float, name: str) -> str:
         _fitted_to(model),
         _validity(model, t_j),
         _parameters(model),
-        [comment("Simulator"), _item(_ABSTOL), *([_item(_DAMPED)] if _has_leads(model) else [])],
+        [comment("Simulator"), _item(_ABSTOL), _item(_CLAMPED), *([_item(_DAMPED)] if _has_leads(model) else [])],
         [comment("Cautions"), *(_item(text) for text in _CAUTIONS)],
     )
     return f"\n{comment()}\n".join("\n".join(lines) for lines in sections)
