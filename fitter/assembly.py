@@ -134,10 +134,11 @@ def _parameters(part: Part, result: FitResult) -> dict[str, Parameter]:
     return table
 
 
-_FIXED_AS: dict[str, Origin] = {"lambda": "fixed"}
+_FIXED_AS: dict[str, Origin] = {"lambda": "fixed", "vr_gd": "fixed"}
 _WHY_FIXED = {
     "alpha": "only output curves show it; taken as 2, which is typical",
     "lambda": "one transfer curve does not show it; output curves or a fitted gate-charge curve do",
+    "vr_gd": "the highest digitized VDS of crss",
     "r_d": "is taken as 0: the stated RDS(on), or an output curve at low VDS, would tell",
 }
 _WHY_ASSUMED = {

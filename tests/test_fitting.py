@@ -306,6 +306,28 @@ def test_two_shields_at_about_the_same_voltage_keep_their_names(seed):
     assert values["ws1_gd"] < values["ws2_gd"]
 
 
+def risen(result):
+    return {t.capacitance for t in result.trials if t.chosen and t.rises}
+
+
+@pytest.mark.parametrize("seed", range(2))
+def test_a_rise_of_crss_at_high_voltage_is_followed(seed):
+    true = SHIELDED | {"s1_gd": 1.0, "cf_gd": 5e-12, "cr_gd": 1e-11, "vr_gd": 80.0}
+    result = fit_capacitances(clicked(drawn_part(true), seed))
+    assert risen(result) == {"gate-drain"}
+    assert result.fixed == {"vr_gd": pytest.approx(80.0, rel=0.15)}
+    v = np.array([60.0, 80.0])
+    found, expected = (Transistor.from_values({**PLAIN, **x}).c_rss(v) for x in (result.solution.values, true))
+    np.testing.assert_allclose(found, expected, rtol=0.05)
+
+
+@pytest.mark.parametrize("form", [PLAIN, SHIELDED], ids=["plain", "shielded"])
+def test_a_curve_that_only_falls_gets_no_rise(form):
+    result = fit_capacitances(clicked(drawn_part(form), 0))
+    assert not any(t.rises for t in result.trials)
+    assert "cr_gd" not in result.solution.values
+
+
 def test_too_few_points_for_the_plain_form_stop_the_fit():
     with pytest.raises(FitError, match="too few for a model of 4 parameters"):
         fit_capacitances(drawn_part(PLAIN, v_ds=np.geomspace(0.1, 80.0, 4)))

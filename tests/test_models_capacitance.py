@@ -16,6 +16,7 @@ from fitter.models.capacitance import (
     GATE_DRAIN,
     MOST_SHIELDS,
     Junction,
+    Rise,
     Shield,
     capacitance,
     charge,
@@ -45,8 +46,9 @@ def shields(most_s=1.0):
     return st.builds(Shield, s=st.floats(0.0, most_s), v=logarithmic(0.1, 5000.0), w=logarithmic(0.03, 30.0))
 
 
-def junctions(most_s=1.0):
+def junctions(most_s=1.0, may_rise=True):
     """Any junction within the bounds of its parameters, with 0, 1 or 2 shields."""
+    rises = st.builds(Rise, c=logarithmic(1e-14, 1e-9), v=logarithmic(1.0, 5000.0))
     return st.builds(
         Junction,
         c_0=logarithmic(1e-12, 1e-7),
@@ -54,6 +56,7 @@ def junctions(most_s=1.0):
         m=st.floats(0.2, 0.9),
         c_f=st.one_of(st.just(0.0), logarithmic(1e-13, 1e-9)),
         shields=st.lists(shields(most_s), max_size=MOST_SHIELDS).map(tuple),
+        rise=st.one_of(st.none(), rises) if may_rise else st.none(),
     )
 
 
@@ -63,7 +66,8 @@ VOLTAGES = logarithmic(1e-2, 2000.0)
 def integral(function, upper, j):
     """Integral from 0, by an adaptive rule over stretches that follow the junction's bends."""
     bends = [j.phi * x for x in (0.3, 3.0, 30.0)]
-    bends += [shield.v + x * shield.width for shield in j.shields for x in (-8.0, -2.0, 0.0, 2.0, 8.0)]
+    risen = [] if j.rise is None else [j.rise]
+    bends += [bend.v + x * bend.width for bend in (*j.shields, *risen) for x in (-8.0, -2.0, 0.0, 2.0, 8.0)]
     edges = [0.0, *sorted(float(bend) for bend in bends if 0.0 < bend < upper), upper]
     parts = (quad(function, a, b, epsabs=0.0, epsrel=1e-10, limit=200)[0] for a, b in pairwise(edges))
     return sum(parts)
@@ -241,7 +245,7 @@ def test_no_plain_form_holds_printed_energy_and_charge_at_once(co_er, co_tr, e_o
 
 
 @EXAMPLES
-@given(junctions(), VOLTAGES)
+@given(junctions(may_rise=False), VOLTAGES)
 def test_time_related_above_energy_related_above_small_signal_capacitance(j, v):
     # Order (mathematics): Co(tr) >= Co(er) >= Coss(V) where Coss falls.
     co_tr, co_er = float(charge(v, j)) / v, 2.0 * float(stored_energy(v, j)) / v**2
@@ -272,7 +276,7 @@ def test_stored_energy_is_the_integral_of_voltage_times_capacitance(j, v):
 
 
 @EXAMPLES
-@given(junctions(most_s=0.999))
+@given(junctions(most_s=0.999, may_rise=False))
 def test_capacitance_is_positive_and_falls(j):
     c = capacitance(np.concatenate([[0.0], np.geomspace(1e-3, 1e5, 400)]), j)
     assert np.all(c > 0.0)
@@ -280,7 +284,7 @@ def test_capacitance_is_positive_and_falls(j):
 
 
 @EXAMPLES
-@given(junctions(most_s=0.999))
+@given(junctions(most_s=0.999, may_rise=False))
 def test_charge_rises_and_has_no_step(j):
     v = np.geomspace(1e-2, 5000.0, 600)
     q, c = charge(v, j), capacitance(v, j)
@@ -346,6 +350,23 @@ def test_second_shield_takes_its_share_of_what_the_first_left():
     assert float(capacitance(200.0, j) / capacitance(200.0, bare)) == pytest.approx(0.2, rel=1e-3)
 
 
+# A rise
+
+
+def test_half_of_a_rise_is_there_at_its_voltage_and_all_of_it_far_beyond():
+    j = replace(plain(c_0=1e-18), rise=Rise(c=2e-12, v=400.0))
+    np.testing.assert_allclose(capacitance(np.array([400.0, 8000.0]), j), [1e-12, 2e-12], rtol=1e-5)
+    # Next to nothing at 0 V: 1/(1 + e^2).
+    assert float(capacitance(0.0, j)) == pytest.approx(2e-12 / (1.0 + np.exp(2.0)), rel=1e-5)
+
+
+def test_rise_is_nearly_a_straight_line_up_to_its_voltage():
+    v = np.linspace(100.0, 600.0, 60)
+    c = capacitance(v, replace(plain(c_0=1e-18), rise=Rise(c=1e-12, v=600.0)))
+    line = np.polyval(np.polyfit(v, c, 1), v)
+    assert np.max(np.abs(c - line)) < 0.06 * (c[-1] - c[0])
+
+
 # Arrays and names
 
 
@@ -360,14 +381,25 @@ def test_parameters_broadcast_over_voltages(law):
 
 
 @pytest.mark.parametrize("law", [capacitance, charge, stored_energy])
-@pytest.mark.parametrize("field", ["c_0", "phi", "m", "c_f", "s", "v", "w"])
+@pytest.mark.parametrize("field", ["c_0", "phi", "m", "c_f", "s", "v", "w", "c_r", "v_r"])
 def test_imaginary_part_is_the_derivative_by_a_parameter(law, field):
-    values = {"c_0": 1e-9, "phi": 0.8, "m": 0.45, "c_f": 2e-12, "s": 0.6, "v": 25.0, "w": 0.2}
+    values = {
+        "c_0": 1e-9,
+        "phi": 0.8,
+        "m": 0.45,
+        "c_f": 2e-12,
+        "s": 0.6,
+        "v": 25.0,
+        "w": 0.2,
+        "c_r": 1e-10,
+        "v_r": 60.0,
+    }
 
     def at(shift):
         x = values | {field: values[field] + shift}
         shield = Shield(s=x["s"], v=x["v"], w=x["w"])
-        return law(40.0, Junction(c_0=x["c_0"], phi=x["phi"], m=x["m"], c_f=x["c_f"], shields=(shield,)))
+        rise = Rise(c=x["c_r"], v=x["v_r"])
+        return law(40.0, Junction(c_0=x["c_0"], phi=x["phi"], m=x["m"], c_f=x["c_f"], shields=(shield,), rise=rise))
 
     h = 1e-5 * values[field]
     difference = float(at(h) - at(-h)) / (2.0 * h)
@@ -381,6 +413,15 @@ def test_junction_from_its_names(definitions, number):
     j = junction_from(definitions, {name: float(i) for i, name in enumerate(names)})
     found = (j.c_0, j.phi, j.m, j.c_f, *(x for s in j.shields for x in (s.s, s.v, s.w)))
     assert found == tuple(range(4 + 3 * number))
+    assert j.rise is None
+
+
+def test_a_rise_needs_both_of_its_names():
+    names = junction_names(GATE_DRAIN, 0, rises=True)
+    values = dict.fromkeys(names, 1.0)
+    assert names[-1] == "cr_gd"
+    assert junction_from(GATE_DRAIN, values).rise is None
+    assert junction_from(GATE_DRAIN, values | {"vr_gd": 300.0}).rise == Rise(c=1.0, v=300.0)
 
 
 # The transistor's sums

@@ -277,8 +277,9 @@ Block = PointsBlock | PathBlock | ScalarBlock
 
 #: Stand-ins for parameters on which none of a fit's blocks depends.
 _UNSEEN = {
-    **{name: d.typical if d.scale == "linear" else 1e-12 for name, d in DEFINITIONS.items() if d.unit == "F"},
-    "phi_gd": 1.0, "m_gd": 0.5, "phi_ds": 1.0, "m_ds": 0.5,
+    "c_gs": 1e-12, "c_ch": 1e-9, "c_acc": 1e-12,
+    "c0_gd": 1e-12, "phi_gd": 1.0, "m_gd": 0.5, "cf_gd": 1e-11,
+    "c0_ds": 1e-12, "phi_ds": 1.0, "m_ds": 0.5, "cf_ds": 1e-11,
     "s_gs": 0.0, "v_th": 1.0, "k": 1.0, "w": 0.1, "lambda": 0.0, "alpha": 1.0, "r_s": 0.0, "r_d": 0.0,
 }  # fmt: skip
 

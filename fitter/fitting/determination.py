@@ -41,6 +41,7 @@ _HOT_FORWARD = "a hot body-diode curve"
 _TELLS = {
     "c_gs": "a ciss curve", "s_gs": _LOW_GATE_CHARGE, "c_ch": _GATE_CHARGE, "c_acc": _GATE_CHARGE,
     "c0_gd": _LOW_CRSS, "phi_gd": _LOW_CRSS, "m_gd": _LOW_CRSS, "cf_gd": "points of crss at higher VDS",
+    "cr_gd": "points of crss at higher VDS",
     "c0_ds": _LOW_COSS, "phi_ds": _LOW_COSS, "m_ds": _LOW_COSS, "cf_ds": "points of coss at higher VDS",
     "v_th": "transfer points at small currents", "k": "transfer points at higher currents",
     "w": "transfer points below threshold, on a log axis, or the stated VGS(th)",

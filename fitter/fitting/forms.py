@@ -21,6 +21,7 @@ from fitter.fitting.stages import Stage
 from fitter.fitting.start_values import (
     gate_source_start,
     junction_start,
+    rise_start,
     shield_starts,
     sized,
     sorted_curve,
@@ -31,6 +32,7 @@ from fitter.models.capacitance import (
     GATE_DRAIN,
     MOST_SHIELDS,
     Junction,
+    Rise,
     capacitance,
     junction_from,
     junction_names,
@@ -59,6 +61,8 @@ class FormTrial:
         ``gate-drain`` or ``drain-source``.
     shields : int
         0 for the plain form.
+    rises : bool
+        Whether some capacitance comes with high voltage.
     parameters, points : int
         How many of each.
     chi_square : float
@@ -71,6 +75,7 @@ class FormTrial:
 
     capacitance: str
     shields: int
+    rises: bool = False
     parameters: int
     points: int
     chi_square: float
@@ -142,7 +147,8 @@ def fit_capacitances(part: Part) -> CapacitanceFit:
     fixed: dict[str, float] = {}
 
     if rss is not None:
-        gate_drain = _choose("gate-drain", GATE_DRAIN, rss, _named(blocks, "crss", "phi_gd"), {})
+        gate_drain = _choose("gate-drain", GATE_DRAIN, rss, _named(blocks, "crss", "phi_gd"), {}, may_rise=True)
+        fixed = gate_drain.fixed
     else:
         if iss is None or table is None:
             raise FitError(_TOO_FEW)
@@ -161,7 +167,7 @@ def fit_capacitances(part: Part) -> CapacitanceFit:
         if table is None:
             raise FitError(_TOO_FEW)
         drain_source = _one_point(table.v_ds, _figure(table.c_oss), c_gd)
-        fixed = {n: x for n, x in drain_source.values.items() if n not in drain_source.free}
+        fixed |= drain_source.fixed
 
     if iss is not None:
         gate_source = gate_source_start(*iss, c_gd)
@@ -203,6 +209,11 @@ class _Chosen:
     free: tuple[str, ...]
     trials: tuple[FormTrial, ...] = ()
 
+    @property
+    def fixed(self) -> dict[str, float]:
+        """Those that are not."""
+        return {name: value for name, value in self.values.items() if name not in self.free}
+
 
 def _plain(definitions: Mapping[str, ParameterDefinition], points: tuple[Array, Array]) -> _Chosen:
     values = {definitions[f].name: x for f, x in junction_start(*points).items()}
@@ -222,27 +233,35 @@ def _choose(
     points: tuple[Array, Array],
     blocks: Sequence[Block],
     others: Mapping[str, float],
+    may_rise: bool = False,
 ) -> _Chosen:
     """Fit one junction to its own curve in every form, and take the one with the lowest AICc."""
     fields = {d.name: f for f, d in definitions.items()}
     n = sum(block.points for block in blocks)
+    v, c = points
     ends: list[tuple[FormTrial, dict[str, float]]] = []
-    starts = [junction_start(*points)]
-    for shields in range(MOST_SHIELDS + 1):
-        free = junction_names(definitions, shields)
-        # A form that would lose even if it met every point need not be tried.
-        if corrected_akaike(0.0, len(free), n) >= min((trial.aicc for trial, _ in ends), default=np.inf):
-            break
-        if shields:
-            one = {fields[name]: x for name, x in ends[-1][1].items()}
-            starts = shield_starts(*points) if shields == 1 else two_shield_starts(one, *points)
-        named = [{definitions[f].name: x for f, x in start.items()} for start in sized(starts, *points)[:_FOLLOWED]]
-        values, cost = lowest(blocks, model_space(free, others, blocks), named)
-        trial = FormTrial(
-            capacitance=name, shields=shields, parameters=len(free), points=n,
-            chi_square=2.0 * cost, aicc=corrected_akaike(2.0 * cost, len(free), n),
-        )  # fmt: skip
-        ends.append((trial, {name: scalar(values[name]) for name in free}))
+    rise = rise_start(v, c) if may_rise else {}
+    for risen in ({}, rise) if rise else ({},):
+        fixed = {definitions["v_r"].name: risen["v_r"]} if risen else {}
+        # What is left of the points without what comes with high voltage is a curve that falls.
+        falling = np.maximum(c - Rise(c=risen["c_r"], v=risen["v_r"]).capacitance(v), 0.3 * c) if risen else c
+        starts = [junction_start(v, falling)]
+        for shields in range(MOST_SHIELDS + 1):
+            free = junction_names(definitions, shields, bool(risen))
+            # A form that would lose even if it met every point need not be tried.
+            if corrected_akaike(0.0, len(free), n) >= min((trial.aicc for trial, _ in ends), default=np.inf):
+                break
+            if shields:
+                one = {fields[name]: x for name, x in ends[-1][1].items()}
+                starts = shield_starts(v, falling) if shields == 1 else two_shield_starts(one, v, falling)
+            good = [{**start, **risen} for start in sized(starts, v, falling)[:_FOLLOWED]]
+            named = [{definitions[f].name: x for f, x in start.items()} for start in good]
+            values, cost = lowest(blocks, model_space(free, {**others, **fixed}, blocks), named)
+            trial = FormTrial(
+                capacitance=name, shields=shields, rises=bool(risen), parameters=len(free), points=n,
+                chi_square=2.0 * cost, aicc=corrected_akaike(2.0 * cost, len(free), n),
+            )  # fmt: skip
+            ends.append((trial, fixed | {name: scalar(values[name]) for name in free}))
     if not ends:
         least = len(junction_names(definitions, 0))
         raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {least} parameters")
@@ -250,7 +269,7 @@ def _choose(
     if trial.shields > 1:
         values = _ordered(definitions, values)
     trials = tuple(FormTrial(**{**vars(t), "chosen": t is trial}) for t, _ in ends)
-    return _Chosen(values=values, free=junction_names(definitions, trial.shields), trials=trials)
+    return _Chosen(values=values, free=junction_names(definitions, trial.shields, trial.rises), trials=trials)
 
 
 def _ordered(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, float]) -> dict[str, float]:

@@ -20,6 +20,7 @@ __all__ = [
     "channel_start",
     "gate_source_start",
     "junction_start",
+    "rise_start",
     "shield_starts",
     "sized",
     "sorted_curve",
@@ -37,6 +38,8 @@ _TWO_SHIELDS_AT = (0.1, 0.25, 0.4, 0.55, 0.7, 0.85, 0.95)
 _WIDTHS = (0.1, 0.5)
 #: Share of a transfer curve's highest current that a channel must have at its threshold, or above.
 _SETS_IN = 0.1
+#: A curve rises where the mean of so many last points lies above the lowest such mean by this factor.
+_AVERAGED, _RISEN = 3, 1.1
 #: Steps to the sizes of a start.
 _SIZE_STEPS = 60
 
@@ -114,6 +117,27 @@ def two_shield_starts(one: Mapping[str, float], v: Array, c: Array) -> list[dict
         if v_1 > v_2 or w_1 < w_2:
             starts += [{**base, "s_2": 0.5, "v_1": v_1, "w_1": w_1, "v_2": v_2, "w_2": w_2} for base in bases]
     return starts
+
+
+def rise_start(v: Array, c: Array) -> dict[str, float]:
+    """What comes with high voltage, where the points show that something does.
+
+    Parameters
+    ----------
+    v, c : ndarray, shape (n,)
+        As for `junction_start`, in rising order of v.
+
+    Returns
+    -------
+    dict
+        c_r [F] and v_r [V], the latter the highest voltage; empty where the curve does not rise at its end.
+    """
+    if c.size < _AVERAGED:
+        return {}
+    smooth = np.convolve(c, np.full(_AVERAGED, 1.0 / _AVERAGED), mode="valid")
+    low, last = float(np.min(smooth)), float(smooth[-1])
+    # Half of it is there at the end.
+    return {"c_r": 2.0 * (last - low), "v_r": float(v[-1])} if last > _RISEN * low else {}
 
 
 def _fallen(v: Array, c: Array, shares: tuple[float, ...]) -> list[float]:

@@ -20,6 +20,7 @@ __all__ = [
     "GATE_DRAIN",
     "MOST_SHIELDS",
     "Junction",
+    "Rise",
     "Shield",
     "capacitance",
     "charge",
@@ -34,6 +35,9 @@ __all__ = [
 MOST_SHIELDS = 2
 
 _PLAIN = ("c_0", "phi", "m", "c_f")
+_RISE = ("c_r", "v_r")
+#: Width of a rise over its voltage: so wide that it is nearly a straight line up to there.
+_RISE_WIDTH = 0.5
 
 
 def _definitions(suffix: str, name: str) -> dict[str, ParameterDefinition]:
@@ -67,7 +71,14 @@ def _definitions(suffix: str, name: str) -> dict[str, ParameterDefinition]:
     return result
 
 
-GATE_DRAIN = _definitions("gd", "gate-drain")
+GATE_DRAIN = _definitions("gd", "gate-drain") | {
+    "c_r": ParameterDefinition(
+        name="cr_gd", unit="F", meaning="gate-drain: capacitance that comes with high voltage",
+        lower=0.0, upper=1e-6, scale="linear", typical=1e-12),
+    "v_r": ParameterDefinition(
+        name="vr_gd", unit="V", meaning="gate-drain: voltage at which half of it is there",
+        lower=1.0, upper=5000.0, scale="log"),
+}  # fmt: skip
 DRAIN_SOURCE = _definitions("ds", "drain-source")
 
 
@@ -96,6 +107,39 @@ class Shield:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Rise:
+    """A capacitance that comes with high voltage.
+
+    Crss of superjunction parts has a minimum at some hundred volts and rises slowly beyond it (common practice, no
+    source). The form is our own: a softplus as its charge, like that of the channel's capacitance.
+
+    Parameters
+    ----------
+    c : array_like
+        How much comes in all [F].
+    v : array_like
+        Where half of it is there [V].
+    """
+
+    c: Value
+    v: Value
+
+    @property
+    def width(self) -> Numbers:
+        """Width of the bend [V]."""
+        return np.asarray(np.asarray(self.v) * _RISE_WIDTH)
+
+    def capacitance(self, v: Numbers) -> Numbers:
+        """What of it is there at V [V]."""
+        return np.asarray(self.c * softplus_and_slope(v - self.v, self.width)[1])
+
+    def charge(self, v: Numbers) -> Numbers:
+        """Its charge [C], zero at 0 V."""
+        v_r = np.asarray(self.v)
+        return np.asarray(self.c * (softplus(v - v_r, self.width) - softplus(-v_r, self.width)))
+
+
+@dataclass(frozen=True, kw_only=True)
 class Junction:
     """Parameters of one voltage-dependent capacitance; numbers or arrays that broadcast.
 
@@ -111,6 +155,8 @@ class Junction:
         Constant part [F].
     shields : tuple of Shield
         None for the plain form.
+    rise : Rise or None
+        What comes with high voltage.
     """
 
     c_0: Value
@@ -118,10 +164,13 @@ class Junction:
     m: Value
     c_f: Value
     shields: tuple[Shield, ...] = ()
+    rise: Rise | None = None
 
 
-def junction_names(definitions: Mapping[str, ParameterDefinition], shields: int) -> tuple[str, ...]:
-    """Names of the parameters of a junction with some number of shields.
+def junction_names(
+    definitions: Mapping[str, ParameterDefinition], shields: int, rises: bool = False
+) -> tuple[str, ...]:
+    """Names of the parameters that are fitted of a junction with some number of shields.
 
     Parameters
     ----------
@@ -129,17 +178,19 @@ def junction_names(definitions: Mapping[str, ParameterDefinition], shields: int)
         `GATE_DRAIN` or `DRAIN_SOURCE`.
     shields : int
         0 to `MOST_SHIELDS`.
+    rises : bool
+        Whether something comes with high voltage; its voltage is not fitted.
 
     Returns
     -------
     tuple of str
     """
-    fields = _PLAIN + tuple(f"{field}_{n}" for n in range(1, shields + 1) for field in "svw")
+    fields = _PLAIN + tuple(f"{field}_{n}" for n in range(1, shields + 1) for field in "svw") + _RISE[:1] * rises
     return tuple(definitions[field].name for field in fields)
 
 
 def junction_from(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, Value]) -> Junction:
-    """A junction from parameters by name; shields whose parameters are absent are left out.
+    """A junction from parameters by name; shields, and a rise, whose parameters are absent are left out.
 
     Parameters
     ----------
@@ -152,12 +203,14 @@ def junction_from(definitions: Mapping[str, ParameterDefinition], values: Mappin
     -------
     Junction
     """
+    given = {field: values[d.name] for field, d in definitions.items() if d.name in values}
     shields = tuple(
-        Shield(**{field: values[definitions[f"{field}_{n}"].name] for field in "svw"})
+        Shield(**{field: given[f"{field}_{n}"] for field in "svw"})
         for n in range(1, MOST_SHIELDS + 1)
-        if definitions[f"s_{n}"].name in values
+        if f"s_{n}" in given
     )
-    return Junction(**{field: values[definitions[field].name] for field in _PLAIN}, shields=shields)
+    rise = Rise(c=given["c_r"], v=given["v_r"]) if given.keys() >= set(_RISE) else None
+    return Junction(**{field: values[definitions[field].name] for field in _PLAIN}, shields=shields, rise=rise)
 
 
 def depletion_capacitance(v: ArrayLike, c_0: ArrayLike, phi: ArrayLike, m: ArrayLike) -> Numbers:
@@ -220,7 +273,7 @@ def _shielded_voltage(v: Numbers, shield: Shield) -> tuple[Numbers, Numbers]:
 
 
 def capacitance(v: ArrayLike, j: Junction) -> Numbers:
-    """Capacitance of a junction: the sum of its shares, Cj(V) of what no shield stops, Cj(U) U'(V) of the rest, and Cf.
+    """Capacitance of a junction: its shares, Cj(V) of what no shield stops, Cj(U) U'(V) of the rest; Cf, and a rise.
 
     With one shield: (1-s) Cj(V) + s Cj(U) U'(V) + Cf. The form is our own; it follows the steep fall that
     shielded-gate, superjunction and closing-neck structures show, and has a charge in closed form.
@@ -243,6 +296,8 @@ def capacitance(v: ArrayLike, j: Junction) -> Numbers:
         u, slope = _shielded_voltage(v, shield)
         total = total + rest * shield.s * depletion_capacitance(u, j.c_0, j.phi, j.m) * slope
         rest = rest * (1.0 - np.asarray(shield.s))
+    if j.rise is not None:
+        total = total + j.rise.capacitance(v)
     return total + rest * depletion_capacitance(v, j.c_0, j.phi, j.m)
 
 
@@ -269,6 +324,8 @@ def charge(v: ArrayLike, j: Junction) -> Numbers:
         held = depletion_charge(_shielded_voltage(v, shield)[0], j.c_0, j.phi, j.m)
         total = total + rest * shield.s * held
         rest = rest * (1.0 - np.asarray(shield.s))
+    if j.rise is not None:
+        total = total + j.rise.charge(v)
     return np.asarray(total + rest * depletion_charge(v, j.c_0, j.phi, j.m))
 
 
@@ -297,6 +354,7 @@ def stored_energy(v: ArrayLike, j: Junction, panels: int = 512) -> Numbers:
     wide = Junction(
         c_0=_widened(j.c_0), phi=_widened(j.phi), m=_widened(j.m), c_f=_widened(j.c_f),
         shields=tuple(Shield(s=_widened(x.s), v=_widened(x.v), w=_widened(x.w)) for x in j.shields),
+        rise=None if j.rise is None else Rise(c=_widened(j.rise.c), v=_widened(j.rise.v)),
     )  # fmt: skip
     under = charge(v[..., None] * t**2, wide) @ (weights / (6.0 * panels) * 2.0 * t) * v
     return np.asarray(v * charge(v, j) - under)

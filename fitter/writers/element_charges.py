@@ -194,6 +194,11 @@ def junction_charge(name: str, pair: _Pair, j: Junction, c_below: float) -> list
     ]
     if scalar(j.c_f) > 0.0:
         lines.append(f"CF{name} {above} {sensed} {number(scalar(j.c_f))}")
+    if j.rise is not None and scalar(j.rise.c) > 0.0:
+        width = scalar(j.rise.width)
+        bend = _bend(f"{name}R", (above, "0"), scalar(j.rise.v), width, float(np.inf))
+        chain, node = _sum(f"{name}R", "0", bend.outputs, width)
+        lines += [*bend.lines, *chain, f"CR{name} {node} {sensed} {number(scalar(j.rise.c))}"]
     rest, phi = 1.0, scalar(j.phi)
     for k, shield in enumerate(j.shields, start=1):
         share = rest * scalar(shield.s)

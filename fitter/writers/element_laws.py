@@ -117,6 +117,8 @@ def _capacitance(v: Array, j: Junction, c_below: float) -> Array:
         above = above + rest * s * cap.depletion_capacitance(u, j.c_0, j.phi, j.m) * held
         rest *= 1.0 - s
     above = above + rest * cap.depletion_capacitance(x, j.c_0, j.phi, j.m)
+    if j.rise is not None:
+        above = above + scalar(j.rise.c) * _bend((x - scalar(j.rise.v)) / scalar(j.rise.width))[1]
     return above * slope + c_below * (1.0 - slope)
 
 

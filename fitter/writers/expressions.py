@@ -47,6 +47,10 @@ def _junction_charge(v: str, j: Junction, unit: float) -> str:
         share *= 1.0 - scalar(shield.s)
     voltages.append((share, v))
     terms = [f"{number(scalar(j.c_f) / unit)} * {v}"] if scalar(j.c_f) > 0.0 else []
+    if j.rise is not None and scalar(j.rise.c) > 0.0:
+        v_r, w = scalar(j.rise.v), scalar(j.rise.width)
+        risen = f"{_softplus(f'{v} {signed(-v_r)}', w)} {signed(-scalar(softplus(-v_r, w)))}"
+        terms.append(f"{number(scalar(j.rise.c) / unit)} * ({risen})")
     for part, u in voltages:
         if part > 0.0:
             power = f"exp({number(rest_of_m)} * log(1 + ({u}) / {number(phi)}))"

@@ -19,12 +19,14 @@ import numpy as np
 from redigitize import exact, inside, redigitize
 
 from fitter.comparison import compare
-from fitter.fitting.determination import OPEN, spreads
+from fitter.fitting.determination import OPEN, led_by_expectation, spreads
 from fitter.fitting.fit import fit
 from fitter.reader import read_part
 
 DEMOS = Path(__file__).resolve().parents[2] / "digitized_curves"
 PARTS = ("cargo_80v", "wall_box_650v", "ferry_charger_1200v", "camper_van_p40v")
+#: How the names begin of what not every form has.
+FORMS = ("s1", "s2", "cr")
 FIGURES = ("qg", "qgs", "qgd", "v_plateau", "qoss", "eoss")
 
 
@@ -44,12 +46,10 @@ def one(job):
         if c.quantity in FIGURES:
             rows[c.quantity] = (true[c.quantity], c.fitted, c.low, c.high, (c.high - c.low) / 3.92)
     sigma = np.sqrt(np.diag(result.estimate.covariance))
-    spread = spreads(result.estimate)
-    same_form = {n for n in values if n[:2] in ("s1", "s2")} == {
-        n for n in result.estimate.space.names if n[:2] in ("s1", "s2")
-    }
+    spread, led = spreads(result.estimate), led_by_expectation(result.solution, result.estimate)
+    same_form = {n for n in values if n[:2] in FORMS} == {n for n in result.estimate.space.names if n[:2] in FORMS}
     for d, u, s in zip(result.estimate.space.free, result.estimate.coordinates, sigma, strict=True):
-        if d.name not in values or d.name in result.on_bound or spread[d.name] > OPEN:
+        if d.name not in values or d.name in result.on_bound or d.name in led or spread[d.name] > OPEN:
             continue
         if not same_form and d.name.endswith(("_gd", "_ds")):
             continue
