@@ -37,6 +37,14 @@ def test_interval_of_a_sum_carries_the_correlation():
     assert (value, high, low) == pytest.approx((0.0, COVERAGE_FACTOR * np.sqrt(7.0), -COVERAGE_FACTOR * np.sqrt(7.0)))
 
 
+def test_a_figure_that_bends_back_does_not_make_an_interval_of_one_side():
+    # Up and down along a, a - 2 a^2 falls; by its slope it may rise by as much as a.
+    made = estimate([[4.0]], parameter("a"))
+    reach = 2.0 * COVERAGE_FACTOR
+    value, low, high = interval(lambda v: v["a"] - 2.0 * v["a"] ** 2, made)
+    assert (value, low, high) == pytest.approx((0.0, -reach - 2.0 * reach**2, reach))
+
+
 def test_a_bound_in_the_way_ends_the_interval_there():
     made = estimate([[4.0, 0.0], [0.0, 9.0]], parameter("a", upper=1.0), parameter("b"))
     _, low, high = interval(lambda v: v["a"] + 0.0 * v["b"], made)

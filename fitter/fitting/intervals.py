@@ -126,7 +126,8 @@ def intervals(figures: Figures, estimate: Estimate) -> tuple[Array, Array, Array
 
     Each figure is computed again with the parameters moved by 1.96 standard deviations along the direction in which it
     varies most for its probability (covariance times gradient), up and down, as far as bounds let them: where the
-    figure bends, so does its interval.
+    figure bends, so does its interval. Where it bends back so far that it moves the wrong way, its slope says how far
+    that end lies off.
 
     Parameters
     ----------
@@ -142,11 +143,14 @@ def intervals(figures: Figures, estimate: Estimate) -> tuple[Array, Array, Array
     """
     value = np.real(figures(estimate.values))
     slopes = _slopes(figures, estimate)
-    ends = []
+    reached = [value]
     for sign in (-1.0, 1.0):
         points = np.stack([_end(slope, estimate, sign) for slope in slopes.T], axis=-1)
         # Row j holds the parameters moved for figure j; only that figure is taken from it.
         at = figures(estimate.space.values(points[:, :, None]))
-        ends.append(np.diagonal(np.broadcast_to(at, (value.size, value.size))))
-    both = np.array([value, *ends])
+        end = np.diagonal(np.broadcast_to(at, (value.size, value.size)))
+        # Where a figure bends back beyond itself, the straight line says how far it may lie off to that side.
+        straight = value + np.sum(slopes * (points - estimate.coordinates[:, None]), axis=0)
+        reached += [end, np.where(sign * (end - value) < 0.0, straight, end)]
+    both = np.array(reached)
     return value, both.min(axis=0), both.max(axis=0)

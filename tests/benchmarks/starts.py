@@ -34,7 +34,7 @@ FACTOR = 3.0
 #: Ends whose chi-squared differs by less are one minimum: one standard deviation of one parameter makes 1.
 SAME = 0.5
 #: What hands start values on that are made fit for use before a fit begins there.
-BEFOREHAND = {forms: ("junction_start", "shield_starts", "two_shield_starts"), start_values: ("channel_start",)}
+BEFOREHAND = {forms: ("junction_start", "shield_starts", "two_shield_starts", "rise_start"), start_values: ("channel_start",)}
 
 
 def fit_from_kicked_starts(part, seed, use_gate_charge=True):
@@ -43,9 +43,10 @@ def fit_from_kicked_starts(part, seed, use_gate_charge=True):
     known = set()
 
     def kicked(start):
-        """What a fit has found, or has been kicked before, is left as it is."""
+        """What a fit has found, has been kicked before, or is not fitted, is left as it is."""
         factors = FACTOR ** random.uniform(-1.0, 1.0, len(start))
-        return {n: x if float(x) in known else x * f for (n, x), f in zip(start.items(), factors, strict=True)}
+        left = {n for n, x in start.items() if float(x) in known or n == "v_r"}
+        return {n: x if n in left else x * f for (n, x), f in zip(start.items(), factors, strict=True)}
 
     def from_kicked(function):
         def starts(*arguments):
@@ -85,14 +86,14 @@ def fit_from_kicked_starts(part, seed, use_gate_charge=True):
 class End:
     """Where a fit ended, without the functions that keep a result from being sent between processes."""
 
-    shields: tuple
+    forms: tuple
     left_aside: tuple
     values: dict
 
     @classmethod
     def of(cls, result):
         return cls(
-            shields=tuple(trial.shields for trial in result.trials if trial.chosen),
+            forms=tuple((trial.shields, trial.rises) for trial in result.trials if trial.chosen),
             left_aside=tuple(sorted((outlier.curve, outlier.index) for outlier in result.outliers)),
             values=dict(result.solution.values),
         )
@@ -116,8 +117,8 @@ def excess(reference, values):
 def verdict(reference, end):
     """``same``, or what is different."""
     known = End.of(reference)
-    if end.shields != known.shields:
-        return "shields {} and {}".format(*end.shields)
+    if end.forms != known.forms:
+        return "shields {} and {}".format(*end.forms)
     if end.left_aside != known.left_aside:
         return "other points left aside"
     above = excess(reference, end.values)
