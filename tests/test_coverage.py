@@ -23,7 +23,7 @@ CURVES = ("ciss", "coss", "crss", "transfer 25 C", "output 4 V", "output 10 V", 
 
 def study(part, values, count):
     """For each re-digitization: by name, truth, estimate, ends of the interval, standard error."""
-    return [one((part, values, seed)) for seed in range(count)]
+    return [one((part, values, set(values), seed)) for seed in range(count)]
 
 
 def held(rows):

@@ -289,10 +289,13 @@ def test_the_spread_of_a_resistance_is_relative_to_both():
 # What a least-squares fit says of a direction that the data leave open
 
 
-def solution(jacobian, on_bound=(False, False)):
+def solution(jacobian, on_bound=(False, False), residuals=None):
+    """A fit's end; what is on a bound is on the upper one."""
+    residuals = np.zeros(len(jacobian)) if residuals is None else np.array(residuals)
     space = ParameterSpace(free=(DEFINITIONS["c0_gd"], DEFINITIONS["c0_ds"]), fixed=PLAIN)
     return Solution(
-        space=space, coordinates=space.coordinates({"c0_gd": 1e-9, "c0_ds": 1e-9}), blocks=(), residuals={},
+        space=space, coordinates=space.coordinates({"c0_gd": 1e-9, "c0_ds": 1e-9}), blocks=(),
+        residuals={"all": residuals},
         jacobian=np.array(jacobian, dtype=float), on_bound=np.array(on_bound), chi_square=0.0, cost=0.0, converged=True,
     )  # fmt: skip
 
@@ -330,7 +333,30 @@ def test_the_sum_itself_is_known_all_the_same():
     assert error[0] == pytest.approx(math.sqrt(0.2), rel=0.01)
 
 
-def test_a_parameter_on_its_bound_has_no_variance_and_takes_none_of_the_others():
-    covariance = solution([[3.0, 1.0], [4.0, 1.0]], on_bound=(False, True)).covariance
-    assert covariance[0, 0] == pytest.approx(1.0 / 25.0)
-    np.testing.assert_array_equal(covariance[1], 0.0)
+SLOPES = np.array([[3.0, 1.0], [4.0, 1.0], [0.0, 20.0]])
+
+
+def test_a_parameter_just_on_its_bound_varies_inwards_as_much_as_without_it():
+    covariance = solution(SLOPES, on_bound=(False, True)).covariance
+    np.testing.assert_allclose(covariance, np.linalg.inv(SLOPES.T @ SLOPES), rtol=1e-9)
+
+
+def test_a_parameter_far_beyond_its_bound_hardly_varies_and_the_others_as_if_it_were_known():
+    # The cost falls outwards, upwards, by 4000 per unit: an exponential distribution of that rate is left.
+    covariance = solution(SLOPES, on_bound=(False, True), residuals=[0.0, 0.0, -200.0]).covariance
+    assert covariance[1, 1] == pytest.approx(2.0 / 4000.0**2, rel=0.02)
+    assert covariance[0, 0] == pytest.approx(1.0 / 25.0, rel=1e-3)
+
+
+def test_a_parameter_on_its_bound_takes_the_others_along():
+    slopes = SLOPES[:2]
+    residuals = np.array([-0.8, 0.6])  # with no slope along the first coordinate: that one is at its best
+    made = solution(slopes, on_bound=(False, True), residuals=residuals)
+    # Drawn from the normal distribution of the unbounded fit, where the second coordinate lies below its bound.
+    random = np.random.default_rng(1)
+    whole = np.linalg.inv(slopes.T @ slopes)
+    draws = random.multivariate_normal(-whole @ slopes.T @ residuals, whole, size=400_000)
+    first, second = draws[draws[:, 1] < 0.0].T
+    expected = np.mean(first**2), np.mean(second**2), np.mean(first * second)
+    found = made.covariance
+    assert (found[0, 0], found[1, 1], found[0, 1]) == pytest.approx(expected, rel=0.02)

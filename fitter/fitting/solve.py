@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import lmfit
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import erfcx
 
 from fitter.errors import FitError, OperatingPointError
 from fitter.fitting.blocks import Block
@@ -23,6 +24,8 @@ _MOST_EVALUATIONS = 400
 _NOWHERE = 1e6
 #: Information added to every scaled coordinate: where the data give none, the variance comes out huge, not zero.
 _LEAST_INFORMATION = 1e-12
+#: A coordinate on its bound moves by no more than this share of the way to the other one, 1-sigma.
+_FARTHEST = 0.25
 #: Residuals up to about this many standard deviations count by their square in a robust pass, too.
 ROBUST_SCALE = 3.0
 #: Relative change of cost and coordinates that ends a fit; a look that only prepares the next fit takes the second.
@@ -115,21 +118,31 @@ class Solution:
     def covariance(self) -> Array:
         """Covariance of the coordinates, shape (n, n).
 
-        Rows and columns of those on a bound are zero; directions that the data leave open have a huge variance.
+        Directions that the data leave open have a huge variance. A coordinate on its bound can only move inwards, and
+        varies as much as the part of its distribution that lies there; the others move with it.
         """
         row, column = self._second()
-        result = np.zeros((self.on_bound.size, self.on_bound.size))
-        first = _inverse(self.jacobian[:row, :column], self.on_bound[:column])
+        residuals = np.concatenate(list(self.residuals.values()))
+        room = self._room()
+        first = _inverse(self.jacobian[:row, :column], residuals[:row], room[:column])
+        if not self.followers:
+            return first
+        result = np.zeros((room.size, room.size))
         result[:column, :column] = first
-        if self.followers:
-            by_first, by_second = self.jacobian[row:, :column], self.jacobian[row:, column:]
-            own = _inverse(by_second, self.on_bound[column:])
-            # By how much the second fit's parameters move with the first one's.
-            moves = -own @ by_second.T @ by_first
-            result[column:, :column] = moves @ first
-            result[:column, column:] = result[column:, :column].T
-            result[column:, column:] = own + moves @ first @ moves.T
+        by_first, by_second = self.jacobian[row:, :column], self.jacobian[row:, column:]
+        own = _inverse(by_second, residuals[row:], room[column:])
+        # By how much the second fit's parameters move with the first one's.
+        moves = -own @ by_second.T @ by_first
+        result[column:, :column] = moves @ first
+        result[:column, column:] = result[column:, :column].T
+        result[column:, column:] = own + moves @ first @ moves.T
         return result
+
+    def _room(self) -> Array:
+        """How far each coordinate on a bound can move, downwards if below zero; not-a-number for the others."""
+        lower, upper = self.space.bounds()
+        inwards = np.where(self.coordinates - lower < upper - self.coordinates, upper - lower, lower - upper)
+        return np.where(self.on_bound, inwards, np.nan)
 
     def leverage(self) -> Mapping[str, float]:
         """How many parameters' worth of freedom each block's data took: the trace of its part of the hat matrix."""
@@ -145,17 +158,53 @@ class Solution:
         return taken
 
 
-def _inverse(jacobian: Array, on_bound: NDArray[np.bool_]) -> Array:
-    """Inverse of the information that derivatives carry; zero for what is on a bound."""
-    inside = ~on_bound
-    result = np.zeros((inside.size, inside.size))
-    information = jacobian[:, inside].T @ jacobian[:, inside]
+def _inverse(jacobian: Array, residuals: Array, room: Array) -> Array:
+    """Covariance that derivatives give; of what is on a bound, that of a normal distribution cut off there.
+
+    Parameters
+    ----------
+    jacobian : ndarray, shape (rows, n)
+        Derivatives of the residuals.
+    residuals : ndarray, shape (rows,)
+        They tell how far beyond its bound a coordinate would lie without it.
+    room : ndarray, shape (n,)
+        As from `Solution._room`.
+
+    Returns
+    -------
+    ndarray, shape (n, n)
+    """
+    information = jacobian.T @ jacobian
     # Scaled to a unit diagonal first: the information spans many decades otherwise.
     seen = np.diag(information)
     scale = np.sqrt(np.where(seen > 0.0, seen, 1.0))
     scaled = information / np.outer(scale, scale) + _LEAST_INFORMATION * np.eye(scale.size)
-    result[np.ix_(inside, inside)] = np.linalg.inv(scaled) / np.outer(scale, scale)
-    return result
+    on, off = np.flatnonzero(~np.isnan(room)), np.flatnonzero(np.isnan(room))
+    result = np.zeros_like(scaled)
+    inner = np.linalg.inv(scaled[np.ix_(off, off)])
+    if on.size:
+        # By how much the others move with what is on a bound, and how far that reaches.
+        moves = -inner @ scaled[np.ix_(off, on)]
+        bound = np.linalg.inv(scaled[np.ix_(on, on)] + scaled[np.ix_(on, off)] @ moves)
+        sigma = np.sqrt(np.diag(bound))
+        beyond = bound @ (jacobian[:, on].T @ residuals / scale[on]) * np.sign(room[on]) / sigma
+        reach = np.minimum(_cut_off(np.maximum(beyond, 0.0)), _FARTHEST * np.abs(room[on]) * scale[on] / sigma)
+        bound *= np.outer(reach, reach)
+        result[np.ix_(on, on)] = bound
+        result[np.ix_(off, on)] = moves @ bound
+        result[np.ix_(on, off)] = result[np.ix_(off, on)].T
+        inner = inner + moves @ bound @ moves.T
+    result[np.ix_(off, off)] = inner
+    # Rounding makes an inverse a little lopsided.
+    return np.asarray(0.5 * (result + result.T) / np.outer(scale, scale))
+
+
+def _cut_off(a: Array) -> Array:
+    """Root mean square of what of a normal distribution lies beyond `a` standard deviations, measured from there."""
+    hazard = np.sqrt(2.0 / np.pi) / erfcx(a / np.sqrt(2.0))
+    far = np.maximum(a, 1.0)
+    # Far out the exact form is a small difference of large numbers.
+    return np.sqrt(np.where(a > 30.0, 2.0 / far**2, 1.0 + a * a - a * hazard))
 
 
 def solve(

@@ -31,13 +31,21 @@ FIGURES = ("qg", "qgs", "qgd", "v_plateau", "qoss", "eoss")
 
 
 def truth_of(name):
+    """The part, the parameters that are taken for the truth, and those of them that the part's data determine."""
     part = read_part(DEMOS / name)
-    return part, inside(fit(part, use_gate_charge=True).estimate.values)
+    result = fit(part, use_gate_charge=True)
+    return part, inside(result.estimate.values), determined(result)
+
+
+def determined(result):
+    led = led_by_expectation(result.solution, result.estimate)
+    known = {name for name, spread in spreads(result.estimate).items() if spread <= OPEN}
+    return known - led - set(result.on_bound)
 
 
 def one(job):
     """Figures and parameters of one re-digitization: name -> (truth, estimate, low, high, standard error)."""
-    part, values, seed = job
+    part, values, names, seed = job
     again = redigitize(part, values, seed)
     result = fit(again, use_gate_charge=True)
     true = {c.quantity: c.fitted for c in compare(part, exact(values), (), False)}
@@ -46,10 +54,10 @@ def one(job):
         if c.quantity in FIGURES:
             rows[c.quantity] = (true[c.quantity], c.fitted, c.low, c.high, (c.high - c.low) / 3.92)
     sigma = np.sqrt(np.diag(result.estimate.covariance))
-    spread, led = spreads(result.estimate), led_by_expectation(result.solution, result.estimate)
+    names = names & determined(result)
     same_form = {n for n in values if n[:2] in FORMS} == {n for n in result.estimate.space.names if n[:2] in FORMS}
     for d, u, s in zip(result.estimate.space.free, result.estimate.coordinates, sigma, strict=True):
-        if d.name not in values or d.name in result.on_bound or d.name in led or spread[d.name] > OPEN:
+        if d.name not in names:
             continue
         if not same_form and d.name.endswith(("_gd", "_ds")):
             continue
@@ -59,8 +67,8 @@ def one(job):
 
 
 def study(name, count, workers):
-    part, values = truth_of(name)
-    jobs = [(part, values, seed) for seed in range(count)]
+    truth = truth_of(name)
+    jobs = [(*truth, seed) for seed in range(count)]
     with ProcessPoolExecutor(workers) as pool:
         found = list(pool.map(one_safely, jobs, chunksize=4))
     failed = sum(f is None for f in found)

@@ -34,7 +34,10 @@ FACTOR = 3.0
 #: Ends whose chi-squared differs by less are one minimum: one standard deviation of one parameter makes 1.
 SAME = 0.5
 #: What hands start values on that are made fit for use before a fit begins there.
-BEFOREHAND = {forms: ("junction_start", "shield_starts", "two_shield_starts", "rise_start"), start_values: ("channel_start",)}
+BEFOREHAND = {
+    forms: ("junction_start", "shield_starts", "two_shield_starts", "rise_start"),
+    start_values: ("channel_start",),
+}
 
 
 def fit_from_kicked_starts(part, seed, use_gate_charge=True):
@@ -118,7 +121,7 @@ def verdict(reference, end):
     """``same``, or what is different."""
     known = End.of(reference)
     if end.forms != known.forms:
-        return "shields {} and {}".format(*end.forms)
+        return "forms {} and {}".format(*end.forms)
     if end.left_aside != known.left_aside:
         return "other points left aside"
     above = excess(reference, end.values)
