@@ -236,40 +236,57 @@ def _choose(
     may_rise: bool = False,
 ) -> _Chosen:
     """Fit one junction to its own curve in every form, and take the one with the lowest AICc."""
-    fields = {d.name: f for f, d in definitions.items()}
-    n = sum(block.points for block in blocks)
-    v, c = points
-    ends: list[tuple[FormTrial, dict[str, float]]] = []
-    rise = rise_start(v, c) if may_rise else {}
-    for risen in ({}, rise) if rise else ({},):
-        fixed = {definitions["v_r"].name: risen["v_r"]} if risen else {}
-        # What is left of the points without what comes with high voltage is a curve that falls.
-        falling = np.maximum(c - Rise(c=risen["c_r"], v=risen["v_r"]).capacitance(v), 0.3 * c) if risen else c
-        starts = [junction_start(v, falling)]
-        for shields in range(MOST_SHIELDS + 1):
-            free = junction_names(definitions, shields, bool(risen))
-            # A form that would lose even if it met every point need not be tried.
-            if corrected_akaike(0.0, len(free), n) >= min((trial.aicc for trial, _ in ends), default=np.inf):
-                break
-            if shields:
-                one = {fields[name]: x for name, x in ends[-1][1].items()}
-                starts = shield_starts(v, falling) if shields == 1 else two_shield_starts(one, v, falling)
-            good = [{**start, **risen} for start in sized(starts, v, falling)[:_FOLLOWED]]
-            named = [{definitions[f].name: x for f, x in start.items()} for start in good]
-            values, cost = lowest(blocks, model_space(free, {**others, **fixed}, blocks), named)
-            trial = FormTrial(
-                capacitance=name, shields=shields, rises=bool(risen), parameters=len(free), points=n,
-                chi_square=2.0 * cost, aicc=corrected_akaike(2.0 * cost, len(free), n),
-            )  # fmt: skip
-            ends.append((trial, fixed | {name: scalar(values[name]) for name in free}))
+    rise = rise_start(*points) if may_rise else {}
+    ends = _followed(name, definitions, points, blocks, others, {}, np.inf)
     if not ends:
         least = len(junction_names(definitions, 0))
+        n = sum(block.points for block in blocks)
         raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {least} parameters")
+    if rise:
+        ends += _followed(name, definitions, points, blocks, others, rise, min(trial.aicc for trial, _ in ends))
     trial, values = min(ends, key=lambda end: end[0].aicc)
     if trial.shields > 1:
         values = _ordered(definitions, values)
     trials = tuple(FormTrial(**{**vars(t), "chosen": t is trial}) for t, _ in ends)
     return _Chosen(values=values, free=junction_names(definitions, trial.shields, trial.rises), trials=trials)
+
+
+def _followed(
+    name: str,
+    definitions: Mapping[str, ParameterDefinition],
+    points: tuple[Array, Array],
+    blocks: Sequence[Block],
+    others: Mapping[str, float],
+    rise: Mapping[str, float],
+    best: float,
+) -> list[tuple[FormTrial, dict[str, float]]]:
+    """One junction in the forms of 0, 1, 2 ... shields, with or without a rise, as long as one may beat the best."""
+    fields = {d.name: f for f, d in definitions.items()}
+    n = sum(block.points for block in blocks)
+    v, c = points
+    fixed = {definitions["v_r"].name: rise["v_r"]} if rise else {}
+    # What is left of the points without what comes with high voltage is a curve that falls.
+    falling = np.maximum(c - Rise(c=rise["c_r"], v=rise["v_r"]).capacitance(v), 0.3 * c) if rise else c
+    starts = [junction_start(v, falling)]
+    ends: list[tuple[FormTrial, dict[str, float]]] = []
+    for shields in range(MOST_SHIELDS + 1):
+        free = junction_names(definitions, shields, bool(rise))
+        # A form that would lose even if it met every point need not be tried.
+        if corrected_akaike(0.0, len(free), n) >= best:
+            break
+        if shields:
+            one = {fields[name]: x for name, x in ends[-1][1].items()}
+            starts = shield_starts(v, falling) if shields == 1 else two_shield_starts(one, v, falling)
+        good = [{**start, **rise} for start in sized(starts, v, falling)[:_FOLLOWED]]
+        named = [{definitions[f].name: x for f, x in start.items()} for start in good]
+        values, cost = lowest(blocks, model_space(free, {**others, **fixed}, blocks), named)
+        trial = FormTrial(
+            capacitance=name, shields=shields, rises=bool(rise), parameters=len(free), points=n,
+            chi_square=2.0 * cost, aicc=corrected_akaike(2.0 * cost, len(free), n),
+        )  # fmt: skip
+        ends.append((trial, fixed | {name: scalar(values[name]) for name in free}))
+        best = min(best, trial.aicc)
+    return ends
 
 
 def _ordered(definitions: Mapping[str, ParameterDefinition], values: Mapping[str, float]) -> dict[str, float]:
