@@ -21,7 +21,7 @@ from fitter.fitting.stages import Stage
 from fitter.fitting.start_values import (
     gate_source_start,
     junction_start,
-    rise_start,
+    rise_voltage,
     shield_starts,
     sized,
     sorted_curve,
@@ -32,7 +32,6 @@ from fitter.models.capacitance import (
     GATE_DRAIN,
     MOST_SHIELDS,
     Junction,
-    Rise,
     capacitance,
     junction_from,
     junction_names,
@@ -236,13 +235,14 @@ def _choose(
     may_rise: bool = False,
 ) -> _Chosen:
     """Fit one junction to its own curve in every form, and take the one with the lowest AICc."""
-    rise = rise_start(*points) if may_rise else {}
-    ends = _followed(name, definitions, points, blocks, others, {}, np.inf)
+    ends = _followed(name, definitions, points, blocks, others)
     if not ends:
         least = len(junction_names(definitions, 0))
         n = sum(block.points for block in blocks)
         raise FitError(f"{n} points of {blocks[0].name} are too few for a model of {least} parameters")
-    if rise:
+    v_r = rise_voltage(*points) if may_rise else None
+    if v_r is not None:
+        rise = {definitions["v_r"].name: v_r}
         ends += _followed(name, definitions, points, blocks, others, rise, min(trial.aicc for trial, _ in ends))
     trial, values = min(ends, key=lambda end: end[0].aicc)
     if trial.shields > 1:
@@ -257,31 +257,30 @@ def _followed(
     points: tuple[Array, Array],
     blocks: Sequence[Block],
     others: Mapping[str, float],
-    rise: Mapping[str, float],
-    best: float,
+    rise: Mapping[str, float] | None = None,
+    best: float = np.inf,
 ) -> list[tuple[FormTrial, dict[str, float]]]:
     """One junction in the forms of 0, 1, 2 ... shields, with or without a rise, as long as one may beat the best."""
-    fields = {d.name: f for f, d in definitions.items()}
+    fields, fixed = {d.name: f for f, d in definitions.items()}, dict(rise or {})
     n = sum(block.points for block in blocks)
-    v, c = points
-    fixed = {definitions["v_r"].name: rise["v_r"]} if rise else {}
-    # What is left of the points without what comes with high voltage is a curve that falls.
-    falling = np.maximum(c - Rise(c=rise["c_r"], v=rise["v_r"]).capacitance(v), 0.3 * c) if rise else c
-    starts = [junction_start(v, falling)]
     ends: list[tuple[FormTrial, dict[str, float]]] = []
     for shields in range(MOST_SHIELDS + 1):
-        free = junction_names(definitions, shields, bool(rise))
+        free = junction_names(definitions, shields, bool(fixed))
         # A form that would lose even if it met every point need not be tried.
         if corrected_akaike(0.0, len(free), n) >= best:
             break
-        if shields:
-            one = {fields[name]: x for name, x in ends[-1][1].items()}
-            starts = shield_starts(v, falling) if shields == 1 else two_shield_starts(one, v, falling)
-        good = [{**start, **rise} for start in sized(starts, v, falling)[:_FOLLOWED]]
+        if shields == 0:
+            starts = [junction_start(*points)]
+        elif shields == 1:
+            starts = shield_starts(*points)
+        else:
+            starts = two_shield_starts({fields[name]: x for name, x in ends[-1][1].items()}, *points)
+        risen = {fields[name]: x for name, x in fixed.items()}
+        good = sized([{**start, **risen} for start in starts], *points)[:_FOLLOWED]
         named = [{definitions[f].name: x for f, x in start.items()} for start in good]
         values, cost = lowest(blocks, model_space(free, {**others, **fixed}, blocks), named)
         trial = FormTrial(
-            capacitance=name, shields=shields, rises=bool(rise), parameters=len(free), points=n,
+            capacitance=name, shields=shields, rises=bool(fixed), parameters=len(free), points=n,
             chi_square=2.0 * cost, aicc=corrected_akaike(2.0 * cost, len(free), n),
         )  # fmt: skip
         ends.append((trial, fixed | {name: scalar(values[name]) for name in free}))

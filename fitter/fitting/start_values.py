@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fitter.errors import FitError
-from fitter.models.capacitance import GATE_DRAIN, MOST_SHIELDS, Junction, Shield, capacitance
+from fitter.models.capacitance import GATE_DRAIN, MOST_SHIELDS, Junction, Rise, Shield, capacitance
 from fitter.models.temperature import REFERENCE, junction_temperature
 from fitter.part import Curve, Part, Quantity
 
@@ -20,7 +20,7 @@ __all__ = [
     "channel_start",
     "gate_source_start",
     "junction_start",
-    "rise_start",
+    "rise_voltage",
     "shield_starts",
     "sized",
     "sorted_curve",
@@ -119,8 +119,8 @@ def two_shield_starts(one: Mapping[str, float], v: Array, c: Array) -> list[dict
     return starts
 
 
-def rise_start(v: Array, c: Array) -> dict[str, float]:
-    """What comes with high voltage, where the points show that something does.
+def rise_voltage(v: Array, c: Array) -> float | None:
+    """Where half of what comes with high voltage is there, if the points show that something does.
 
     Parameters
     ----------
@@ -129,15 +129,13 @@ def rise_start(v: Array, c: Array) -> dict[str, float]:
 
     Returns
     -------
-    dict
-        c_r [F] and v_r [V], the latter the highest voltage; empty where the curve does not rise at its end.
+    float or None
+        The highest voltage [V]; None where the curve does not rise at its end.
     """
     if c.size < _AVERAGED:
-        return {}
+        return None
     smooth = np.convolve(c, np.full(_AVERAGED, 1.0 / _AVERAGED), mode="valid")
-    low, last = float(np.min(smooth)), float(smooth[-1])
-    # Half of it is there at the end.
-    return {"c_r": 2.0 * (last - low), "v_r": float(v[-1])} if last > _RISEN * low else {}
+    return float(v[-1]) if smooth[-1] > _RISEN * np.min(smooth) else None
 
 
 def _fallen(v: Array, c: Array, shares: tuple[float, ...]) -> list[float]:
@@ -150,14 +148,14 @@ def _fallen(v: Array, c: Array, shares: tuple[float, ...]) -> list[float]:
 def sized(starts: Sequence[Mapping[str, float]], v: Array, c: Array) -> list[dict[str, float]]:
     """Starts with the sizes that suit the points best, best first.
 
-    C0, Cf and the shields' shares make the capacitance linearly, so that they follow from the other parameters: by
-    non-negative least squares of the relative deviations, in the multiplicative steps of D. D. Lee and H. S. Seung,
+    C0, Cf, the shields' shares and a rise make the capacitance linearly, so that they follow from the other parameters:
+    by non-negative least squares of the relative deviations, in the multiplicative steps of D. D. Lee and H. S. Seung,
     Adv. Neural Inf. Process. Syst. 13 (2001) 556. Voltages outside the points are moved to their ends.
 
     Parameters
     ----------
     starts : sequence of mapping of str to float
-        Any number of them, all with as many shields.
+        Any number of them, all with as many shields, and with v_r or without.
     v, c : ndarray, shape (n,)
         As for `junction_start`, in rising order of v.
 
@@ -178,8 +176,9 @@ def sized(starts: Sequence[Mapping[str, float]], v: Array, c: Array) -> list[dic
     for n in numbers:
         shield = Shield(s=1.0, v=column[f"v_{n}"], w=column[f"w_{n}"])
         shares.append(capacitance(v, replace(unit, shields=(shield,))))
+    rises = [Rise(c=1.0, v=column["v_r"]).capacitance(v)] if "v_r" in fields else []
     # Relative deviations, each share with a mean of one.
-    parts = np.stack([*shares, np.ones_like(shares[0])], axis=1) / c
+    parts = np.stack([*shares, np.ones_like(shares[0]), *rises], axis=1) / c
     scale = parts.mean(axis=2, keepdims=True)
     parts /= scale
     products, aim = parts @ np.swapaxes(parts, 1, 2), parts.sum(axis=2, keepdims=True)
@@ -188,8 +187,10 @@ def sized(starts: Sequence[Mapping[str, float]], v: Array, c: Array) -> list[dic
         sizes *= aim / (products @ sizes)
     misfit = np.sum((np.sum(parts * sizes, axis=1) - 1.0) ** 2, axis=1)
     sizes = (sizes / scale)[..., 0]
-    fields["c_f"] = sizes[:, -1]
-    fields["c_0"] = left = np.sum(sizes[:, :-1], axis=1)
+    fields["c_f"] = sizes[:, len(shares)]
+    fields["c_0"] = left = np.sum(sizes[:, : len(shares)], axis=1)
+    if rises:
+        fields["c_r"] = sizes[:, -1]
     for n in numbers:
         fields[f"s_{n}"] = sizes[:, n] / left
         left = left - sizes[:, n]

@@ -35,7 +35,7 @@ FACTOR = 3.0
 SAME = 0.5
 #: What hands start values on that are made fit for use before a fit begins there.
 BEFOREHAND = {
-    forms: ("junction_start", "shield_starts", "two_shield_starts", "rise_start"),
+    forms: ("junction_start", "shield_starts", "two_shield_starts"),
     start_values: ("channel_start",),
 }
 
@@ -46,10 +46,9 @@ def fit_from_kicked_starts(part, seed, use_gate_charge=True):
     known = set()
 
     def kicked(start):
-        """What a fit has found, has been kicked before, or is not fitted, is left as it is."""
+        """What a fit has found, or has been kicked before, is left as it is."""
         factors = FACTOR ** random.uniform(-1.0, 1.0, len(start))
-        left = {n for n, x in start.items() if float(x) in known or n == "v_r"}
-        return {n: x if n in left else x * f for (n, x), f in zip(start.items(), factors, strict=True)}
+        return {n: x if float(x) in known else x * f for (n, x), f in zip(start.items(), factors, strict=True)}
 
     def from_kicked(function):
         def starts(*arguments):
