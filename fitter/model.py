@@ -206,28 +206,36 @@ class FittedModel:
                 )
         return tuple(said)
 
-    def zero_temperature_coefficient(self) -> tuple[float, float] | None:
+    def zero_temperature_coefficient(self, v_ds: float | None = None) -> tuple[float, float] | None:
         """Where the transfer curves of 25 degC and of the hottest digitized temperature cross.
+
+        Parameters
+        ----------
+        v_ds : float, optional
+            Drain-source voltage [V], negative for a p-channel part; that of the first transfer curve by default.
 
         Returns
         -------
         v_gs, i_d : float
-            [V], [A], with a p-channel part's signs, in saturation; None where they do not cross within the gate's
-            rating.
+            [V], [A], with a p-channel part's signs; None where they do not cross within the gate's rating.
         """
+        if v_ds is None:
+            curves = self.part.curves_of(Quantity.TRANSFER)
+            at_drain = next((c.v_ds for c in curves if c.v_ds is not None), 0.5 * self.part.v_ds_max)
+        else:
+            at_drain = self.sign * v_ds
         hottest = self.validity.t_j[-1]
         if hottest <= REFERENCE:
             return None
         cold, hot = self.transistor().channel, self.transistor(hottest).channel
         v_gs = np.linspace(float(cold.v_th), self.part.v_gs_max, 2000)
-        v_ds = 0.5 * self.part.v_ds_max
-        lead = terminal_current(v_gs, v_ds, hot) - terminal_current(v_gs, v_ds, cold)
+        lead = terminal_current(v_gs, at_drain, hot) - terminal_current(v_gs, at_drain, cold)
         down = np.flatnonzero((lead[:-1] > 0.0) & (lead[1:] <= 0.0))
         if down.size == 0:
             return None
         k = int(down[0])
         at = v_gs[k] + (v_gs[k + 1] - v_gs[k]) * lead[k] / (lead[k] - lead[k + 1])
-        return self.sign * float(at), self.sign * float(terminal_current(at, v_ds, cold))
+        return self.sign * float(at), self.sign * float(terminal_current(at, at_drain, cold))
 
     def ciss(self, v_ds: ArrayLike) -> Array:
         """Input capacitance at VGS = 0.

@@ -186,7 +186,7 @@ def plot_transfer(model: FittedModel, ax: Axes | None = None, scale: Literal["li
         ax.set_xlim(right=1.25 * end)  # room for the legend beside the curves
     else:
         ax.set_ylim(0.0, 1.05 * top)
-    crossing = model.zero_temperature_coefficient() if scale == "linear" else None
+    crossing = model.zero_temperature_coefficient(model.sign * v_ds) if scale == "linear" else None
     if crossing is not None and abs(crossing[1]) < top:
         ax.plot([abs(crossing[0])], [abs(crossing[1])], "k+", markersize=7.0)
         ax.annotate(

@@ -35,8 +35,9 @@ _PARAMETERS_END, _CHECKS = 0.355, 0.368
 _GAP = 0.064
 #: Height of a table line, as a share of the page.
 _LINE = 0.0103
-#: Size of the tables' and notices' texts [pt].
+#: Size of the tables' and notices' texts [pt]; of what lines stand closer, this share of their distance.
 _TABLE_SIZE = 5.7
+_SIZE_OF_LINE = 0.82
 
 CAUTIONS = (
     "Typical values are no limits. No safe operating area, avalanche, short circuit or self-heating. Such circuits "
@@ -77,6 +78,10 @@ class _Texts(Artist):
         super().__init__()
         self._texts: list[tuple[float, float, str, str, str, FontProperties]] = []
         self._fonts = {weight: FontProperties(size=_TABLE_SIZE, weight=weight) for weight in ("normal", "bold")}
+
+    def set_size(self, size: float) -> None:
+        """Size of the texts that are added from now on [pt]."""
+        self._fonts = {weight: FontProperties(size=size, weight=weight) for weight in self._fonts}
 
     def add(
         self, x: float, y: float, text: str, align: str = "left", colour: str = "black", weight: str = "normal"
@@ -222,12 +227,14 @@ def _draw_parameters(figure: Figure, texts: _Texts, model: FittedModel, top: flo
     _rule(figure, top - 0.004, _LEFT, _PARAMETERS_END)
     step = min(_LINE, (top - 0.012 - 0.056) / max(len(model.parameters), 1))
     y = top - 0.0035
+    texts.set_size(min(_TABLE_SIZE, _SIZE_OF_LINE * step * 72.0 * _PAGE[1]))
     for p in model.parameters.values():
         y -= step
         error = "" if p.stderr is None else engineering(p.stderr, _pretty_unit(p), 2)
         colour = "black" if p.origin == "fitted" else "0.4"
         cells = (p.name, engineering(p.value, _pretty_unit(p), 4), error, p.origin)
         _row(texts, y, [c.replace("-", "\N{MINUS SIGN}") for c in cells], _PARAMETER_PLACES, [colour] * 4)
+    texts.set_size(_TABLE_SIZE)
 
 
 def _pretty_unit(p: Parameter) -> str:

@@ -324,6 +324,17 @@ def test_the_transfer_plot_has_a_line_for_each_temperature(model):
     ]
 
 
+@pytest.mark.parametrize("name", ["cargo_80v", "wall_box_650v", "camper_van_p40v"])
+def test_the_zero_temperature_coefficient_lies_on_the_lines_of_both_temperatures(fitted, name):
+    ax = fitter.plot_transfer(fitted(name))
+    (mark,) = [line for line in ax.lines if line.get_marker() == "+"]
+    (v_gs,), (i_d,) = mark.get_data()
+    hottest = max(int(label.split()[0]) for label in labels_of(ax) if label[0].isdigit())
+    for t_j in (25, hottest):
+        (line,) = [x for x in ax.lines if x.get_label() == f"{t_j} \N{DEGREE SIGN}C"]
+        assert np.interp(v_gs, *line.get_data()) == pytest.approx(i_d, rel=0.02)
+
+
 def test_the_gate_charge_plot_shows_predicted_digitized_and_stated(model):
     assert labels_of(fitter.plot_gate_charge(model)) == ["predicted", "digitized", "stated"]
 

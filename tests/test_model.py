@@ -137,17 +137,23 @@ def test_what_is_no_temperature_is_refused(n_channel, t_j):
 # Where the temperature does not matter
 
 
-def test_zero_temperature_coefficient_lies_where_the_two_transfer_curves_cross(model):
-    v_gs, i_d = model.zero_temperature_coefficient()
-    v_ds, hottest = model.sign * 0.5 * model.part.v_ds_max, model.validity.t_j[-1]
-    cold, hot = (float(model.drain_current(v_gs, v_ds, t_j=t)) for t in (25.0, hottest))
+def transfer_v_ds(model):
+    """VDS of the transfer curves, with the channel's sign."""
+    return model.sign * model.part.curves_of(Quantity.TRANSFER)[0].v_ds
+
+
+@pytest.mark.parametrize("share", [None, 0.5])
+def test_zero_temperature_coefficient_lies_where_the_two_transfer_curves_cross(model, share):
+    v_ds = transfer_v_ds(model) if share is None else model.sign * share * model.part.v_ds_max
+    v_gs, i_d = model.zero_temperature_coefficient(None if share is None else v_ds)
+    cold, hot = (float(model.drain_current(v_gs, v_ds, t_j=t)) for t in (25.0, model.validity.t_j[-1]))
     assert cold == pytest.approx(hot, rel=1e-4)
     assert i_d == pytest.approx(cold, rel=1e-6)
 
 
 def test_hot_transfer_curve_leads_below_the_crossing_and_lags_above_it(model):
     v_gs, _ = model.zero_temperature_coefficient()
-    v_ds, hottest = model.sign * 0.5 * model.part.v_ds_max, model.validity.t_j[-1]
+    v_ds, hottest = transfer_v_ds(model), model.validity.t_j[-1]
     for factor, leads in ((0.97, True), (1.03, False)):
         cold, hot = (abs(float(model.drain_current(factor * v_gs, v_ds, t_j=t))) for t in (25.0, hottest))
         assert (hot > cold) is leads
