@@ -34,7 +34,8 @@ _PREDICTS_NOTHING = 3.0
 #: Condition of a curve's row: its mean over the points.
 MEAN = "mean"
 _GATE_CHARGE = ("qg", "qgs", "qgd", "v_plateau")
-_EXPECTED = " (expected)"
+#: How the names of blocks end that are no data of their own: expectations, and what was read off a curve.
+_EXPECTED, _READ = " (expected)", " (read)"
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -90,9 +91,9 @@ def leave_out(part: Part, result: FitResult) -> tuple[LeftOut, ...]:
     charge = [b for b in blocks if _is_gate_charge(b)]
     rows: list[LeftOut] = []
     for block in blocks:
-        if block in charge or block.name.endswith(_EXPECTED):
+        if block in charge or block.name.endswith((_EXPECTED, _READ)):
             continue
-        estimate = _without(part, result, [block])
+        estimate = _without(part, result, [b for b in blocks if b.name in (block.name, block.name + _READ)])
         if isinstance(block, ScalarBlock):
             wanted = block.name.removesuffix(" (table)")
             rows += _table_rows(part, estimate, block.name, (wanted,))

@@ -18,6 +18,7 @@ from fitter.fitting.forms import corrected_akaike, fit_capacitances
 from fitter.fitting.solve import solve
 from fitter.fitting.space import derivatives
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
+from fitter.models.channel import threshold_voltage
 from fitter.models.transistor import Transistor
 from fitter.models.types import scalar
 from fitter.part import (
@@ -508,3 +509,49 @@ def test_same_input_twice_gives_the_same_bits():
     assert first.space.names == second.space.names
     assert first.coordinates.tobytes() == second.coordinates.tobytes()
     assert first.covariance.tobytes() == second.covariance.tobytes()
+
+
+# VGS(th) at 25 degC, read off its curve over the junction temperature
+
+
+def with_threshold_curve(change):
+    part = read_part(ROOT / "digitized_curves" / "cargo_80v")
+    (old,) = part.curves_of(Quantity.VGS_TH_TEMPERATURE)
+    x, y = change(old.x.copy(), old.y.copy())
+    new = replace(old, x=x, y=y, lines=np.arange(x.size) + 2)
+    return replace(part, curves=tuple(new if c is old else c for c in part.curves))
+
+
+def read_thresholds(part):
+    return [(b.stated, b.sigma) for b in observations.channel_blocks(part) if b.name == "vgs_th(Tj) (read)"]
+
+
+def test_threshold_at_25_degrees_is_read_off_its_curve():
+    part = with_threshold_curve(lambda t_j, v: (t_j, 2.9 - 0.007 * (t_j - 25.0)))
+    ((stated, sigma),) = read_thresholds(part)
+    assert stated == pytest.approx(2.9, abs=1e-12)
+    (curve,) = part.curves_of(Quantity.VGS_TH_TEMPERATURE)
+    along_x, along_y = 0.007 * curve.x_axis.length, curve.y_axis.length
+    assert sigma == pytest.approx(np.hypot(curve.point_error, curve.axis_error) * np.hypot(along_x, along_y))
+
+
+def test_a_mis_clicked_point_near_25_degrees_hardly_moves_what_is_read():
+    def slipped(t_j, v):
+        v[np.argmin(np.abs(t_j - 25.0))] *= 10.0
+        return t_j, v
+
+    ((stated, sigma),) = read_thresholds(with_threshold_curve(lambda t_j, v: (t_j, v)))
+    ((moved, _),) = read_thresholds(with_threshold_curve(slipped))
+    assert abs(moved - stated) < sigma
+
+
+def test_a_curve_that_begins_above_25_degrees_tells_nothing_there():
+    assert read_thresholds(with_threshold_curve(lambda t_j, v: (t_j[t_j > 30.0], v[t_j > 30.0]))) == []
+
+
+def test_the_fitted_threshold_follows_its_curve(fitted):
+    model = fitted("ferry_charger_1200v")
+    (curve,) = model.part.curves_of(Quantity.VGS_TH_TEMPERATURE)
+    near = float(np.interp(25.0, curve.x, curve.y))
+    ((_, sigma),) = read_thresholds(model.part)
+    assert threshold_voltage(curve.i_d, model.transistor().channel) == pytest.approx(near, abs=2.0 * sigma)

@@ -8,6 +8,7 @@ from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.stats import theilslopes
 
 from fitter.errors import FitError
 from fitter.fitting.assumptions import BODY_SHARE, BODY_SHARE_SPREAD
@@ -71,6 +72,9 @@ _BUILT_IN, _BUILT_IN_SPREAD = 1.5, 1.5
 #: takes what VDS rises by beyond some volts (a judgement, no source). Without it a rise over the few volts of output
 #: curves is drawn out to hundreds.
 _MODULATION_SPREAD = 1.0
+
+#: Points around 25 degC off which VGS(th) is read there.
+_NEAR_REFERENCE = 5
 
 _GATE_DRAIN = tuple(d.name for d in GATE_DRAIN.values())
 _DRAIN_SOURCE = tuple(d.name for d in DRAIN_SOURCE.values())
@@ -304,7 +308,7 @@ def modulation_block(part: Part) -> ScalarBlock:
 
 
 def channel_blocks(part: Part) -> list[Block]:
-    """Transfer and output curves at 25 degC, the stated VGS(th) and RDS(on)."""
+    """Transfer and output curves at 25 degC, the stated VGS(th) and RDS(on), and VGS(th) read off its curve over Tj."""
     blocks: list[Block] = list(_of(part, Quantity.TRANSFER, Quantity.OUTPUT))
     threshold, on = part.stated.threshold, part.stated.on_resistance
     if threshold is not None:
@@ -317,7 +321,33 @@ def channel_blocks(part: Part) -> list[Block]:
             "rds_on (table)", _CHANNEL, on.r_ds_on, TABLE_ERROR["r_ds_on"],
             lambda t: on_resistance(on.i_d, on.v_gs, t.channel),
         )  # fmt: skip
+    return blocks + _threshold_blocks(part)
+
+
+def _threshold_blocks(part: Part) -> list[Block]:
+    """VGS(th) at 25 degC, read off the curve of VGS(th) over Tj."""
+    blocks: list[Block] = []
+    for curve in part.curves_of(Quantity.VGS_TH_TEMPERATURE):
+        near = np.argsort(np.abs(curve.x - REFERENCE), kind="stable")[:_NEAR_REFERENCE]
+        t_j, v = curve.x[near], curve.y[near]
+        if near.size < _NEAR_REFERENCE or not np.min(t_j) < REFERENCE < np.max(t_j):
+            continue
+        # A straight line that one mis-clicked point does not turn (P. K. Sen, J. Am. Stat. Assoc. 63 (1968) 1379).
+        slope = float(theilslopes(v, t_j).slope)
+        read = float(np.median(v - slope * (t_j - REFERENCE)))
+        share = math.hypot(curve.point_error, curve.axis_error)
+        blocks.append(
+            _read_threshold(curve, read, share * math.hypot(curve.y_axis.length, slope * curve.x_axis.length))
+        )
     return blocks
+
+
+def _read_threshold(curve: Curve, read: float, sigma: float) -> ScalarBlock:
+    i_d = _condition(curve, "i_d")
+    return ScalarBlock(
+        name=f"{curve.name} (read)", parameters=_CHANNEL, stated=read, sigma=sigma,
+        function=lambda values: threshold_voltage(i_d, Transistor.from_values(values).channel),
+    )  # fmt: skip
 
 
 def hot_blocks(part: Part) -> list[Block]:

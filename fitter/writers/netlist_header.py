@@ -9,7 +9,7 @@ from fitter.writers.netlist_text import comment
 
 __all__ = ["header"]
 
-_TABLE_MARK, _EXPECTED_MARK = " (table)", " (expected)"
+_TABLE_MARK, _EXPECTED_MARK, _READ_MARK = " (table)", " (expected)", " (read)"
 
 _ABSTOL = (
     "Circuits of amperes need ABSTOL=1e-9 among the simulator's options. At the usual default of 1e-12 A the "
@@ -87,7 +87,7 @@ def _title(model: FittedModel, name: str) -> list[str]:
 
 def _fitted_to(model: FittedModel) -> list[str]:
     blocks = [s.name for s in model.statistics]
-    marks = (_TABLE_MARK, _EXPECTED_MARK)
+    marks = (_TABLE_MARK, _EXPECTED_MARK, _READ_MARK)
     curves = [name for name in blocks if not name.endswith(marks)]
     tables = [name.removesuffix(_TABLE_MARK) for name in blocks if name.endswith(_TABLE_MARK)]
     lines = [comment("Fitted to"), _item(f"curves: {', '.join(curves) or 'none'}")]
