@@ -329,6 +329,15 @@ def test_a_curve_that_only_falls_gets_no_rise(form):
     assert "cr_gd" not in result.solution.values
 
 
+def test_a_mis_clicked_point_at_the_end_of_crss_is_no_rise():
+    part = clicked(drawn_part(SHIELDED), 0)
+    (crss,) = part.curves_of(Quantity.CRSS)
+    crss.y[np.argmax(crss.x)] *= 10.0
+    result = fit_capacitances(part)
+    assert not any(t.rises for t in result.trials)
+    assert [o.curve for o in result.outliers] == ["crss"]
+
+
 def test_too_few_points_for_the_plain_form_stop_the_fit():
     with pytest.raises(FitError, match="too few for a model of 4 parameters"):
         fit_capacitances(drawn_part(PLAIN, v_ds=np.geomspace(0.1, 80.0, 4)))

@@ -185,7 +185,8 @@ def _inverse(jacobian: Array, residuals: Array, room: Array) -> Array:
     if on.size:
         # By how much the others move with what is on a bound, and how far that reaches.
         moves = -inner @ scaled[np.ix_(off, on)]
-        bound = np.linalg.inv(scaled[np.ix_(on, on)] + scaled[np.ix_(on, off)] @ moves)
+        left = scaled[np.ix_(on, on)] + scaled[np.ix_(on, off)] @ moves
+        bound = np.linalg.inv(left + _LEAST_INFORMATION * np.eye(on.size))
         sigma = np.sqrt(np.diag(bound))
         beyond = bound @ (jacobian[:, on].T @ residuals / scale[on]) * np.sign(room[on]) / sigma
         reach = np.minimum(_cut_off(np.maximum(beyond, 0.0)), _FARTHEST * np.abs(room[on]) * scale[on] / sigma)

@@ -7,6 +7,7 @@ from dataclasses import replace
 from itertools import combinations_with_replacement, product
 
 import numpy as np
+from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 
 from fitter.errors import FitError
@@ -38,8 +39,8 @@ _TWO_SHIELDS_AT = (0.1, 0.25, 0.4, 0.55, 0.7, 0.85, 0.95)
 _WIDTHS = (0.1, 0.5)
 #: Share of a transfer curve's highest current that a channel must have at its threshold, or above.
 _SETS_IN = 0.1
-#: A curve rises where the mean of so many last points lies above the lowest such mean by this factor.
-_AVERAGED, _RISEN = 3, 1.1
+#: A curve rises where the median of so many last points lies above the lowest such median by this factor.
+_TOGETHER, _RISEN = 3, 1.1
 #: Steps to the sizes of a start.
 _SIZE_STEPS = 60
 
@@ -132,9 +133,10 @@ def rise_voltage(v: Array, c: Array) -> float | None:
     float or None
         The highest voltage [V]; None where the curve does not rise at its end.
     """
-    if c.size < _AVERAGED:
+    if c.size < _TOGETHER:
         return None
-    smooth = np.convolve(c, np.full(_AVERAGED, 1.0 / _AVERAGED), mode="valid")
+    # Medians, so that one mis-clicked point is no rise.
+    smooth = np.median(sliding_window_view(c, _TOGETHER), axis=-1)
     return float(v[-1]) if smooth[-1] > _RISEN * np.min(smooth) else None
 
 
