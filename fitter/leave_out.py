@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from fitter.comparison import Comparison, compare, digitized_reading
 from fitter.fitting import observations
 from fitter.fitting.assumptions import GATE_CHARGE_ONLY, GateAssumption, assumed_space
-from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock, model_space
+from fitter.fitting.blocks import EXPECTED, READ, TABLE, Block, PathBlock, PointsBlock, ScalarBlock, model_space
 from fitter.fitting.fit import FitResult
 from fitter.fitting.intervals import COVERAGE_FACTOR, Estimate, intervals
 from fitter.fitting.observations import STATED_ERROR, TABLE_ERROR
@@ -34,8 +34,6 @@ _PREDICTS_NOTHING = 3.0
 #: Condition of a curve's row: its mean over the points.
 MEAN = "mean"
 _GATE_CHARGE = ("qg", "qgs", "qgd", "v_plateau")
-#: How the names of blocks end that are no data of their own: expectations, and what was read off a curve.
-_EXPECTED, _READ = " (expected)", " (read)"
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -91,11 +89,11 @@ def leave_out(part: Part, result: FitResult) -> tuple[LeftOut, ...]:
     charge = [b for b in blocks if _is_gate_charge(b)]
     rows: list[LeftOut] = []
     for block in blocks:
-        if block in charge or block.name.endswith((_EXPECTED, _READ)):
+        if block in charge or block.name.endswith((EXPECTED, READ)):
             continue
-        estimate = _without(part, result, [b for b in blocks if b.name in (block.name, block.name + _READ)])
+        estimate = _without(part, result, [b for b in blocks if b.name in (block.name, block.name + READ)])
         if isinstance(block, ScalarBlock):
-            wanted = block.name.removesuffix(" (table)")
+            wanted = block.name.removesuffix(TABLE)
             rows += _table_rows(part, estimate, block.name, (wanted,))
         elif isinstance(block, PointsBlock):
             rows.append(_curve_row(next(c for c in part.curves if c.name == block.name), block, estimate))
@@ -103,7 +101,7 @@ def leave_out(part: Part, result: FitResult) -> tuple[LeftOut, ...]:
     told = {row.quantity for row in rows if row.condition != MEAN}
     names = [name for name in _quantities(part, result.estimate) if name not in (*told, *_GATE_CHARGE)]
     for name in names:
-        rows += _table_rows(part, result.estimate, f"{name} (table)", (name,))
+        rows += _table_rows(part, result.estimate, f"{name}{TABLE}", (name,))
     return tuple(rows)
 
 

@@ -109,16 +109,14 @@ def test_exactly_the_parameters_that_are_open_are_not_determined(sparse):
 def told(sigma_of_data, sigma_expected):
     """C0 of the gate-drain junction told by a datum and by an expectation, RD by a datum alone."""
 
-    def block(name, stated, sigma, function, parameters, expected=False):
-        return ScalarBlock(
-            name=name, parameters=parameters, stated=stated, sigma=sigma, function=function, expected=expected
-        )
+    def block(name, stated, sigma, function, parameters):
+        return ScalarBlock(name=name, parameters=parameters, stated=stated, sigma=sigma, function=function)
 
     c0 = DEFINITIONS["c0_gd"]
     space = ParameterSpace(free=(c0, DEFINITIONS["r_d"]), fixed={"r_s": 1e-3})
     blocks = [
         block("datum", -20.0, sigma_of_data, lambda v: np.log(v["c0_gd"]), ("c0_gd",)),
-        block("c0_gd (expected)", -20.0, sigma_expected, lambda v: np.log(v["c0_gd"]), ("c0_gd",), expected=True),
+        block("c0_gd (expected)", -20.0, sigma_expected, lambda v: np.log(v["c0_gd"]), ("c0_gd",)),
         block("other", 2e-3, 1e-4, lambda v: 2.0 * v["r_d"], ("r_d",)),
     ]
     solution = solve(blocks, space, {"c0_gd": 3e-9, "r_d": 2e-3})

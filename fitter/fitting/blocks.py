@@ -19,7 +19,17 @@ from fitter.models.transistor import DEFINITIONS
 from fitter.models.types import Numbers
 from fitter.parameters import ParameterDefinition
 
-__all__ = ["Block", "PathBlock", "PointsBlock", "ScalarBlock", "model_space", "nuisance"]
+__all__ = [
+    "EXPECTED",
+    "READ",
+    "TABLE",
+    "Block",
+    "PathBlock",
+    "PointsBlock",
+    "ScalarBlock",
+    "model_space",
+    "nuisance",
+]
 
 Array = NDArray[np.float64]
 
@@ -238,7 +248,7 @@ class ScalarBlock:
     Parameters
     ----------
     name : str
-        Unique name.
+        Unique name; it ends in `TABLE`, `EXPECTED` or `READ`, which says where the figure comes from.
     parameters : tuple of str
         Parameters of the model that it depends on.
     function : callable
@@ -247,8 +257,6 @@ class ScalarBlock:
         The stated figure, in the same unit.
     sigma : float
         Its standard deviation, likewise.
-    expected : bool
-        Whether it is an expectation, known before any point is seen, and no datum.
     """
 
     name: str
@@ -256,7 +264,6 @@ class ScalarBlock:
     function: Callable[[Values], Numbers]
     stated: float
     sigma: float
-    expected: bool = False
     inflation: float = 1.0
     held: bool = False
     group: str = ""
@@ -274,6 +281,10 @@ class ScalarBlock:
 
 #: Residuals that belong together, in standard deviations: the data first, then the priors of its nuisance parameters.
 Block = PointsBlock | PathBlock | ScalarBlock
+
+#: How the name of a scalar block ends: a table value, what is expected before any point is seen, what was read off a
+#: curve that another block holds.
+TABLE, EXPECTED, READ = " (table)", " (expected)", " (read)"
 
 #: Stand-ins for parameters on which none of a fit's blocks depends.
 _UNSEEN = {

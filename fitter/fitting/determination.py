@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from fitter.fitting.blocks import ScalarBlock
+from fitter.fitting.blocks import EXPECTED
 from fitter.fitting.intervals import Estimate
 from fitter.fitting.solve import Solution
 from fitter.models.types import scalar
@@ -103,8 +103,7 @@ def expected_shares(solution: Solution) -> dict[str, float]:
     """
     rows = []
     for block in solution.blocks:
-        is_expected = isinstance(block, ScalarBlock) and block.expected
-        rows += [is_expected] * solution.residuals[block.name].size
+        rows += [block.name.endswith(EXPECTED)] * solution.residuals[block.name].size
     slopes, covariance = solution.jacobian[np.array(rows, dtype=bool)], solution.covariance
     # Without their rows the information is less by slopes' slopes: its inverse by the formula of Woodbury.
     reach = slopes @ covariance

@@ -12,7 +12,7 @@ from scipy.stats import theilslopes
 
 from fitter.errors import FitError
 from fitter.fitting.assumptions import BODY_SHARE, BODY_SHARE_SPREAD
-from fitter.fitting.blocks import Block, PathBlock, PointsBlock, ScalarBlock
+from fitter.fitting.blocks import EXPECTED, READ, Block, PathBlock, PointsBlock, ScalarBlock
 from fitter.fitting.space import Values
 from fitter.gate_charge import OperatingPoint, gate_charge_curve
 from fitter.models.capacitance import DRAIN_SOURCE, GATE_DRAIN
@@ -297,8 +297,8 @@ def _built_in(name: str) -> ScalarBlock:
 def _expected(name: str, value: float, spread: float, function: Callable[[Values], Value]) -> ScalarBlock:
     """What is known of a parameter, or a function of it, before any point is seen."""
     return ScalarBlock(
-        name=f"{name} (expected)", parameters=(name,), stated=value, sigma=spread,
-        function=lambda values: np.asarray(function(values)), expected=True,
+        name=f"{name}{EXPECTED}", parameters=(name,), stated=value, sigma=spread,
+        function=lambda values: np.asarray(function(values)),
     )  # fmt: skip
 
 
@@ -345,7 +345,7 @@ def _threshold_blocks(part: Part) -> list[Block]:
 def _read_threshold(curve: Curve, read: float, sigma: float) -> ScalarBlock:
     i_d = _condition(curve, "i_d")
     return ScalarBlock(
-        name=f"{curve.name} (read)", parameters=_CHANNEL, stated=read, sigma=sigma,
+        name=f"{curve.name}{READ}", parameters=_CHANNEL, stated=read, sigma=sigma,
         function=lambda values: threshold_voltage(i_d, Transistor.from_values(values).channel),
     )  # fmt: skip
 

@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
+from fitter.fitting.blocks import EXPECTED, READ, TABLE
 from fitter.model import FittedModel
 from fitter.models.temperature import REFERENCE
 from fitter.version import VERSION
 from fitter.writers.netlist_text import comment
 
 __all__ = ["header"]
-
-_TABLE_MARK, _EXPECTED_MARK, _READ_MARK = " (table)", " (expected)", " (read)"
 
 _ABSTOL = (
     "Circuits of amperes need ABSTOL=1e-9 among the simulator's options. At the usual default of 1e-12 A the "
@@ -87,9 +86,8 @@ def _title(model: FittedModel, name: str) -> list[str]:
 
 def _fitted_to(model: FittedModel) -> list[str]:
     blocks = [s.name for s in model.statistics]
-    marks = (_TABLE_MARK, _EXPECTED_MARK, _READ_MARK)
-    curves = [name for name in blocks if not name.endswith(marks)]
-    tables = [name.removesuffix(_TABLE_MARK) for name in blocks if name.endswith(_TABLE_MARK)]
+    curves = [name for name in blocks if not name.endswith((TABLE, EXPECTED, READ))]
+    tables = [name.removesuffix(TABLE) for name in blocks if name.endswith(TABLE)]
     lines = [comment("Fitted to"), _item(f"curves: {', '.join(curves) or 'none'}")]
     lines.append(_item(f"table values: {'; '.join(_with_condition(model, t) for t in tables) or 'none'}"))
     if model.used_gate_charge:
